@@ -1,0 +1,109 @@
+"""Names of matrix elements and of the ratios that polarimetry reports, with their half widths.
+
+Signs of F12 and F34 follow Bohren & Huffman 1983 (section 3.3): a small sphere
+has F12 <= 0, so that -F12/F11 is its positive degree of linear polarization.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+FloatArray = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class Ratio:
+    """One matrix element divided by F11.
+
+    Attributes
+    ----------
+    name : str
+        Identifier, e.g. ``minus_f12_f11``.
+    row, col : int
+        Position of the numerator, counted from 0.
+    sign : float
+        +1, or -1 where the usual quantity is minus the ratio.
+    label : str
+        How the quantity is written in text.
+    signed : bool
+        Whether both signs occur, so that a colour map must be centred on zero.
+    """
+
+    name: str
+    row: int
+    col: int
+    sign: float
+    label: str
+    signed: bool
+
+
+RATIOS = (
+    Ratio("f22_f11", 1, 1, 1.0, "F22/F11", False),
+    Ratio("f33_f11", 2, 2, 1.0, "F33/F11", True),
+    Ratio("f44_f11", 3, 3, 1.0, "F44/F11", True),
+    Ratio("minus_f12_f11", 0, 1, -1.0, "−F12/F11", True),
+    Ratio("f34_f11", 2, 3, 1.0, "F34/F11", True),
+)
+"""The five ratios of a mirror-symmetric ensemble."""
+
+
+def ratio(matrix: Any, half_width: Any, which: Ratio) -> tuple[FloatArray, FloatArray]:
+    """Value and half width of one ratio.
+
+    Parameters
+    ----------
+    matrix, half_width : float64 (..., 4, 4)
+        Scattering matrices and the half widths (95 %) of their elements.
+    which : Ratio
+        The ratio wanted.
+
+    Returns
+    -------
+    value, half_width : float64 (...)
+        The half width is the bound ``(h_ij + |r| h_11) / F11``, which holds however
+        the errors of the two elements are correlated (to first order in h_11/F11).
+    """
+    f11 = matrix[..., 0, 0]
+    value = which.sign * matrix[..., which.row, which.col] / f11
+    bound = (half_width[..., which.row, which.col] + np.abs(value) * half_width[..., 0, 0]) / f11
+    return value, bound
+
+
+def linear_depolarization(matrix: Any, half_width: Any) -> tuple[FloatArray, FloatArray]:
+    """Linear depolarization ratio (F11 - F22)/(F11 + F22) of a matrix at 180 degrees.
+
+    Parameters
+    ----------
+    matrix, half_width : float64 (..., 4, 4)
+        Backscattering matrices and their half widths.
+
+    Returns
+    -------
+    value, half_width : float64 (...)
+        With r = F22/F11 the derivative is -2/(1 + r)^2; the half width is its
+        size times that of r.
+    """
+    r, bound = ratio(matrix, half_width, RATIOS[0])
+    return (1.0 - r) / (1.0 + r), 2.0 * bound / (1.0 + r) ** 2
+
+
+def circular_depolarization(matrix: Any, half_width: Any) -> tuple[FloatArray, FloatArray]:
+    """Circular depolarization ratio (F11 + F44)/(F11 - F44) of a matrix at 180 degrees.
+
+    Parameters
+    ----------
+    matrix, half_width : float64 (..., 4, 4)
+        Backscattering matrices and their half widths.
+
+    Returns
+    -------
+    value, half_width : float64 (...)
+        With r = F44/F11 the derivative is 2/(1 - r)^2; the half width is its size
+        times that of r.
+    """
+    r, bound = ratio(matrix, half_width, RATIOS[2])
+    return (1.0 + r) / (1.0 - r), 2.0 * bound / (1.0 - r) ** 2
