@@ -1,5 +1,20 @@
 """Scatterloom: polarimetric scattering campaigns of nonspherical particles."""
 
+from importlib import import_module
 from importlib.metadata import version
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from scatterloom.store.table import open_table, verify
 
 __version__ = version("scatterloom")
+__all__ = ["__version__", "open_table", "verify"]
+
+# Loaded on first use: importing the package must stay quick for the command line.
+_LAZY = {"open_table": "scatterloom.store.table", "verify": "scatterloom.store.table"}
+
+
+def __getattr__(name: str) -> Any:
+    if name in _LAZY:
+        return getattr(import_module(_LAZY[name]), name)
+    raise AttributeError(f"module {__name__!r} has no attribute {name!r}")
