@@ -97,8 +97,9 @@ def sphere(index: complex, size_parameter: float, n_max: int | None = None) -> S
     The series ends at x + 6 x^(1/3) + 12 terms (Wiscombe 1980 has 4.05 and 2; the
     margin is for 12 digits) unless `n_max` is given. The logarithmic derivative
     inside the sphere is found by downward recurrence, which is stable for any index
-    (Bohren & Huffman 1983, eq. 4.88, 4.89). Where |m x| is large and m nearly real, the recurrence must start
-    well above |m x|: it forgets its start only as fast as j_n decays there.
+    (Bohren & Huffman 1983, eq. 4.88, 4.89). Where |m x| is large and m nearly real,
+    the recurrence must start well above |m x|: it forgets its start only as fast as
+    j_n decays there.
     """
     x, m = size_parameter, complex(index)
     if n_max is None:
