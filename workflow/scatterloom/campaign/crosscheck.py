@@ -1,0 +1,158 @@
+"""Checks between sections: names that must exist, and grids that must go together.
+
+Checks of names work on the raw file and skip whatever is malformed, so that they can be
+reported together with the faults of single sections.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+
+from scatterloom.campaign.complaints import nearest
+from scatterloom.campaign.document import Document, KeyPath
+from scatterloom.campaign.grids import decimal, grid_values
+from scatterloom.campaign.model import Sizes
+from scatterloom.campaign.populations import Population
+from scatterloom.errors import Problem
+
+MOST_CELLS = 1_000_000
+"""Largest number of (particle, wavelength, size) cells in one campaign."""
+
+WANTED_COVERAGE = 0.99
+"""Part of a population's cross section below which a warning is given."""
+
+
+def check_names(document: Document) -> list[Problem]:
+    """Check that names are unique and that whatever is referred to exists."""
+    tree = document.tree
+    problems = [*_repeated(document, "particles"), *_repeated(document, "populations")]
+    materials = tree.get("materials")
+    particles = [name for _, name in _texts(document, "particles", "name")]
+    if isinstance(materials, dict):
+        for path, name in _texts(document, "particles", "material"):
+            if name not in materials:
+                message = f"material '{name}' is not defined under materials"
+                hint = nearest(name, materials)
+                problems.append(document.problem(path, message, document.show(path), hint))
+    if particles:
+        for position, entry in enumerate(_entries(document, "populations")):
+            parts = entry.get("particles")
+            for name in parts if isinstance(parts, dict) else ():
+                if name not in particles:
+                    path = ("populations", position, "particles", name)
+                    message = f"particle '{name}' is not defined under particles"
+                    hint = nearest(name, particles)
+                    found = f"{name}: {document.show(path)}"
+                    problems.append(document.problem(path, message, found, hint, at_key=True))
+    return problems
+
+
+def unused_materials(document: Document) -> list[Problem]:
+    """Warn of materials that no particle is made of."""
+    used = {name for _, name in _texts(document, "particles", "material")}
+    return [
+        document.problem(
+            ("materials", name),
+            f"material '{name}' is not used by any particle",
+            hint="remove it, or make a particle of it",
+            at_key=True,
+        )
+        for name in document.tree["materials"]
+        if name not in used
+    ]
+
+
+def check_extent(
+    document: Document, particles: int, wavelengths: int, sizes: Sizes
+) -> list[Problem]:
+    """Check that the table is not too large for one campaign."""
+    key, grid = ("radius_um", sizes.radius_um)
+    if grid is None:
+        key, grid = ("size_parameter", sizes.size_parameter)
+    assert grid is not None
+    number = len(grid) if isinstance(grid, list) else grid.length()
+    cells = particles * wavelengths * number
+    if cells <= MOST_CELLS:
+        return []
+    message = f"the table has {cells} cells, more than {MOST_CELLS}"
+    found = f"{particles} particles x {wavelengths} wavelengths x {number} sizes"
+    hint = "split it into several campaigns, or take wider steps"
+    return [document.problem(("sizes", key), message, found, hint)]
+
+
+def check_coverage(
+    document: Document,
+    populations: Sequence[Population],
+    sizes: Sizes,
+    wavelengths_um: Sequence[float],
+    medium_index: float,
+) -> list[Problem]:
+    """Warn of populations that reach beyond the sizes of the table.
+
+    Coverage is the part of the population's total cross section between the smallest and
+    the largest radius, at the wavelength where it is least.
+    """
+    warnings = []
+    for position, population in enumerate(populations):
+        parts = [
+            (population.size.area_fraction(low, high), wavelength, low, high)
+            for wavelength, low, high in _radius_ranges(sizes, wavelengths_um, medium_index)
+        ]
+        fraction, wavelength, low, high = min(parts)
+        if fraction < WANTED_COVERAGE:
+            at = "" if sizes.size_parameter is None else f" at {wavelength:g} um"
+            warnings.append(
+                document.problem(
+                    ("populations", position, "size"),
+                    f"population '{population.name}' reaches beyond the sizes of the table{at}",
+                    f"radii from {low:.4g} to {high:.4g} um hold {100 * fraction:.3g} % of its "
+                    "cross section",
+                    f"widen the sizes until they hold {100 * WANTED_COVERAGE:g} % of it",
+                )
+            )
+    return warnings
+
+
+def _radius_ranges(
+    sizes: Sizes, wavelengths_um: Sequence[float], medium_index: float
+) -> Iterator[tuple[float, float, float]]:
+    if sizes.radius_um is not None:
+        values = grid_values(sizes.radius_um)
+        yield wavelengths_um[0], float(values[0]), float(values[-1])
+        return
+    assert sizes.size_parameter is not None
+    values = grid_values(sizes.size_parameter)
+    for wavelength in wavelengths_um:
+        scale = decimal(wavelength) / decimal(6.283185307179586 * medium_index)
+        yield wavelength, float(values[0] * scale), float(values[-1] * scale)
+
+
+def _entries(document: Document, section: str) -> list[dict]:
+    """Return the entries of a list of mappings; a malformed entry becomes an empty one."""
+    entries = document.tree.get(section)
+    if not isinstance(entries, list):
+        return []
+    return [entry if isinstance(entry, dict) else {} for entry in entries]
+
+
+def _texts(document: Document, section: str, key: str) -> list[tuple[KeyPath, str]]:
+    return [
+        ((section, position, key), entry[key])
+        for position, entry in enumerate(_entries(document, section))
+        if isinstance(entry.get(key), str)
+    ]
+
+
+def _repeated(document: Document, section: str) -> list[Problem]:
+    problems = []
+    first: dict[str, int] = {}
+    for path, name in _texts(document, section, "name"):
+        # Case matters not: names become file names, also where "Ball" and "ball" are one file.
+        if (folded := name.casefold()) in first:
+            line = first[folded]
+            message = f"{section} name '{name}' is given twice"
+            hint = f"give every entry a name of its own; the first stands in line {line}"
+            problems.append(document.problem(path, message, document.show(path), hint))
+        else:
+            first[folded] = document.marks[path].line
+    return problems

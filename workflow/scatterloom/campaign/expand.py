@@ -1,0 +1,137 @@
+"""Expand a campaign to the cells of its table and the unique cases behind them."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from decimal import Decimal, localcontext
+
+import numpy as np
+from numpy.typing import NDArray
+
+from scatterloom.campaign.case import Accuracy, Case, Overrides, canonical_json
+from scatterloom.campaign.geometry import canonical
+from scatterloom.campaign.grids import DIGITS, decimal, grid_values
+from scatterloom.campaign.loader import Campaign
+
+TWO_PI = 2 * Decimal("3.14159265358979323846264338327950288419716939937510")
+
+
+@dataclass(frozen=True)
+class Grid:
+    """The table to be filled.
+
+    Attributes
+    ----------
+    campaign : str
+        Name of the campaign.
+    cases : list of Case
+        Unique cases in order of first appearance.
+    where : int64 (n_particle, n_wavelength, n_size)
+        Index into `cases` for every cell.
+    particle_names : tuple of str (n_particle,)
+    wavelength_um : float64 (n_wavelength,)
+        Wavelength in vacuum [um].
+    size_parameter : float64 (n_wavelength, n_size)
+        Size parameter of the equal-volume sphere in the medium; the same for all particles.
+    radius_um : float64 (n_wavelength, n_size)
+        Radius of the equal-volume sphere [um]; the same for all particles.
+    refractive_index_n, refractive_index_k : float64 (n_particle, n_wavelength)
+        Refractive index relative to the medium.
+    job_seconds : float
+        Predicted time at which cases are batched to jobs.
+    anchor_spacing : float or None
+        Override of the largest gap in size parameter between anchors.
+    """
+
+    campaign: str
+    cases: list[Case]
+    where: NDArray[np.int64]
+    particle_names: tuple[str, ...]
+    wavelength_um: NDArray[np.float64]
+    size_parameter: NDArray[np.float64]
+    radius_um: NDArray[np.float64]
+    refractive_index_n: NDArray[np.float64]
+    refractive_index_k: NDArray[np.float64]
+    job_seconds: float
+    anchor_spacing: float | None
+
+
+def expand(campaign: Campaign) -> Grid:
+    """Expand a campaign; equal cases are made once, across wavelengths and particles.
+
+    Size parameters are computed in decimal arithmetic from the digits of the file and
+    rounded to twelve significant digits, so radii and wavelengths in the same ratio merge.
+    """
+    model = campaign.model
+    size_parameter, radius_um = _sizes(campaign)
+    n_wavelength, n_size = size_parameter.shape
+    accuracy = Accuracy(**model.accuracy.model_dump())
+    levels = model.solver.levels
+    overrides = Overrides(tuple(levels) if levels else None, model.solver.tolerance)
+    indices = np.array(
+        [
+            [_relative(m, model.medium.index) for m in campaign.indices[particle.material]]
+            for particle in model.particles
+        ]
+    )
+    cases: list[Case] = []
+    known: dict[tuple[str, complex, float], int] = {}
+    where = np.empty((len(model.particles), n_wavelength, n_size), dtype=np.int64)
+    values = size_parameter.tolist()
+    for p, particle in enumerate(model.particles):
+        shape = canonical(particle.shape.model_dump())
+        shape_key = canonical_json(shape)
+        for w in range(n_wavelength):
+            index = complex(indices[p, w])
+            for s, x in enumerate(values[w]):
+                position = known.setdefault((shape_key, index, x), len(cases))
+                if position == len(cases):
+                    cases.append(Case(shape, index, x, accuracy, overrides))
+                where[p, w, s] = position
+    return Grid(
+        campaign=campaign.name,
+        cases=cases,
+        where=where,
+        particle_names=tuple(particle.name for particle in model.particles),
+        wavelength_um=np.array(model.wavelengths_um, dtype=float),
+        size_parameter=size_parameter,
+        radius_um=radius_um,
+        refractive_index_n=np.ascontiguousarray(indices.real),
+        refractive_index_k=np.ascontiguousarray(indices.imag),
+        job_seconds=model.solver.job_seconds,
+        anchor_spacing=model.solver.anchor_spacing,
+    )
+
+
+def _sizes(campaign: Campaign) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    """Return size parameters and radii [um], each (n_wavelength, n_size)."""
+    model = campaign.model
+    with localcontext(prec=DIGITS):
+        wavelengths = [decimal(w) for w in model.wavelengths_um]
+        scale = TWO_PI * decimal(model.medium.index)
+        if model.sizes.radius_um is not None:
+            radii = [grid_values(model.sizes.radius_um)] * len(wavelengths)
+            # The ratio r / wavelength comes first: it is the same decimal for equal sizes.
+            sizes = [
+                [scale * (r / wavelength) for r in row]
+                for wavelength, row in zip(wavelengths, radii, strict=True)
+            ]
+        else:
+            assert model.sizes.size_parameter is not None
+            sizes = [grid_values(model.sizes.size_parameter)] * len(wavelengths)
+            radii = [
+                [x * wavelength / scale for x in row]
+                for wavelength, row in zip(wavelengths, sizes, strict=True)
+            ]
+        return _rounded(sizes), _rounded(radii)
+
+
+def _rounded(rows: list[list[Decimal]]) -> NDArray[np.float64]:
+    return np.array([[float(f"{value:.11e}") for value in row] for row in rows])
+
+
+def _relative(index: complex, medium_index: float) -> complex:
+    """Return index / medium_index, both parts to twelve significant digits."""
+    medium = decimal(medium_index)
+    parts = [float(f"{decimal(part) / medium:.11e}") for part in (index.real, index.imag)]
+    return complex(*parts)

@@ -1,0 +1,166 @@
+"""Load a campaign file: read, check everything at once, merge the defaults."""
+
+from __future__ import annotations
+
+import io
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+from pydantic import TypeAdapter, ValidationError
+from ruamel.yaml import YAML
+
+from scatterloom.campaign import crosscheck, optics
+from scatterloom.campaign.complaints import complaints
+from scatterloom.campaign.document import Document, read
+from scatterloom.campaign.grids import grid_values
+from scatterloom.campaign.model import CampaignModel
+from scatterloom.campaign.spectra import Spectrum
+from scatterloom.errors import BadInput, Problem
+
+
+@dataclass(frozen=True)
+class Campaign:
+    """A checked campaign.
+
+    Attributes
+    ----------
+    path : Path
+        The campaign file.
+    model : CampaignModel
+        Its content with all defaults filled in.
+    indices : mapping of str to tuple of complex
+        Index n + ik of each material in use, one value a wavelength (not relative).
+    warnings : tuple of Problem
+        What is allowed but probably not meant.
+    """
+
+    path: Path
+    model: CampaignModel
+    indices: Mapping[str, tuple[complex, ...]]
+    warnings: tuple[Problem, ...]
+    spectra: Mapping[str, Spectrum] = field(repr=False)
+
+    @property
+    def name(self) -> str:
+        """Name of the campaign and of its folder of results."""
+        return self.model.campaign
+
+    @property
+    def angles_deg(self) -> NDArray[np.float64]:
+        """Scattering angles [deg], ascending, shape (n_angle,)."""
+        return np.array([float(angle) for angle in grid_values(self.model.angles_deg)])
+
+    def merged_yaml(self) -> str:
+        """Return the campaign as a YAML file that stands alone.
+
+        Defaults are written out and tables of optical constants are copied into it, so it
+        can be run anywhere and gives the same cases.
+        """
+        content: dict[str, Any] = self.model.model_dump(by_alias=True, exclude_none=True)
+        lines = [f"# Campaign {self.name} with all defaults, as it was run."]
+        for name, spectrum in self.spectra.items():
+            table = content["materials"][name].pop("table")
+            lines.append(f"# The spectrum of '{name}' was read from {Path(table).name!r}.")
+            content["materials"][name]["spectrum"] = [
+                {"wavelength_um": wavelength, "n": n, "k": k}
+                for wavelength, n, k in zip(
+                    spectrum.wavelength_um, spectrum.n, spectrum.k, strict=True
+                )
+            ]
+        yaml = YAML(typ="safe", pure=True)
+        yaml.default_flow_style = None
+        yaml.sort_base_mapping_type_on_output = False
+        yaml.allow_unicode = True
+        yaml.width = 100
+        stream = io.StringIO()
+        yaml.dump(content, stream)
+        return "\n".join(lines) + "\n" + stream.getvalue()
+
+
+def load(path: str | Path) -> Campaign:
+    """Load and check a campaign file.
+
+    Raises
+    ------
+    BadInput
+        With all problems of the file and of the tables it names, in order of position.
+    """
+    document = read(Path(path), str(path))
+    problems: list[Problem] = []
+    broken: set[str | int] = set()
+    try:
+        model = CampaignModel.model_validate(document.tree)
+    except ValidationError as error:
+        model = None
+        problems += complaints(error, document)
+        broken = {detail["loc"][0] for detail in error.errors() if detail["loc"]}
+    sections = _sections(model, document, broken)
+    problems += crosscheck.check_names(document)
+    spectra, faults = optics.read_tables(document, Path(path).parent)
+    problems += faults
+    indices, faults = _indices(document, sections, spectra)
+    problems += faults
+    if {"particles", "wavelengths_um", "sizes"} <= sections.keys():
+        problems += crosscheck.check_extent(
+            document,
+            len(sections["particles"]),
+            len(sections["wavelengths_um"]),
+            sections["sizes"],
+        )
+    if problems or model is None:
+        raise BadInput(_in_order(problems, document))
+    warnings = crosscheck.unused_materials(document) + crosscheck.check_coverage(
+        document, model.populations, model.sizes, model.wavelengths_um, model.medium.index
+    )
+    return Campaign(Path(path), model, indices, tuple(_in_order(warnings, document)), spectra)
+
+
+def _sections(
+    model: CampaignModel | None, document: Document, broken: set[str | int]
+) -> dict[str, Any]:
+    """Return the sections that are sound, so that checks between them can go on."""
+    if model is not None:
+        return {name: getattr(model, name) for name in CampaignModel.model_fields}
+    sections = {}
+    for name, info in CampaignModel.model_fields.items():
+        if name in broken:
+            continue
+        if name not in document.tree:
+            sections[name] = info.get_default(call_default_factory=True)
+        elif name in ("wavelengths_um", "medium", "materials", "particles", "sizes"):
+            adapter: TypeAdapter[Any] = TypeAdapter(info.annotation)
+            sections[name] = adapter.validate_python(document.tree[name])
+    return sections
+
+
+def _indices(
+    document: Document, sections: dict[str, Any], spectra: Mapping[str, Spectrum]
+) -> tuple[dict[str, tuple[complex, ...]], list[Problem]]:
+    if not {"materials", "wavelengths_um"} <= sections.keys():
+        return {}, []
+    materials = sections["materials"]
+    used = list(materials)
+    if "particles" in sections:
+        wanted = {particle.material for particle in sections["particles"]}
+        used = [name for name in materials if name in wanted]
+    medium = sections.get("medium")
+    return optics.resolve(
+        document,
+        materials,
+        used,
+        spectra,
+        sections["wavelengths_um"],
+        medium.index if medium is not None else None,
+    )
+
+
+def _in_order(problems: list[Problem], document: Document) -> list[Problem]:
+    def order(problem: Problem) -> tuple[bool, str, int, int]:
+        elsewhere = problem.file != document.file
+        return elsewhere, problem.file, problem.line or 0, problem.column or 0
+
+    return sorted(problems, key=order)

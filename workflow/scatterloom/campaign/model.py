@@ -1,0 +1,237 @@
+"""The configuration as a pydantic model, one class a section.
+
+Descriptions, units and bounds stand here and nowhere else: messages, the JSON schema and
+the reference page are made from them.
+"""
+
+from __future__ import annotations
+
+from typing import Annotated, Literal
+
+from pydantic import field_validator, model_validator
+
+from scatterloom.campaign.grids import AngleGrid, SizeGrid, ascending
+from scatterloom.campaign.populations import Population
+from scatterloom.campaign.sections import NAME_FORM, Name, Section, check_names, setting, wrong
+from scatterloom.campaign.shapes import Shape
+
+Wavelength = Annotated[float, setting("One wavelength.", unit="um", ge=1e-3, le=1e6)]
+_N = {"unit": "1", "ge": 0.01, "le": 10.0}
+_K = {"unit": "1", "ge": 0.0, "le": 10.0}
+_ABSORBS = "absorption is a positive k: the index is n + ik"
+
+
+class Medium(Section):
+    """The host medium around the particles."""
+
+    index: float = setting(
+        "Refractive index of the medium at every wavelength; real, since it must not absorb.",
+        1.0,
+        unit="1",
+        ge=1.0,
+        le=5.0,
+        advice="the medium must not absorb, so its index is real",
+    )
+
+
+class SpectrumPoint(Section):
+    """Optical constants at one wavelength."""
+
+    wavelength_um: float = setting("Wavelength in vacuum.", unit="um", ge=1e-3, le=1e6)
+    n: float = setting("Real part of the refractive index.", **_N)
+    k: float = setting("Imaginary part of the refractive index.", **_K, advice=_ABSORBS)
+
+
+class Material(Section):
+    """Optical constants: `n` and `k`, or a `table` file, or a `spectrum` written out."""
+
+    n: float | None = setting("Real part of the refractive index.", None, **_N)
+    k: float | None = setting(
+        "Imaginary part of the refractive index.", None, **_K, advice=_ABSORBS
+    )
+    table: str | None = setting(
+        "CSV file with the columns wavelength_um, n, k, named relative to this file; n and k "
+        "are interpolated linearly in the logarithm of wavelength and never extrapolated.",
+        None,
+        min_length=1,
+    )
+    spectrum: list[SpectrumPoint] | None = setting(
+        "The same as `table`, written out here.", None, min_length=1
+    )
+
+    @model_validator(mode="after")
+    def _check(self) -> Material:
+        given = [
+            name for name in ("n", "k", "table", "spectrum") if getattr(self, name) is not None
+        ]
+        if given not in (["n", "k"], ["table"], ["spectrum"]):
+            raise wrong(
+                f"a material cannot be made from {' and '.join(given) or 'nothing'}",
+                "give 'n' and 'k' (k: 0 if it does not absorb), or 'table', or 'spectrum'",
+            )
+        return self
+
+    @field_validator("spectrum")
+    @classmethod
+    def _check_spectrum(cls, value: list[SpectrumPoint] | None) -> list[SpectrumPoint] | None:
+        if value is not None:
+            ascending("spectrum", [point.wavelength_um for point in value])
+        return value
+
+
+class Particle(Section):
+    """A shape made of a material."""
+
+    name: Name = setting("Name of the particle, a coordinate of the table.", form=NAME_FORM)
+    material: str = setting("One of the keys under `materials`.")
+    shape: Shape = setting("Shape of the particle.")
+
+
+class Sizes(Section):
+    """Sizes of the sphere of equal volume: exactly one of the two keys."""
+
+    radius_um: SizeGrid | None = setting(
+        "Radii in um, a list or a rule: the same radii at every wavelength.", None
+    )
+    size_parameter: SizeGrid | None = setting(
+        "Size parameters 2 pi r n / wavelength, with the index n of the medium, a list or a "
+        "rule: the same at every wavelength.",
+        None,
+    )
+
+    @field_validator("radius_um", "size_parameter")
+    @classmethod
+    def _check_list(cls, value: SizeGrid | None) -> SizeGrid | None:
+        if isinstance(value, list):
+            ascending("sizes", value)
+        return value
+
+    @model_validator(mode="after")
+    def _check(self) -> Sizes:
+        both = self.radius_um is not None and self.size_parameter is not None
+        if both or (self.radius_um is None and self.size_parameter is None):
+            raise wrong(
+                f"{'both' if both else 'neither'} of radius_um and size_parameter is given",
+                "give exactly one of 'radius_um' and 'size_parameter'",
+                *(["size_parameter"] if both else []),
+            )
+        return self
+
+
+class AccuracyGoal(Section):
+    """What the user asks; lattices, tolerances and directions are chosen to meet it."""
+
+    f11_relative: float = setting(
+        "Error of F11 allowed at any angle, relative.", 0.02, unit="1", ge=1e-3, le=0.5
+    )
+    ratio_absolute: float = setting(
+        "Error of the ratios Fij/F11 allowed at any angle, absolute.",
+        0.01,
+        unit="1",
+        ge=1e-3,
+        le=0.2,
+    )
+    efficiency_relative: float = setting(
+        "Error of the efficiencies allowed, relative.", 0.005, unit="1", ge=5e-4, le=0.2
+    )
+
+
+class Solver(Section):
+    """Expert overrides; leave them out unless you know why."""
+
+    levels: list[Annotated[int, setting("Cells across.", unit="1", ge=8, le=256)]] | None = setting(
+        "Cells across the longest axis on each lattice level, coarse to fine, even numbers; "
+        "chosen from the accuracy if missing.",
+        None,
+        min_length=2,
+        max_length=3,
+    )
+    anchor_spacing: float | None = setting(
+        "Largest gap in size parameter between sizes that are solved from nothing.",
+        None,
+        unit="1",
+        ge=1e-3,
+        le=10.0,
+    )
+    tolerance: float | None = setting(
+        "Relative error of the transition matrix at which a solve stops.",
+        None,
+        unit="1",
+        ge=1e-8,
+        le=1e-2,
+    )
+    job_seconds: float = setting(
+        "Predicted time of one job; smaller cases are put together up to it.",
+        20.0,
+        unit="s",
+        ge=1.0,
+        le=86_400.0,
+    )
+
+    @field_validator("levels")
+    @classmethod
+    def _check_levels(cls, value: list[int] | None) -> list[int] | None:
+        for position, cells in enumerate(value or []):
+            if cells % 2:
+                raise wrong(f"{cells} is odd", "give even numbers of cells", position)
+        ascending("levels", value or [])
+        return value
+
+
+class Provenance(Section):
+    """Who made the table and how it may be used; copied into its attributes (ACDD 1.3)."""
+
+    creator: str | None = setting("Person or group that made the table.", None, min_length=1)
+    institution: str | None = setting("Institution of the creator.", None, min_length=1)
+    license: str | None = setting("Licence of the table, best an SPDX name.", None, min_length=1)
+    summary: str | None = setting("A paragraph on what the table is for.", None, min_length=1)
+    keywords: list[Annotated[str, setting("A keyword.", min_length=1)]] | None = setting(
+        "Keywords.", None, min_length=1
+    )
+    references: str | None = setting("Papers or data to cite.", None, min_length=1)
+    acknowledgement: str | None = setting("Whom to thank.", None, min_length=1)
+
+
+class CampaignModel(Section):
+    """A campaign: the table to be filled."""
+
+    campaign: str = setting(
+        "Name of the campaign; its results go into a folder of this name.",
+        pattern=r"^[a-z0-9][a-z0-9_-]{0,62}$",
+        form="a name of at most 63 lower-case letters, digits, '-' and '_'",
+    )
+    title: str = setting("One line for figures and reports.", min_length=1, max_length=200)
+    wavelengths_um: list[Wavelength] = setting(
+        "Wavelengths in vacuum, ascending.", min_length=1, max_length=10_000
+    )
+    medium: Medium = setting("The host medium; vacuum if missing.", Medium())
+    materials: dict[str, Material] = setting("Optical constants by name.", min_length=1)
+    particles: list[Particle] = setting("Particles of the table.", min_length=1, max_length=10_000)
+    sizes: Sizes = setting("Sizes of the sphere of equal volume.")
+    angles_deg: AngleGrid = setting(
+        "Scattering angles, a list or a rule; editing them never solves anything again."
+    )
+    orientation: Literal["random"] = setting("Orientation of the particles.", "random")
+    accuracy: AccuracyGoal = setting("Accuracy asked; the defaults suit most uses.", AccuracyGoal())
+    populations: list[Population] = setting("Mixtures for the bulk table.", [], max_length=1000)
+    solver: Solver = setting("Expert overrides.", Solver())
+    provenance: Provenance = setting("Origin and licence of the table.", Provenance())
+
+    @field_validator("wavelengths_um")
+    @classmethod
+    def _check_wavelengths(cls, value: list[float]) -> list[float]:
+        ascending("wavelengths_um", value)
+        return value
+
+    @field_validator("angles_deg")
+    @classmethod
+    def _check_angles(cls, value: AngleGrid) -> AngleGrid:
+        if isinstance(value, list):
+            ascending("angles_deg", value)
+        return value
+
+    @field_validator("materials")
+    @classmethod
+    def _check_materials(cls, value: dict[str, Material]) -> dict[str, Material]:
+        check_names(list(value))
+        return value

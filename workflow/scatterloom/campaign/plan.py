@@ -1,0 +1,274 @@
+"""Lay out the jobs of a campaign: ladders, segments, anchors and spans.
+
+A ladder holds all sizes of one (shape, index), of all wavelengths. A segment is a run of
+sizes solved on the same lattices. In each segment anchors are solved from nothing; the
+sizes between two anchors form a span and are filled in from both sides.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import math
+from collections.abc import Callable, Iterator, Mapping, Sequence
+from dataclasses import asdict, dataclass
+from itertools import pairwise
+from typing import Any, TypeVar
+
+from scatterloom.campaign import effort
+from scatterloom.campaign.case import Accuracy, Case, canonical_json
+from scatterloom.campaign.expand import Grid
+from scatterloom.campaign.geometry import circumscribed_radius
+from scatterloom.errors import BadInput
+
+MOST_JOBS = 10_000
+"""The workflow engine takes 9 s for a graph of this many jobs, and linearly more beyond."""
+
+ANCHORS_EACH_SIDE = 2
+
+T = TypeVar("T")
+
+
+@dataclass(frozen=True)
+class Job:
+    """One solver job.
+
+    Attributes
+    ----------
+    name : str
+        Kind, shape and a digest of everything else; a changed job has another name.
+    kind : str
+        "anchors" (each case solved from nothing) or "span" (filled in between anchors).
+    shape, index, accuracy, levels, tolerance
+        What all cases of the job share; `levels` are cells across, coarse to fine.
+    cases : tuple of (digest, size parameter)
+        The sizes this job solves, ascending.
+    needs : tuple of str
+        Names of the anchors jobs whose fields are read.
+    anchors : tuple of (digest, size parameter, job name)
+        Up to two anchors on either side of each span of the job, ascending.
+    seconds : float
+        Predicted time on one core; no part of the name or the specification.
+    """
+
+    name: str
+    kind: str
+    shape: Mapping[str, Any]
+    index: complex
+    accuracy: Accuracy
+    levels: tuple[int, ...]
+    tolerance: float
+    cases: tuple[tuple[str, float], ...]
+    needs: tuple[str, ...]
+    anchors: tuple[tuple[str, float, str], ...]
+    seconds: float
+
+    def spec(self) -> dict[str, Any]:
+        """Return everything a solver job needs, as values that JSON can hold."""
+        return {"name": self.name, **_content(self)}
+
+
+@dataclass(frozen=True)
+class _Size:
+    """One size of a ladder with its predicted cost [s], cold and filled in."""
+
+    digest: str
+    x: float
+    cold: float
+    warm: float
+
+
+@dataclass(frozen=True)
+class _Segment:
+    """A run of sizes on the same lattices; `anchors` are positions in `sizes`."""
+
+    case: Case  # any case of the ladder, for what they share
+    levels: tuple[int, ...]
+    sizes: tuple[_Size, ...]
+    anchors: tuple[int, ...]
+
+
+def plan(grid: Grid) -> list[Job]:
+    """Return the jobs that solve every case of the grid once, anchors before their spans.
+
+    Cases are batched to jobs of about `grid.job_seconds`, and to longer ones if there would
+    be more than `MOST_JOBS` otherwise.
+
+    Raises
+    ------
+    BadInput
+        If even the longest jobs are too many.
+    """
+    segments = [segment for ladder in _ladders(grid) for segment in _segments(ladder, grid)]
+    seconds = grid.job_seconds
+    longest = math.fsum(size.cold for segment in segments for size in segment.sizes)
+    while _count(segments, seconds) > MOST_JOBS:
+        if seconds > longest:
+            raise BadInput(
+                f"campaign '{grid.campaign}' needs {_count(segments, seconds)} jobs, more than "
+                f"{MOST_JOBS}\n  hint: split it into several campaigns with fewer particles "
+                "or wavelengths"
+            )
+        seconds *= 1.5
+    return [job for segment in segments for job in _jobs(segment, seconds)]
+
+
+def _ladders(grid: Grid) -> list[list[Case]]:
+    """Return the cases of each (shape, index), ascending in size."""
+    ladders: dict[tuple[str, complex], list[Case]] = {}
+    keys: dict[int, str] = {}  # cases of one particle share their shape object
+    for case in grid.cases:
+        shape = keys.setdefault(id(case.shape), canonical_json(dict(case.shape)))
+        ladders.setdefault((shape, case.index), []).append(case)
+    return [sorted(cases, key=lambda case: case.size_parameter) for cases in ladders.values()]
+
+
+def _segments(ladder: Sequence[Case], grid: Grid) -> Iterator[_Segment]:
+    radius = circumscribed_radius(ladder[0].shape)
+    run: list[_Size] = []
+    current: tuple[int, ...] = ()
+    for case in ladder:
+        levels, size = _predict(case, radius)
+        if run and levels != current:
+            yield _segment(ladder[0], current, run, grid)
+            run = []
+        current = levels
+        run.append(size)
+    yield _segment(ladder[0], current, run, grid)
+
+
+def _predict(case: Case, radius: float) -> tuple[tuple[int, ...], _Size]:
+    x, index = case.size_parameter, case.index
+    chosen = effort.levels(radius, index, x, case.accuracy.f11_relative)
+    levels = case.overrides.levels or chosen
+    # The prediction is for the chosen levels; cost is proportional to the number of cells.
+    scale = sum(n**3 for n in levels) / sum(n**3 for n in chosen)
+    cold = scale * effort.cost(radius, index, x, cold=True)
+    warm = scale * effort.cost(radius, index, x, cold=False)
+    return levels, _Size(case.digest, x, cold, warm)
+
+
+def _segment(case: Case, levels: tuple[int, ...], run: list[_Size], grid: Grid) -> _Segment:
+    def step(x: float) -> float:
+        return grid.anchor_spacing or effort.anchor_step(case.index, x)
+
+    anchors = choose_anchors([size.x for size in run], step)
+    return _Segment(case, levels, tuple(run), tuple(anchors))
+
+
+def choose_anchors(sizes: Sequence[float], step: Callable[[float], float]) -> list[int]:
+    """Choose anchors among ascending sizes: first, last, and gaps of at most `step(x)`.
+
+    Each anchor is the farthest size within the gap allowed at its own size; where not even
+    the next size is near enough, that one is the anchor. Counting starts at the smallest
+    size, so larger sizes added later leave all anchors but the last as they were.
+    """
+    if len(sizes) <= 2:
+        return list(range(len(sizes)))
+    anchors = [0]
+    last = len(sizes) - 1
+    while anchors[-1] < last:
+        here = anchors[-1]
+        there = here + 1
+        while there < last and sizes[there + 1] - sizes[here] <= step(sizes[there + 1]):
+            there += 1
+        anchors.append(there)
+    return anchors
+
+
+def _anchor_batches(segment: _Segment, seconds: float) -> list[list[_Size]]:
+    anchors = [segment.sizes[position] for position in segment.anchors]
+    return _batches(anchors, [size.cold for size in anchors], seconds)
+
+
+def _span_batches(segment: _Segment, seconds: float) -> list[list[tuple[int, list[_Size]]]]:
+    """Return batches of (number of the span in its segment, some of its sizes)."""
+    pieces: list[tuple[int, list[_Size]]] = []
+    costs: list[float] = []
+    for number, (low, high) in enumerate(pairwise(segment.anchors)):
+        inner = segment.sizes[low + 1 : high]
+        for piece in _batches(inner, [size.warm for size in inner], seconds):
+            pieces.append((number, piece))
+            costs.append(math.fsum(size.warm for size in piece))
+    return _batches(pieces, costs, seconds)
+
+
+def _batches(items: Sequence[T], costs: Sequence[float], seconds: float) -> list[list[T]]:
+    """Cut a sequence into runs of nearly equal cost, at most `seconds` where possible."""
+    if not items:
+        return []
+    # Equal shares rather than full jobs and a small rest: the last job is not wasted.
+    share = math.fsum(costs) / math.ceil(math.fsum(costs) / seconds)
+    batches: list[list[T]] = [[]]
+    spent = 0.0
+    for item, cost in zip(items, costs, strict=True):
+        if batches[-1] and spent + 0.5 * cost > share * len(batches):
+            batches.append([])
+        batches[-1].append(item)
+        spent += cost
+    return batches
+
+
+def _count(segments: Sequence[_Segment], seconds: float) -> int:
+    return sum(
+        len(_anchor_batches(segment, seconds)) + len(_span_batches(segment, seconds))
+        for segment in segments
+    )
+
+
+def _jobs(segment: _Segment, seconds: float) -> Iterator[Job]:
+    placed: list[tuple[str, float, str]] = []  # every anchor with the job that solves it
+    for batch in _anchor_batches(segment, seconds):
+        cost = math.fsum(size.cold for size in batch)
+        job = _job("anchors", segment, batch, (), cost)
+        placed += [(size.digest, size.x, job.name) for size in batch]
+        yield job
+    for pieces in _span_batches(segment, seconds):
+        first, last = pieces[0][0], pieces[-1][0]
+        low = max(0, first + 1 - ANCHORS_EACH_SIDE)
+        around = tuple(placed[low : last + 1 + ANCHORS_EACH_SIDE])
+        sizes = [size for _, piece in pieces for size in piece]
+        yield _job("span", segment, sizes, around, math.fsum(size.warm for size in sizes))
+
+
+def _job(
+    kind: str,
+    segment: _Segment,
+    sizes: Sequence[_Size],
+    anchors: tuple[tuple[str, float, str], ...],
+    seconds: float,
+) -> Job:
+    case = segment.case
+    tolerance = case.overrides.tolerance
+    if tolerance is None:
+        tolerance = effort.operator_tolerance(case.accuracy.ratio_absolute)
+    job = Job(
+        name="",
+        kind=kind,
+        shape=case.shape,
+        index=case.index,
+        accuracy=case.accuracy,
+        levels=segment.levels,
+        tolerance=tolerance,
+        cases=tuple((size.digest, size.x) for size in sizes),
+        needs=tuple(dict.fromkeys(name for _, _, name in anchors)),
+        anchors=anchors,
+        seconds=seconds,
+    )
+    digest = hashlib.sha256(canonical_json(_content(job)).encode()).hexdigest()[:16]
+    name = f"{kind}-{case.shape['kind']}-{digest}"
+    return Job(**{**job.__dict__, "name": name})
+
+
+def _content(job: Job) -> dict[str, Any]:
+    return {
+        "kind": job.kind,
+        "shape": dict(job.shape),
+        "index": [job.index.real, job.index.imag],
+        "accuracy": asdict(job.accuracy),
+        "levels": list(job.levels),
+        "tolerance": job.tolerance,
+        "cases": [list(entry) for entry in job.cases],
+        "needs": list(job.needs),
+        "anchors": [list(entry) for entry in job.anchors],
+        "numerics_revision": effort.NUMERICS_REVISION,
+    }

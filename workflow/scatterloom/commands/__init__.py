@@ -1,0 +1,20 @@
+"""The commands, each in a module of its own with NAME, HELP, configure and execute.
+
+The list is fixed and carries the one-line help, so that showing the help, or running one
+command, imports none of the others.
+"""
+
+COMMANDS = {
+    "check": "check a campaign file and say how large its table is",
+    "estimate": "predict cases, jobs, time and memory of a campaign",
+    "run": "run a campaign, or resume it",
+    "status": "show what is done, running, failed and left",
+    "gather": "write the table of a campaign from its solved cases",
+    "solve-job": "solve one job of a campaign (called by the workflow engine)",
+    "verify": "check that a table is complete and unaltered",
+    "figures": "draw the figures of a campaign",
+    "bulk": "average the table over the populations of a campaign",
+    "report": "write the report of a campaign as one HTML page",
+    "audit": "check the table against the laws of physics",
+}
+"""Name of every command and its help; its module is named the same, with underscores."""
