@@ -44,13 +44,16 @@ def sync_folder(folder: Path) -> None:
 
 
 @contextlib.contextmanager
-def atomic_write(path: Path | str) -> Iterator[BinaryIO]:
+def atomic_write(path: Path | str, *, durable: bool = True) -> Iterator[BinaryIO]:
     """Open a file that takes the name `path` only when the block ends without error.
 
     Parameters
     ----------
     path : path
         The final name. Its folder is made if missing. An existing file is replaced.
+    durable : bool
+        Whether the file must survive a power cut; False spares the disk where a
+        lost file costs nothing.
 
     Yields
     ------
@@ -70,13 +73,15 @@ def atomic_write(path: Path | str) -> Iterator[BinaryIO]:
         with open(temporary, "xb") as stream:
             yield stream
             stream.flush()
-            os.fsync(stream.fileno())
+            if durable:
+                os.fsync(stream.fileno())
         os.replace(temporary, path)
     except BaseException:
         with contextlib.suppress(FileNotFoundError):
             temporary.unlink()
         raise
-    sync_folder(path.parent)
+    if durable:
+        sync_folder(path.parent)
 
 
 def write_if_changed(path: Path, content: bytes) -> bool:
@@ -114,7 +119,7 @@ def is_abandoned(path: Path) -> bool:
 
 def sweep_abandoned(folder: Path) -> list[Path]:
     """Remove the abandoned temporary files and folders directly inside `folder`."""
-    swept = []
+    swept: list[Path] = []
     if not folder.is_dir():
         return swept
     for path in sorted(folder.glob(f".*{SUFFIX}")):

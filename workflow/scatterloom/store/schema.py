@@ -73,13 +73,13 @@ class Variable:
             attributes["comment"] = self.comment
         if self.error:
             attributes["ancillary_variables"] = f"{self.name}_error status"
-        if self.dims[:3] == GRID and self.name not in AUXILIARY:
+        if self.dims[:3] == GRID:
             attributes["coordinates"] = " ".join(AUXILIARY)
         return attributes | self.extra
 
 
 AUXILIARY = ("size_parameter", "radius_um")
-"""Coordinates that are no dimension: each point of the grid has its own."""
+"""Coordinates that are no dimension: they depend on wavelength and size."""
 
 COORDINATES = (
     Variable("particle", ("particle",), "string", "name of the particle", units=""),
@@ -105,12 +105,12 @@ COORDINATES = (
     Variable("col", ("col",), "i4", "column of the scattering matrix, from 1"),
     Variable(
         "size_parameter",
-        GRID,
+        GRID[1:],
         "f8",
         "size parameter of the sphere of equal volume",
         comment="2 pi radius n_medium / wavelength",
     ),
-    Variable("radius_um", GRID, "f8", "radius of the sphere of equal volume", "um"),
+    Variable("radius_um", GRID[1:], "f8", "radius of the sphere of equal volume", "um"),
 )
 
 SCALARS = (

@@ -15,6 +15,7 @@ import zarr
 from numpy.typing import NDArray
 from zarr.codecs import ZstdCodec
 
+from scatterloom.campaign.expand import Grid
 from scatterloom.store import schema
 from scatterloom.store.assemble import Cases, empty_block, matrix_block, put_scalars
 from scatterloom.store.chunks import Region, is_aligned, layout, regions
@@ -36,7 +37,7 @@ class Axes:
     particles : tuple of str
     wavelength_um : float64 (n_wavelength,)
     angles_deg : float64 (n_angle,)
-    size_parameter, radius_um : float64 (n_particle, n_wavelength, n_size)
+    size_parameter, radius_um : float64 (n_wavelength, n_size)
     refractive_index : complex128 (n_particle, n_wavelength)
         Relative to the medium.
     where : int (n_particle, n_wavelength, n_size)
@@ -53,6 +54,20 @@ class Axes:
     refractive_index: NDArray[np.complex128]
     where: NDArray[np.integer[Any]]
     digests: tuple[str, ...]
+
+    @classmethod
+    def of(cls, grid: Grid, angles_deg: FloatArray) -> Axes:
+        """Return the axes of an expanded campaign."""
+        return cls(
+            particles=grid.particle_names,
+            wavelength_um=grid.wavelength_um,
+            angles_deg=angles_deg,
+            size_parameter=grid.size_parameter,
+            radius_um=grid.radius_um,
+            refractive_index=grid.refractive_index_n + 1j * grid.refractive_index_k,
+            where=grid.where,
+            digests=tuple(case.digest for case in grid.cases),
+        )
 
     def extent(self) -> dict[str, int]:
         """Length of every dimension."""
@@ -152,8 +167,9 @@ def write_hierarchy(
                 put_scalars(columns, cell, record)
             cells.append((offset, record))
         values, errors = matrix_block(cells, axes.where[grid].shape, axes.angles_deg)
-        matrix.write(region, values[(..., *region[3:])])
-        half_width.write(region, errors[(..., *region[3:])])
+        angles, rows, cols = region[3:]
+        matrix.write(region, values[:, :, :, angles, rows, cols])
+        half_width.write(region, errors[:, :, :, angles, rows, cols])
 
     for name, content in columns.items():
         arrays[name].write_all(content)

@@ -1,0 +1,177 @@
+"""`scatterloom run`: run a campaign, or go on with one that was interrupted."""
+
+from __future__ import annotations
+
+import argparse
+import contextlib
+import json
+import os
+import signal
+import sys
+import time
+from collections.abc import Iterator
+from pathlib import Path
+from types import FrameType
+from typing import TYPE_CHECKING
+
+from scatterloom.commands import COMMANDS
+
+if TYPE_CHECKING:
+    from scatterloom.commands._engine import Engine, FailedRule
+    from scatterloom.graph import Graph
+    from scatterloom.store.progress import Meter, Progress
+
+NAME = "run"
+HELP = COMMANDS[NAME]
+
+LOOK_EVERY_S = 0.5
+LOG_LINES_SHOWN = 5
+
+
+def configure(parser: argparse.ArgumentParser) -> None:
+    """Add the arguments of the command."""
+    parser.add_argument("config", metavar="CONFIG", help="campaign file (YAML)")
+    parser.add_argument(
+        "--results", metavar="DIR", help="folder of all results (default: results/ here)"
+    )
+    parser.add_argument(
+        "--cores", type=_positive, metavar="N", help="processor cores to use (default: all)"
+    )
+    parser.add_argument(
+        "--profile", choices=("laptop", "slurm"), default="laptop", help="where the jobs run"
+    )
+
+
+def _positive(text: str) -> int:
+    value = int(text)
+    if value < 1:
+        raise argparse.ArgumentTypeError(f"{value} is below 1")
+    return value
+
+
+def execute(args: argparse.Namespace) -> int:
+    """Run; 0 done, 1 some cases failed or flagged, and the codes of the errors."""
+    from scatterloom.commands._engine import Engine, check_profile
+    from scatterloom.graph import Graph
+    from scatterloom.store.held import hold
+    from scatterloom.store.progress import Meter
+
+    config = Path(args.config)
+    graph = Graph.open(config, args.results)
+    for warning in graph.campaign.warnings:
+        print(f"warning: {warning}", file=sys.stderr)
+    check_profile(args.profile)
+    with hold(graph.layout.lock) as lock, _terminable():
+        graph.sweep()
+        graph.prepare()
+        meter = Meter(graph.layout, graph.cases_of)
+        meter.forget_failures()
+        engine = Engine(graph, config, args.cores or _cores(), args.profile, lock)
+        try:
+            code = _attend(engine, graph, meter)
+        finally:
+            # Silent if it has ended; otherwise an interrupt, or a fault of this program.
+            engine.stop()
+    if code != 0:
+        return _explain(engine, graph, meter.measure())
+    return _conclude(graph)
+
+
+def _cores() -> int:
+    if hasattr(os, "sched_getaffinity"):
+        return len(os.sched_getaffinity(0))
+    return os.cpu_count() or 1
+
+
+@contextlib.contextmanager
+def _terminable() -> Iterator[None]:
+    """Let SIGTERM and SIGHUP end the run as an interrupt from the keyboard does."""
+
+    def interrupt(number: int, frame: FrameType | None) -> None:
+        raise KeyboardInterrupt
+
+    previous = {n: signal.signal(n, interrupt) for n in (signal.SIGTERM, signal.SIGHUP)}
+    try:
+        yield
+    finally:
+        for number, handler in previous.items():
+            signal.signal(number, handler)
+
+
+def _attend(engine: Engine, graph: Graph, meter: Meter) -> int:
+    """Show the progress until the engine ends; return its exit code."""
+    from scatterloom.commands._display import PHASES, Display, TimeLeft
+
+    clock = TimeLeft()
+    weights = {name: max(job.seconds, 1e-9) for name, job in graph.jobs.items()}
+    with Display(f"campaign {graph.campaign.name}") as display:
+        while True:
+            code = engine.wait(LOOK_EVERY_S)
+            progress = meter.measure()
+            phase = PHASES.get(engine.current_rule() or "", "planning")
+            share = meter.share_done(weights)
+            display.show(progress, phase, clock.update(share, time.monotonic()))
+            if code is not None:
+                return code
+
+
+def _explain(engine: Engine, graph: Graph, progress: Progress) -> int:
+    """Say which jobs failed and why; return the gravest of their exit codes."""
+    failures = engine.failures()
+    reported = {f"state/logs/jobs/{job.job}.log": job for job in progress.failed}
+    codes = []
+    for failure in failures:
+        heartbeat = reported.get(failure.log)
+        code = failure.exit_code
+        reason = _last_lines(graph.layout.folder / failure.log)
+        if heartbeat is not None:
+            code, reason = heartbeat.exit_code, [heartbeat.message]
+        codes.append(code)
+        _tell(graph, failure, reason)
+    if not failures:
+        print("scatterloom: the workflow engine failed:", file=sys.stderr)
+        for words in engine.last_words():
+            print(f"  {words}", file=sys.stderr)
+        print(f"  log: {engine.log}", file=sys.stderr)
+        return 3
+    print(
+        f"scatterloom: {len(failures)} jobs failed; {progress.cases_done} of {progress.cases} "
+        "cases are solved and kept\n  hint: the same command tries the rest again",
+        file=sys.stderr,
+    )
+    return max((code for code in codes if code in (3, 4)), default=1)
+
+
+def _tell(graph: Graph, failure: FailedRule, reason: list[str]) -> None:
+    log = graph.layout.folder / failure.log
+    name = Path(failure.log).stem
+    print(f"scatterloom: job {name} ({failure.rule}) failed", file=sys.stderr)
+    for words in reason:
+        print(f"  {words}", file=sys.stderr)
+    print(f"  log: {log}", file=sys.stderr)
+
+
+def _last_lines(path: Path) -> list[str]:
+    try:
+        words = path.read_text(errors="replace").splitlines()
+    except OSError:
+        return ["it left no log"]
+    return [text for text in words if text.strip()][-LOG_LINES_SHOWN:]
+
+
+def _conclude(graph: Graph) -> int:
+    """Say where the results are; return 0, or 1 if cases failed or were flagged."""
+    layout = graph.layout
+    cells = json.loads(layout.receipt.read_bytes())["cells"]
+    for label, path in (
+        ("table", layout.table),
+        ("figures", layout.figures),
+        ("report", layout.report),
+    ):
+        print(f"{label:<8} {path}")
+    flagged = {name: count for name, count in cells.items() if name != "solved" and count}
+    if not flagged:
+        return 0
+    text = ", ".join(f"{count} {name.replace('_', ' ')}" for name, count in flagged.items())
+    print(f"scatterloom: of {sum(cells.values())} cells, {text}; see the report", file=sys.stderr)
+    return 1

@@ -1,0 +1,132 @@
+"""What the rule graph knows of a campaign: its jobs, their files and their digests.
+
+The Snakefile and the commands read the campaign through this module, so that both
+see the same plan.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import json
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from functools import cached_property
+from pathlib import Path
+from typing import Any
+
+import scatterloom
+from scatterloom import campaign as campaigns
+from scatterloom.campaign.effort import NUMERICS_REVISION
+from scatterloom.campaign.expand import Grid, expand
+from scatterloom.campaign.plan import Job, plan
+from scatterloom.store.atomic import sweep_abandoned, write_if_changed
+from scatterloom.store.layout import Layout, results_root
+
+
+def canonical_digest(value: Any) -> str:
+    """Return 20 hex digits of the SHA-256 of a JSON-able value, the same on every machine."""
+    text = json.dumps(value, sort_keys=True, separators=(",", ":"), allow_nan=False)
+    return hashlib.sha256(text.encode()).hexdigest()[:20]
+
+
+@dataclass(frozen=True)
+class Graph:
+    """A campaign with its plan.
+
+    Attributes
+    ----------
+    campaign : Campaign
+    layout : Layout
+        Paths in the campaign's folder.
+    grid : Grid
+    jobs : dict of str to Job
+        By name, in the order of the plan.
+    """
+
+    campaign: campaigns.Campaign
+    layout: Layout
+    grid: Grid
+    jobs: Mapping[str, Job] = field(repr=False)
+
+    @classmethod
+    def open(cls, config: Path | str, results: Path | str | None = None) -> Graph:
+        """Read, expand and plan the campaign file `config`.
+
+        Raises
+        ------
+        BadInput
+            With every problem of the file.
+        EnvironmentProblem
+            If there is no folder for the results.
+        """
+        campaign = campaigns.load(Path(config))
+        grid = expand(campaign)
+        layout = Layout(results_root(results) / campaign.name)
+        return cls(campaign, layout, grid, {job.name: job for job in plan(grid)})
+
+    @cached_property
+    def specs(self) -> dict[str, dict[str, Any]]:
+        """Specification of every job, by name."""
+        return {name: job.spec() for name, job in self.jobs.items()}
+
+    def job_digest(self, name: str) -> str:
+        """Digest of everything that the result of a job depends on."""
+        return canonical_digest([self.specs[name], NUMERICS_REVISION])
+
+    @cached_property
+    def table_digest(self) -> str:
+        """Digest of everything, besides the cases, that the table depends on."""
+        return canonical_digest(
+            [self.campaign.merged_yaml(), scatterloom.__version__, NUMERICS_REVISION]
+        )
+
+    @property
+    def has_populations(self) -> bool:
+        """Whether there is a bulk table to make."""
+        return bool(self.campaign.model.populations)
+
+    @property
+    def cases_of(self) -> dict[str, int]:
+        """Number of cases of every job."""
+        return {name: len(job.cases) for name, job in self.jobs.items()}
+
+    def case_files(self) -> dict[Path, list[str]]:
+        """Every case file with the digests of the cases it holds."""
+        return {
+            self.layout.case_file(name): [digest for digest, _ in job.cases]
+            for name, job in self.jobs.items()
+        }
+
+    def prepare(self) -> None:
+        """Write the merged configuration and the job specifications where they changed.
+
+        Specifications of an earlier plan are removed. A receipt that does not belong
+        to the table beside it is removed as well, so that the table is gathered again.
+        """
+        layout = self.layout
+        write_if_changed(layout.config, self.campaign.merged_yaml().encode())
+        for name, spec in self.specs.items():
+            write_if_changed(layout.job_file(name), json.dumps(spec, sort_keys=True).encode())
+        for path in layout.jobs.glob("*.json"):
+            if path.stem not in self.jobs:
+                path.unlink(missing_ok=True)
+        if not receipt_holds(layout):
+            layout.receipt.unlink(missing_ok=True)
+
+    def sweep(self) -> None:
+        """Remove what killed writers left behind."""
+        layout = self.layout
+        folders = [layout.folder, layout.jobs, layout.cases, layout.fields, layout.progress]
+        folders += sorted(p for p in layout.state.glob("cases/*") if p.is_dir())
+        for folder in (*folders, layout.table, layout.figures):
+            sweep_abandoned(folder)
+
+
+def receipt_holds(layout: Layout) -> bool:
+    """Tell whether the receipt names the table that is committed now."""
+    try:
+        receipt = json.loads(layout.receipt.read_bytes())
+        record = json.loads((layout.table / "commit.json").read_bytes())
+        return bool(receipt["manifest_sha256"] == record["manifest_sha256"])
+    except (OSError, ValueError, KeyError, TypeError):
+        return False

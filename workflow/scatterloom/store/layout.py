@@ -1,0 +1,128 @@
+"""Where everything lies: the checkout, the results, the folder of one campaign."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from pathlib import Path
+
+from scatterloom.errors import EnvironmentProblem
+
+
+def checkout() -> Path | None:
+    """Return the top of the checkout that this package runs from, or None if installed alone."""
+    top = Path(__file__).resolve().parents[3]
+    return top if (top / "Snakefile").is_file() and (top / "workflow").is_dir() else None
+
+
+def results_root(given: str | Path | None) -> Path:
+    """Return the folder that holds one folder per campaign, as an absolute path.
+
+    Parameters
+    ----------
+    given : path or None
+        What the user asked for; None for `results/` of the checkout.
+
+    Raises
+    ------
+    EnvironmentProblem
+        If nothing is given and there is no checkout.
+    """
+    if given is not None:
+        return Path(given).absolute()
+    top = checkout()
+    if top is None:
+        raise EnvironmentProblem(
+            "scatterloom does not run from a checkout, so there is no default for the results; "
+            "name a folder with --results"
+        )
+    return top / "results"
+
+
+@dataclass(frozen=True)
+class Layout:
+    """Paths inside the folder of a campaign (none of them need exist)."""
+
+    folder: Path
+
+    @property
+    def config(self) -> Path:
+        """The merged configuration."""
+        return self.folder / "config.yaml"
+
+    @property
+    def lock(self) -> Path:
+        """Held by the run that works on the campaign."""
+        return self.folder / ".campaign.lock"
+
+    @property
+    def jobs(self) -> Path:
+        """Specifications of the solver jobs."""
+        return self.folder / "jobs"
+
+    @property
+    def cases(self) -> Path:
+        """Published case files, one a job."""
+        return self.folder / "cases"
+
+    @property
+    def fields(self) -> Path:
+        """Published fields of the anchors, one file a job."""
+        return self.folder / "fields"
+
+    @property
+    def state(self) -> Path:
+        """What survives a failed or killed job; unknown to the rule graph."""
+        return self.folder / "state"
+
+    @property
+    def progress(self) -> Path:
+        """Heartbeats of the solver jobs."""
+        return self.state / "progress"
+
+    @property
+    def solved(self) -> Path:
+        """Single solved cases, by digest."""
+        return self.state / "cases"
+
+    @property
+    def logs(self) -> Path:
+        """Logs of the workflow engine and of every job."""
+        return self.state / "logs"
+
+    @property
+    def table(self) -> Path:
+        """The table."""
+        return self.folder / "table.zarr"
+
+    @property
+    def receipt(self) -> Path:
+        """Names the content of the table last gathered; the rule graph follows this file."""
+        return self.folder / "table.json"
+
+    @property
+    def bulk(self) -> Path:
+        """Quantities of the populations."""
+        return self.folder / "bulk.zarr"
+
+    @property
+    def figures(self) -> Path:
+        """Figures and their index."""
+        return self.folder / "figures"
+
+    @property
+    def audit(self) -> Path:
+        """Results of the physical checks."""
+        return self.folder / "audit.json"
+
+    @property
+    def report(self) -> Path:
+        """The report."""
+        return self.folder / "report.html"
+
+    def case_file(self, job: str) -> Path:
+        """Case file of a job."""
+        return self.cases / f"{job}.cases"
+
+    def job_file(self, job: str) -> Path:
+        """Specification of a job."""
+        return self.jobs / f"{job}.json"
