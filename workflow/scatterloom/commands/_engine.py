@@ -24,15 +24,27 @@ GRACE_S = 10.0
 LOGS_KEPT = 20
 PROFILES = ("laptop", "slurm")
 _LOG_TAIL_BYTES = 1 << 22
+_RECENT_BYTES = 1 << 16
 
 
 @dataclass(frozen=True)
 class FailedRule:
-    """A job that the engine reports as failed: its rule, its log, its exit code if known."""
+    """A job that the engine reports as failed.
+
+    Attributes
+    ----------
+    rule, log : str
+        The log by its path within the campaign's folder.
+    exit_code : int or None
+        None if it is not known, as of a killed job.
+    killed_by : str or None
+        Name of the signal that killed it.
+    """
 
     rule: str
     log: str
     exit_code: int | None
+    killed_by: str | None
 
 
 class Engine:
@@ -108,31 +120,37 @@ class Engine:
 
     def current_rule(self) -> str | None:
         """Return the rule that was started last."""
-        found = re.findall(r"^(?:local)?rule (\w+):", self._tail(), re.MULTILINE)
+        text = self._tail(_RECENT_BYTES)
+        found = re.findall(r"^(?:local)?rule (\w+):", text, re.MULTILINE)
         return found[-1] if found else None
 
     def failures(self) -> list[FailedRule]:
-        """Return the jobs that the log reports as failed for good, the last report of each."""
-        text = self._tail()
+        """Return the jobs that the log reports as failed, the last report of each."""
         failed: dict[str, FailedRule] = {}
-        for block in re.split(r"^(?=Error in rule |RuleException|WorkflowError)", text, flags=re.M):
-            match = re.match(r"Error in rule (\w+):", block)
-            if match is None:
-                continue
-            log = re.search(r"^ +log: (\S+)", block, re.MULTILINE)
-            code = re.search(r"non-zero exit (?:status|code) (\d+)", block)
-            name = log[1] if log else match[1]
-            failed[name] = FailedRule(match[1], name, int(code[1]) if code else None)
+        rule = ""
+        code: int | None = None
+        killer: str | None = None
+        for words in self._tail().splitlines():
+            # How the command ended stands before the report of the job.
+            if match := re.search(r"returned non-zero exit status (\d+)", words):
+                code, killer = int(match[1]), None
+            elif match := re.search(r"died with <Signals\.(\w+)", words):
+                code, killer = None, match[1]
+            elif match := re.match(r"Error in rule (\w+):", words):
+                rule = match[1]
+            elif match := re.match(r" +log: (\S+) \(check log", words):
+                failed[match[1]] = FailedRule(rule, match[1], code, killer)
+                code = killer = None
         return list(failed.values())
 
     def last_words(self, lines: int = 5) -> list[str]:
         """Return the last lines of the engine's log, for failures outside any job."""
         return [line for line in self._tail().splitlines() if line.strip()][-lines:]
 
-    def _tail(self) -> str:
+    def _tail(self, size: int = _LOG_TAIL_BYTES) -> str:
         with open(self.log, "rb") as stream:
             stream.seek(0, os.SEEK_END)
-            stream.seek(max(0, stream.tell() - _LOG_TAIL_BYTES))
+            stream.seek(max(0, stream.tell() - size))
             return stream.read().decode(errors="replace")
 
 

@@ -117,15 +117,18 @@ def _attend(engine: Engine, graph: Graph, meter: Meter) -> int:
 
 def _explain(engine: Engine, graph: Graph, progress: Progress) -> int:
     """Say which jobs failed and why; return the gravest of their exit codes."""
-    failures = engine.failures()
+    layout = graph.layout
     reported = {f"state/logs/jobs/{job.job}.log": job for job in progress.failed}
+    # A job that failed once and was done at the second try is no failure.
+    failures = [f for f in engine.failures() if not layout.case_file(Path(f.log).stem).exists()]
     codes = []
     for failure in failures:
-        heartbeat = reported.get(failure.log)
         code = failure.exit_code
-        reason = _last_lines(graph.layout.folder / failure.log)
-        if heartbeat is not None:
-            code, reason = heartbeat.exit_code, [heartbeat.message]
+        reason = _last_lines(layout.folder / failure.log)
+        if failure.killed_by is not None:
+            code, reason = 3, [f"killed by {failure.killed_by}; was memory short?"]
+        elif failure.log in reported:
+            code, reason = reported[failure.log].exit_code, [reported[failure.log].message]
         codes.append(code)
         _tell(graph, failure, reason)
     if not failures:
@@ -134,8 +137,9 @@ def _explain(engine: Engine, graph: Graph, progress: Progress) -> int:
             print(f"  {words}", file=sys.stderr)
         print(f"  log: {engine.log}", file=sys.stderr)
         return 3
+    jobs = "1 job" if len(failures) == 1 else f"{len(failures)} jobs"
     print(
-        f"scatterloom: {len(failures)} jobs failed; {progress.cases_done} of {progress.cases} "
+        f"scatterloom: {jobs} failed; {progress.cases_done} of {progress.cases} "
         "cases are solved and kept\n  hint: the same command tries the rest again",
         file=sys.stderr,
     )

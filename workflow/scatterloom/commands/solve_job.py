@@ -57,5 +57,7 @@ def _report(folder: Path, spec: dict[str, object], cases: int, error: Exception)
 
     machine = isinstance(error, (OSError, MemoryError))
     code = getattr(error, "exit_code", ENVIRONMENT if machine else INTERNAL)
-    message = str(error) or type(error).__name__
-    fail_heartbeat(folder, str(spec["name"]), str(spec["kind"]), cases, code, message)
+    message = "out of memory" if isinstance(error, MemoryError) else str(error)
+    fail_heartbeat(
+        folder, str(spec["name"]), str(spec["kind"]), cases, code, message or type(error).__name__
+    )

@@ -108,13 +108,23 @@ def is_abandoned(path: Path) -> bool:
         with contextlib.suppress(FileNotFoundError):
             return time.time() - path.stat().st_mtime > FOREIGN_AGE_S
         return False
+    return not is_alive(int(match["pid"]))
+
+
+def is_alive(pid: int) -> bool:
+    """Tell whether a process of this host is at work (an unburied dead one is not)."""
     try:
-        os.kill(int(match["pid"]), 0)
+        os.kill(pid, 0)
     except ProcessLookupError:
-        return True
-    except PermissionError:
         return False
-    return False
+    except PermissionError:
+        pass
+    try:
+        # The state follows the name, which stands in parentheses and may hold anything.
+        state = Path(f"/proc/{pid}/stat").read_bytes().rpartition(b")")[2].split()[0]
+    except (OSError, IndexError):
+        return True  # no such file system here; what kill said holds
+    return state not in (b"Z", b"X")
 
 
 def sweep_abandoned(folder: Path) -> list[Path]:

@@ -16,6 +16,7 @@ from pathlib import Path
 from typing import Any
 
 from scatterloom.errors import CampaignHeld
+from scatterloom.store.atomic import is_alive
 from scatterloom.store.provenance import now
 
 
@@ -65,17 +66,6 @@ def holder(path: Path) -> dict[str, Any] | None:
     if text["host"] == socket.gethostname() and not is_alive(text["pid"]):
         return None
     return text
-
-
-def is_alive(pid: int) -> bool:
-    """Tell whether a process of this host exists."""
-    try:
-        os.kill(pid, 0)
-    except ProcessLookupError:
-        return False
-    except PermissionError:
-        return True
-    return True
 
 
 def _refusal(path: Path) -> str:

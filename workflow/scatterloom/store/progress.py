@@ -11,8 +11,7 @@ from dataclasses import asdict, dataclass, fields, replace
 from pathlib import Path
 from typing import Any
 
-from scatterloom.store.atomic import atomic_write
-from scatterloom.store.held import is_alive
+from scatterloom.store.atomic import atomic_write, is_alive
 from scatterloom.store.layout import Layout
 
 RUNNING, DONE, FAILED, WAITING = "running", "done", "failed", "waiting"
