@@ -6,9 +6,7 @@ matching polarizability of one cell. Nothing here uses a Fourier transform, a sy
 lattice or a multipole, so it shares no step with the package.
 
 Directions: light comes along `incident`, leaves along `scattered` (unit vectors pointing along
-the propagation). The unit vectors of the scattering plane are those of Bohren & Huffman 1983,
-sec. 3.2: e_perp = scattered x incident / |...| for both waves, e_par = direction x e_perp, so
-that e_perp x e_par is the direction; for incidence along z, e_perp = -e_phi, e_par = e_theta.
+the propagation); polarizations refer to `oracles.mueller.scattering_plane`.
 """
 
 from __future__ import annotations
@@ -21,7 +19,7 @@ from scipy import linalg
 from scipy.integrate import lebedev_rule
 from scipy.special import sici
 
-from oracles.mueller import mueller
+from oracles.mueller import mueller, scattering_plane
 
 NEGATIVE_WEIGHTS = (13, 25, 27)
 """Degrees of Lebedev rules with negative weights."""
@@ -158,13 +156,9 @@ class DenseLattice:
 
     def _project(self, incident, scattered, basis, polarization):
         far = -1j * self.far_field(polarization, scattered)
-        perp = np.cross(scattered, incident)
-        perp /= np.linalg.norm(perp, axis=1, keepdims=True)
+        perp, par_i, par_s = scattering_plane(incident, scattered)
         # answers to the incident polarizations along e_par and e_perp of each plane
-        answer = [
-            np.einsum("sim,sm->si", far, e @ basis.T) for e in (np.cross(incident, perp), perp)
-        ]
-        par_s = np.cross(scattered, perp)
+        answer = [np.einsum("sim,sm->si", far, e @ basis.T) for e in (par_i, perp)]
         return np.array(
             [
                 np.sum(perp * answer[1], axis=1),

@@ -57,3 +57,16 @@ def gauss_angles(count: int):
     """Scattering angles [deg] and weights (sum 2) of the Gauss-Legendre rule in the cosine."""
     nodes, weights = np.polynomial.legendre.leggauss(count)
     return np.degrees(np.arccos(nodes))[::-1], weights[::-1]
+
+
+def scattering_plane(incident, scattered):
+    """Unit vectors e_perp, e_par of the incident and e_par of the scattered wave, (..., 3).
+
+    `incident` and `scattered` are unit vectors along the propagation, not parallel to each
+    other. e_perp = scattered x incident / |...| serves both waves and e_par = direction x
+    e_perp, so that e_perp x e_par is the direction (Bohren & Huffman 1983, sec. 3.2); for
+    incidence along z, e_perp = -e_phi and e_par = e_theta.
+    """
+    perp = np.cross(scattered, incident)
+    perp = perp / np.linalg.norm(perp, axis=-1, keepdims=True)
+    return perp, np.cross(incident, perp), np.cross(scattered, perp)
