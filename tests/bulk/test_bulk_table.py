@@ -59,7 +59,7 @@ def test_spheres_do_not_depolarize_and_the_matrix_is_normalized(columns) -> None
 
 
 def test_lidar_ratio_of_a_narrow_population_is_that_of_one_sphere(table) -> None:
-    radius = float(table["radius_um"][0, 0, 36])
+    radius = float(table["radius_um"][0, 36])
     narrow = Population("narrow", {"dark": 1.0}, Lognormal(radius, 0.002))
     out = build(table, [narrow])
     ball = sphere(1.55 + 0.05j, 2 * math.pi * radius / 0.55)

@@ -61,7 +61,7 @@ def mie_table(
         data["refractive_index_n"][p], data["refractive_index_k"][p] = index.real, index.imag
         for w in range(wavelength.size):
             for s in range(radius.size):
-                ball = sphere(index, data["size_parameter"][p, w, s])
+                ball = sphere(index, data["size_parameter"][w, s])
                 for variable in schema.SCALARS:
                     value = getattr(ball, variable.name)
                     if index.imag == 0 and variable.name == "absorption_efficiency":

@@ -9,6 +9,8 @@ cross section (Hansen & Travis 1974, section 2). Half widths are bounds that add
 - the quadrature error is the change of the result when every other size is left out;
 - particles smaller or larger than the table are left out of the value. Their share
   of extinction is estimated from the ends of the table and its effect added in full.
+  This is an estimate, not a bound: an average that needs it should not be trusted
+  (it is flagged beyond a share of 1 %).
 """
 
 from __future__ import annotations
@@ -26,7 +28,7 @@ from scatterloom.bulk.weights import coarse_nodes, size_weights
 FloatArray = NDArray[np.float64]
 
 FEWEST_SIZES = 4
-_LARGE_PARTICLE_EXTINCTION = 2.0  # the limit of geometrical optics
+_LARGE_PARTICLE_EXTINCTION = 3.0  # between the first maximum (4) and the limit (2) of spheres
 
 
 @dataclass(frozen=True)
@@ -70,6 +72,9 @@ class Average:
         Single-scattering albedo and asymmetry parameter.
     matrix, matrix_error : float64 (n_angle, 4, 4)
         Scattering matrix (mean F11 of 1) and half width.
+    ratio, ratio_error : float64 (n_angle, 4, 4)
+        Elements divided by F11. Their half widths are smaller than those of elements
+        suggest: what scales all elements alike leaves them unchanged.
     share_below, share_above : float
         Estimated share of the extinction by particles below and above the table's sizes.
     quadrature_error : float
@@ -88,6 +93,8 @@ class Average:
     asymmetry_error: float
     matrix: FloatArray
     matrix_error: FloatArray
+    ratio: FloatArray
+    ratio_error: FloatArray
     share_below: float
     share_above: float
     quadrature_error: float
@@ -164,6 +171,7 @@ def population_average(
     matrix, matrix_error = _by_scattering(
         parts, sca, sca_coarse, share, lambda o: o.matrix, lambda o: o.matrix_error
     )
+    ratio, ratio_error = _ratios(parts, matrix, sca, sca_coarse, share)
     end_absorption = max(1.0 - end for end in end_albedo)
     return Average(
         extinction_um2=ext,
@@ -178,6 +186,8 @@ def population_average(
         asymmetry_error=float(asymmetry_error),
         matrix=matrix,
         matrix_error=matrix_error,
+        ratio=ratio,
+        ratio_error=ratio_error,
         share_below=below / (ext + missing),
         share_above=above / (ext + missing),
         quadrature_error=abs(ext - ext_coarse) / ext,
@@ -197,7 +207,7 @@ def _part(number: float, optics: Optics, distribution: Distribution) -> _Part:
     coarse = np.zeros(radius.size)
     coarse[keep] = weights(radius[keep])
     # Below the table an efficiency falls at least like r (absorption by small particles);
-    # above it extinction stays near its last value or reaches the limit of large ones.
+    # above it extinction stays near its last value or is that of large particles.
     first, last = float(radius[0]), float(radius[-1])
     small = optics.extinction[0] / first * distribution.moment(3)
     large = max(optics.extinction[-1], _LARGE_PARTICLE_EXTINCTION) * distribution.moment(2)
@@ -245,6 +255,47 @@ def _by_scattering(
         # d(N/D) = [q_i error + (q - mean) error of the cross section] / D at each size.
         error += np.tensordot(weight * p.optics.scattering, half_width(p.optics), axes=1)
         error += np.tensordot(weight * p.optics.scattering_error, np.abs(q - value), axes=1)
-    ends = [np.abs(quantity(p.optics)[i]) for p in parts for i in (0, -1)]
-    error += share * (np.abs(value) + np.max(ends, axis=0))
+    ends = np.max([_largest_near_ends(quantity(p.optics)) for p in parts], axis=0)
+    error += share * (np.abs(value) + ends)
     return value, error
+
+
+def _largest_near_ends(quantity: FloatArray) -> FloatArray:
+    """Largest size of a quantity in the quarters of the sizes at both ends.
+
+    It stands for the particles outside the table: the last size alone may happen to
+    lie on a zero.
+    """
+    size, near = np.abs(quantity), max(1, len(quantity) // 4)
+    return np.asarray(np.maximum(size[:near].max(axis=0), size[-near:].max(axis=0)))
+
+
+def _ratios(
+    parts: Sequence[_Part],
+    matrix: FloatArray,
+    scattering: float,
+    scattering_coarse: float,
+    share: float,
+) -> tuple[FloatArray, FloatArray]:
+    """Elements divided by F11, and their half widths.
+
+    The ratio r makes the mean of F_ij - r F11 vanish; to first order its error is
+    the error of that mean over F11. Particles outside the table have |F_ij| <= F11,
+    so they move it by (1 + |r|) F11 at most, unless the element vanishes for all.
+    """
+    f11 = matrix[..., :1, :1]
+    r = matrix / f11
+    excess, error = _by_scattering(
+        parts,
+        scattering,
+        scattering_coarse,
+        0.0,
+        lambda o: o.matrix - r * o.matrix[..., :1, :1],
+        lambda o: o.matrix_error + np.abs(r) * o.matrix_error[..., :1, :1],
+    )
+    outside = np.max([_largest_near_ends(p.optics.matrix[..., :1, :1]) for p in parts], axis=0)
+    occurs = np.any([np.any(p.optics.matrix != 0.0, axis=(0, 1)) for p in parts], axis=0)
+    bound = error + np.abs(excess) + share * np.where(occurs, (1.0 + np.abs(r)) * outside, 0.0)
+    bound /= f11
+    bound[..., 0, 0] = 0.0
+    return r, bound

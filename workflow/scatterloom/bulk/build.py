@@ -13,18 +13,11 @@ from scatterloom.bulk import schema
 from scatterloom.bulk.average import FEWEST_SIZES, Average, Optics, population_average
 from scatterloom.bulk.distribution import Distribution, from_spec
 from scatterloom.errors import BadInput
-from scatterloom.scattering.elements import (
-    RATIOS,
-    circular_depolarization,
-    linear_depolarization,
-    ratio,
-)
+from scatterloom.scattering.elements import circular_depolarization, linear_depolarization
 from scatterloom.store.schema import FAILED, SOLVED, WARNED, Variable
 
 if TYPE_CHECKING:
     import xarray
-
-_MINUS_F12 = next(r for r in RATIOS if r.name == "minus_f12_f11")
 
 
 @dataclass(frozen=True)
@@ -198,13 +191,15 @@ def _quantities(average: Average, angles_deg: np.ndarray) -> dict[str, tuple[Any
         "absorption_cross_section": (a.absorption_um2, a.absorption_um2_error),
         "single_scattering_albedo": (a.albedo, a.albedo_error),
         "asymmetry_parameter": (a.asymmetry, a.asymmetry_error),
-        "degree_of_linear_polarization": ratio(a.matrix, a.matrix_error, _MINUS_F12),
+        "scattering_matrix_ratio": (a.ratio, a.ratio_error),
+        "degree_of_linear_polarization": (-a.ratio[:, 0, 1], a.ratio_error[:, 0, 1]),
     }
     if angles_deg[-1] == 180.0:
-        back, back_error = a.matrix[-1], a.matrix_error[-1]
-        lidar_ratio = 4.0 * math.pi / (a.albedo * back[0, 0])
-        relative = a.albedo_error / a.albedo + back_error[0, 0] / back[0, 0]
+        f11, f11_error = a.matrix[-1, 0, 0], a.matrix_error[-1, 0, 0]
+        r, r_error = a.ratio[-1], a.ratio_error[-1]
+        lidar_ratio = 4.0 * math.pi / (a.albedo * f11)
+        relative = a.albedo_error / a.albedo + f11_error / f11
         values["lidar_ratio"] = (lidar_ratio, lidar_ratio * relative)
-        values["linear_depolarization_ratio"] = linear_depolarization(back, back_error)
-        values["circular_depolarization_ratio"] = circular_depolarization(back, back_error)
+        values["linear_depolarization_ratio"] = linear_depolarization(r[1, 1], r_error[1, 1])
+        values["circular_depolarization_ratio"] = circular_depolarization(r[3, 3], r_error[3, 3])
     return values

@@ -41,6 +41,15 @@ _VALUES = (
         error=True,
     ),
     Variable(
+        "scattering_matrix_ratio",
+        MATRIX,
+        "f8",
+        "scattering matrix divided by its element 11",
+        comment="its half widths are smaller than those of the elements suggest, since what "
+        "scales all elements alike does not change it",
+        error=True,
+    ),
+    Variable(
         "extinction_cross_section",
         GRID,
         "f8",

@@ -73,37 +73,33 @@ def ratio(matrix: Any, half_width: Any, which: Ratio) -> tuple[FloatArray, Float
     return value, bound
 
 
-def linear_depolarization(matrix: Any, half_width: Any) -> tuple[FloatArray, FloatArray]:
-    """Linear depolarization ratio (F11 - F22)/(F11 + F22) of a matrix at 180 degrees.
+def linear_depolarization(f22_f11: Any, half_width: Any) -> tuple[Any, Any]:
+    """Linear depolarization ratio (F11 - F22)/(F11 + F22) at 180 degrees.
 
     Parameters
     ----------
-    matrix, half_width : float64 (..., 4, 4)
-        Backscattering matrices and their half widths.
+    f22_f11, half_width : float64 (...)
+        r = F22/F11 at 180 degrees and its half width.
 
     Returns
     -------
     value, half_width : float64 (...)
-        With r = F22/F11 the derivative is -2/(1 + r)^2; the half width is its
-        size times that of r.
+        The derivative is -2/(1 + r)^2.
     """
-    r, bound = ratio(matrix, half_width, RATIOS[0])
-    return (1.0 - r) / (1.0 + r), 2.0 * bound / (1.0 + r) ** 2
+    return (1.0 - f22_f11) / (1.0 + f22_f11), 2.0 * half_width / (1.0 + f22_f11) ** 2
 
 
-def circular_depolarization(matrix: Any, half_width: Any) -> tuple[FloatArray, FloatArray]:
-    """Circular depolarization ratio (F11 + F44)/(F11 - F44) of a matrix at 180 degrees.
+def circular_depolarization(f44_f11: Any, half_width: Any) -> tuple[Any, Any]:
+    """Circular depolarization ratio (F11 + F44)/(F11 - F44) at 180 degrees.
 
     Parameters
     ----------
-    matrix, half_width : float64 (..., 4, 4)
-        Backscattering matrices and their half widths.
+    f44_f11, half_width : float64 (...)
+        r = F44/F11 at 180 degrees and its half width.
 
     Returns
     -------
     value, half_width : float64 (...)
-        With r = F44/F11 the derivative is 2/(1 - r)^2; the half width is its size
-        times that of r.
+        The derivative is 2/(1 - r)^2.
     """
-    r, bound = ratio(matrix, half_width, RATIOS[2])
-    return (1.0 + r) / (1.0 - r), 2.0 * bound / (1.0 - r) ** 2
+    return (1.0 + f44_f11) / (1.0 - f44_f11), 2.0 * half_width / (1.0 - f44_f11) ** 2
