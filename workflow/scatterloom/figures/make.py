@@ -1,0 +1,97 @@
+"""All figures of a campaign, in order of presentation, with their index."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator, Sequence
+from functools import partial
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from scatterloom.bulk.build import Population
+from scatterloom.figures.curves import matrix_curves
+from scatterloom.figures.effort import product_counts
+from scatterloom.figures.maps import size_angle_map
+from scatterloom.figures.picture import INDEX, Picture, save, style, write_index
+from scatterloom.figures.population import population_panel
+from scatterloom.figures.selection import load_ladder
+
+if TYPE_CHECKING:
+    import xarray
+
+LADDERS_SHOWN = 12
+"""Pairs of particle and wavelength that are drawn; a report with more would not be read."""
+
+
+def make_figures(
+    table: xarray.Dataset,
+    folder: Path,
+    bulk: xarray.Dataset | None = None,
+    populations: Sequence[Population] = (),
+) -> tuple[list[dict[str, str]], list[str]]:
+    """Draw every figure and write the index last.
+
+    Parameters
+    ----------
+    table : xarray.Dataset
+        An opened table.
+    folder : Path
+        Where PNG, SVG, CSV and `figures.json` go. The index is taken away first, so
+        that it never names figures of two tables.
+    bulk : xarray.Dataset, optional
+        Bulk properties of the table.
+    populations : sequence of Population
+        The populations of `bulk`, in its order.
+
+    Returns
+    -------
+    entries : list of dict
+        As in the index: name, png, svg, csv, title, caption, alt.
+    notes : list of str
+        What was not drawn, and why.
+
+    Raises
+    ------
+    OSError
+        From the file system.
+    """
+    folder.mkdir(parents=True, exist_ok=True)
+    (folder / INDEX).unlink(missing_ok=True)
+    entries: list[dict[str, str]] = []
+    notes: list[str] = []
+    with style():
+        for draw in _plans(table, bulk, populations, notes):
+            try:
+                picture = draw()
+            except ValueError as reason:
+                notes.append(f"not drawn: {reason}")
+                continue
+            entries.append(save(picture, folder))
+    write_index(folder, entries, notes)
+    return entries, notes
+
+
+def _plans(
+    table: xarray.Dataset,
+    bulk: xarray.Dataset | None,
+    populations: Sequence[Population],
+    notes: list[str],
+) -> Iterator[Callable[[], Picture]]:
+    pairs = list(np.ndindex(table.sizes["particle"], table.sizes["wavelength"]))
+    if len(pairs) > LADDERS_SHOWN:
+        notes.append(
+            f"the first {LADDERS_SHOWN} of {len(pairs)} pairs of particle and wavelength are drawn"
+        )
+    for particle, wavelength in pairs[:LADDERS_SHOWN]:
+        ladder = load_ladder(table, particle, wavelength)
+        yield partial(matrix_curves, ladder)
+        yield partial(size_angle_map, ladder)
+    for particle in range(min(table.sizes["particle"], LADDERS_SHOWN)):
+        yield partial(product_counts, table, particle)
+    if bulk is None:
+        return
+    radius = table["radius_um"].values
+    reach = (float(radius.min()), float(radius.max()))
+    for i, population in enumerate(populations[:LADDERS_SHOWN]):
+        yield partial(population_panel, bulk, i, population, reach)

@@ -1,0 +1,123 @@
+"""A picture with the words and numbers that go with it, and how it becomes files."""
+
+from __future__ import annotations
+
+import csv
+import io
+import json
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
+from dataclasses import dataclass
+from importlib.resources import as_file, files
+from pathlib import Path
+from typing import Any
+
+import matplotlib
+from matplotlib.figure import Figure
+
+from scatterloom.store.atomic import atomic_write
+
+INDEX = "figures.json"
+BAND = "Bands are 95 % half widths."
+
+SERIES = (
+    ("#0058a3", "-", "o"),
+    ("#c04a00", "--", "s"),
+    ("#00704f", "-.", "^"),
+    ("#8b2f77", ":", "D"),
+    ("#222222", (0, (5, 1, 1, 1, 1, 1)), "v"),
+)
+"""Colour, line style and marker of each series: no two series differ by colour alone."""
+
+
+@dataclass(frozen=True)
+class Picture:
+    """One figure before it is saved.
+
+    Attributes
+    ----------
+    stem : str
+        File name without ending.
+    title, caption, alt : str
+        Title; caption, which says what bands and marks are; text for who cannot see it.
+    figure : matplotlib.figure.Figure
+    header : sequence of str
+        Column names, with units, of the numbers behind the picture.
+    rows : sequence of sequence
+        The numbers.
+    """
+
+    stem: str
+    title: str
+    caption: str
+    alt: str
+    figure: Figure
+    header: Sequence[str]
+    rows: Sequence[Sequence[Any]]
+
+
+@contextmanager
+def style() -> Iterator[None]:
+    """Draw and save inside this context; it leaves global settings alone."""
+    with as_file(files("scatterloom.figures") / "scatterloom.mplstyle") as path:
+        settings = matplotlib.rc_params_from_file(path, use_default_template=True)
+    # Figures are made without the state machine of pyplot, so that no backend is chosen.
+    with matplotlib.rc_context({k: v for k, v in settings.items() if k != "backend"}):
+        yield
+
+
+def save(picture: Picture, folder: Path) -> dict[str, str]:
+    """Write PNG, SVG and the numbers as CSV; equal input gives equal bytes.
+
+    Parameters
+    ----------
+    picture : Picture
+    folder : Path
+
+    Returns
+    -------
+    dict of str to str
+        Entry for the index: file names, title, caption, alternative text.
+
+    Raises
+    ------
+    OSError
+        From the file system; no file is left half written.
+    """
+    png, svg = io.BytesIO(), io.BytesIO()
+    picture.figure.savefig(png, format="png", metadata={"Software": None})
+    nothing = dict.fromkeys(("Creator", "Date", "Format", "Type"))
+    picture.figure.savefig(svg, format="svg", metadata=nothing)
+    text = io.StringIO()
+    writer = csv.writer(text, lineterminator="\n")
+    writer.writerow(picture.header)
+    writer.writerows([[_plain(value) for value in row] for row in picture.rows])
+    contents = {"png": png.getvalue(), "svg": svg.getvalue(), "csv": text.getvalue().encode()}
+    for ending, content in contents.items():
+        with atomic_write(folder / f"{picture.stem}.{ending}") as stream:
+            stream.write(content)
+    names = {ending: f"{picture.stem}.{ending}" for ending in contents}
+    words = {"title": picture.title, "caption": picture.caption, "alt": picture.alt}
+    return {"name": picture.stem, **names, **words}
+
+
+def _plain(value: Any) -> Any:
+    if isinstance(value, str | int):
+        return value
+    return "" if value is None or value != value else f"{float(value):.5g}"
+
+
+def write_index(folder: Path, entries: Sequence[dict[str, str]], notes: Sequence[str]) -> None:
+    """Write the index of a folder of figures, after everything it names.
+
+    Parameters
+    ----------
+    folder : Path
+    entries : sequence of dict
+        What `save` returned, in the order of presentation.
+    notes : sequence of str
+        What was not drawn, and why.
+    """
+    text = json.dumps({"figures": list(entries), "notes": list(notes)}, indent=1)
+    with atomic_write(folder / INDEX) as stream:
+        stream.write(text.encode())
