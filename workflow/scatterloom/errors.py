@@ -10,6 +10,14 @@ from collections.abc import Iterable
 from dataclasses import dataclass
 
 
+def visible(text: str) -> str:
+    """Write control characters as escapes, so that no file can drive the user's terminal."""
+    return "".join(
+        c if c.isprintable() else c.encode("unicode_escape", "surrogatepass").decode("ascii")
+        for c in text
+    )
+
+
 @dataclass(frozen=True)
 class Problem:
     """One thing wrong with an input file, and what would be right.
@@ -35,11 +43,11 @@ class Problem:
 
     def __str__(self) -> str:
         place = ":".join(str(part) for part in (self.file, self.line, self.column) if part)
-        text = f"{place}: {self.message}"
+        text = f"{visible(place)}: {visible(self.message)}"
         if self.found is not None:
-            text += f"\n  found: {self.found}"
+            text += f"\n  found: {visible(self.found)}"
         if self.hint is not None:
-            text += f"\n  hint: {self.hint}"
+            text += f"\n  hint: {visible(self.hint)}"
         return text
 
 

@@ -66,14 +66,14 @@ def _own(path: KeyPath, message: str, hint: str, at: KeyPath, document: Document
 
 def _unknown(path: KeyPath, location: tuple[str | int, ...], document: Document) -> Problem:
     _, parent = locate(location[:-1])
-    known = list((parent or {}).get("properties", {}))
+    known = (parent or {}).get("properties", {})
     place = written(path[:-1]) or "the campaign file"
     word = str(path[-1])
     return document.problem(
         path,
         f"unknown key '{word}' in {place}",
         f"{word}: {document.show(path)}",
-        nearest(word, [key for key in known if key not in (document.get(path[:-1]) or {})]),
+        nearest(word, known),
         at_key=True,
     )
 

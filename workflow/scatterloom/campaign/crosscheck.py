@@ -18,6 +18,9 @@ from scatterloom.errors import Problem
 MOST_CELLS = 1_000_000
 """Largest number of (particle, wavelength, size) cells in one campaign."""
 
+LONGEST_USUAL_UM = 100.0
+"""Wavelength [um] from which a warning asks whether nanometres are meant."""
+
 WANTED_COVERAGE = 0.99
 """Part of a population's cross section below which a warning is given."""
 
@@ -59,6 +62,20 @@ def unused_materials(document: Document) -> list[Problem]:
         )
         for name in document.tree["materials"]
         if name not in used
+    ]
+
+
+def doubtful_wavelengths(document: Document, wavelengths_um: Sequence[float]) -> list[Problem]:
+    """Warn of wavelengths that look like nanometres."""
+    return [
+        document.problem(
+            ("wavelengths_um", position),
+            f"wavelength {wavelength:g} um is longer than infrared optics use",
+            document.show(("wavelengths_um", position)),
+            f"if these are nanometres, give {wavelength / 1000:g}",
+        )
+        for position, wavelength in enumerate(wavelengths_um)
+        if wavelength >= LONGEST_USUAL_UM
     ]
 
 

@@ -18,7 +18,7 @@ from ruamel.yaml.error import MarkedYAMLError, YAMLError
 from ruamel.yaml.nodes import MappingNode, Node, ScalarNode, SequenceNode
 from ruamel.yaml.reader import ReaderError
 
-from scatterloom.errors import BadInput, Problem
+from scatterloom.errors import BadInput, Problem, visible
 
 KeyPath = tuple[str | int, ...]
 """Keys and list positions that lead from the top of the document to a value."""
@@ -91,7 +91,8 @@ class Document:
         if mark is None:
             return "nothing"
         if isinstance(value, dict):
-            return "a mapping with the keys " + _some(value) if value else "an empty mapping"
+            keys = "key" if len(value) == 1 else "keys"
+            return f"a mapping with the {keys} {_some(value)}" if value else "an empty mapping"
         if isinstance(value, list):
             return f"a list of {len(value)}" if value else "an empty list"
         if value is None:
@@ -120,7 +121,7 @@ def read(path: Path, shown: str) -> Document:
         raise BadInput([_nested(shown)]) from None
     if not isinstance(tree, dict) and not builder.problems:
         mark = builder.marks[()]
-        kind = {list: "a list", str: "text"}.get(type(tree), "a single value")
+        kind = "a list" if isinstance(tree, list) else "a single value"
         builder.problems.append(
             Problem(
                 shown,
@@ -215,7 +216,10 @@ def _syntax(error: MarkedYAMLError, text: str, shown: str) -> Problem:
         return Problem(shown, line, column, f"not YAML: {_clip(reason)}", hint=hint)
     hint = "look at this line and the one above for a missing colon, quote or bracket"
     context = f" {error.context}" if error.context else ""
-    return Problem(shown, line, column, f"not YAML: {_clip(reason + context, 120)}", hint=hint)
+    opened = error.context_mark
+    if context and opened and line and opened.line + 1 != line:
+        context += f" that starts in line {opened.line + 1}"
+    return Problem(shown, line, column, f"not YAML: {_clip(reason + context, 140)}", hint=hint)
 
 
 def _nested(shown: str) -> Problem:
@@ -256,6 +260,7 @@ class _Builder:
                     self.value(child, (*path, position), None)
                     for position, child in enumerate(node.value)
                 ]
+            assert isinstance(node, MappingNode)
             return dict(self._entries(node, path))
         finally:
             self._open.pop()
@@ -305,8 +310,8 @@ class _Builder:
 
 
 def _clip(text: str, longest: int = 60) -> str:
-    """Shorten text and make control characters visible, so that no file can drive a terminal."""
-    text = "".join(c if c.isprintable() else f"\\x{ord(c):02x}" for c in text)
+    """Shorten text to at most `longest` characters."""
+    text = visible(text)
     return text if len(text) <= longest else text[: longest - 3] + "..."
 
 

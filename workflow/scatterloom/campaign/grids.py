@@ -66,9 +66,10 @@ class SizeRule(Section):
         steps = {"ratio": self.ratio, "per_doubling": self.per_doubling, "count": self.count}
         given = [name for name, value in steps.items() if value is not None]
         if len(given) != 1:
-            found = " and ".join(given) if given else "none of them"
             raise wrong(
-                f"the range needs one step rule, but {found} is given",
+                f"the range has several step rules, {' and '.join(given)}"
+                if given
+                else "the range has no step rule",
                 "give exactly one of 'ratio', 'per_doubling' and 'count'",
                 *given[1:2],
             )
@@ -97,9 +98,8 @@ class SizeRule(Section):
                 inner = [start * (end / start) ** (i / steps) for i in range(1, number - 1)]
                 return [start, *inner, end]
             if self.per_doubling is not None:
-                return [
-                    start * Decimal(2) ** (Decimal(i) / self.per_doubling) for i in range(number)
-                ]
+                octaves = [Decimal(i) / self.per_doubling for i in range(number)]
+                return [start * Decimal(2) ** octave for octave in octaves]
             ratio = decimal(self.ratio or 0.0)
             return [start * ratio**i for i in range(number)]
 
@@ -119,11 +119,11 @@ class AngleRule(Section):
                 "give a 'to' that is larger than 'from'",
                 "to",
             )
-        if (decimal(self.end) - decimal(self.start)) % decimal(self.step) != 0:
-            span = decimal(self.end) - decimal(self.start)
+        span = decimal(self.end) - decimal(self.start)
+        if span % decimal(self.step) != 0:
             raise wrong(
-                f"a step of {self.step:g} degrees does not divide the range of {span:f} degrees",
-                f"give a step that goes into {span:f} a whole number of times",
+                f"a step of {self.step:g} degrees does not divide the range of {float(span):g}",
+                f"give a step that goes into {float(span):g} degrees a whole number of times",
                 "step",
             )
         return self

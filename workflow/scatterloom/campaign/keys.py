@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Sequence
 from functools import cache
 from typing import Any
@@ -34,10 +35,11 @@ def follow(node: Node) -> Node:
 
 def choices(node: Node) -> dict[str, Node]:
     """Return the options of a union by tag; empty if the node is no union."""
-    mapping = node.get("discriminator", {}).get("mapping")
+    mapping: dict[str, str] = node.get("discriminator", {}).get("mapping", {})
     if mapping:
         return {tag: follow({"$ref": reference}) for tag, reference in mapping.items()}
-    options = [follow(option) for option in node.get("anyOf", node.get("oneOf", []))]
+    branches: list[Node] = node.get("anyOf") or node.get("oneOf") or []
+    options = [follow(option) for option in branches]
     return {("list" if o.get("type") == "array" else "rule"): o for o in options}
 
 
@@ -71,23 +73,20 @@ def locate(location: Sequence[str | int]) -> tuple[tuple[str | int, ...], Node |
     return tuple(path), node
 
 
+def short(value: float) -> str:
+    """Write a number briefly: 0.25, 1e6, 1e-6."""
+    return re.sub(r"e([+-])0*", lambda sign: "e" + sign[1].strip("+"), f"{value:g}")
+
+
 def bounds(node: Node) -> str:
     """Say the bounds of a number, such as "from 0.1 to 10", or nothing."""
     low, high = node.get("minimum"), node.get("maximum")
     above, below = node.get("exclusiveMinimum"), node.get("exclusiveMaximum")
     if low is not None and high is not None:
-        return f"from {low:g} to {high:g}"
-    parts = [
-        f"{word} {value:g}"
-        for word, value in (
-            ("at least", low),
-            ("above", above),
-            ("at most", high),
-            ("below", below),
-        )
-        if value is not None
-    ]
-    return " and ".join(parts)
+        return f"from {short(low)} to {short(high)}"
+    limits = {"at least": low, "above": above, "at most": high, "below": below}
+    given = [f"{word} {short(value)}" for word, value in limits.items() if value is not None]
+    return " and ".join(given)
 
 
 def expected(node: Node, plural: bool = False) -> str:
@@ -116,7 +115,8 @@ def expected(node: Node, plural: bool = False) -> str:
     if kind == "object":
         if "properties" in node:
             listed = ", ".join(f"'{key}'" for key in node["properties"])
-            return f"{'mappings' if plural else 'a mapping'} with the keys {listed}"
+            keys = "key" if len(node["properties"]) == 1 else "keys"
+            return f"{'mappings' if plural else 'a mapping'} with the {keys} {listed}"
         inner = expected(follow(node["additionalProperties"]))
         return f"a mapping of names, each to {inner}"
     low, high = node.get("minLength"), node.get("maxLength")

@@ -73,7 +73,7 @@ class Campaign:
             ]
         yaml = YAML(typ="safe", pure=True)
         yaml.default_flow_style = None
-        yaml.sort_base_mapping_type_on_output = False
+        yaml.sort_base_mapping_type_on_output = False  # type: ignore[assignment]
         yaml.allow_unicode = True
         yaml.width = 100
         stream = io.StringIO()
@@ -92,10 +92,10 @@ def load(path: str | Path) -> Campaign:
     document = read(Path(path), str(path))
     problems: list[Problem] = []
     broken: set[str | int] = set()
+    model: CampaignModel | None = None
     try:
         model = CampaignModel.model_validate(document.tree)
     except ValidationError as error:
-        model = None
         problems += complaints(error, document)
         broken = {detail["loc"][0] for detail in error.errors() if detail["loc"]}
     sections = _sections(model, document, broken)
@@ -113,9 +113,13 @@ def load(path: str | Path) -> Campaign:
         )
     if problems or model is None:
         raise BadInput(_in_order(problems, document))
-    warnings = crosscheck.unused_materials(document) + crosscheck.check_coverage(
-        document, model.populations, model.sizes, model.wavelengths_um, model.medium.index
-    )
+    warnings = [
+        *crosscheck.unused_materials(document),
+        *crosscheck.doubtful_wavelengths(document, model.wavelengths_um),
+        *crosscheck.check_coverage(
+            document, model.populations, model.sizes, model.wavelengths_um, model.medium.index
+        ),
+    ]
     return Campaign(Path(path), model, indices, tuple(_in_order(warnings, document)), spectra)
 
 
@@ -132,8 +136,8 @@ def _sections(
         if name not in document.tree:
             sections[name] = info.get_default(call_default_factory=True)
         elif name in ("wavelengths_um", "medium", "materials", "particles", "sizes"):
-            adapter: TypeAdapter[Any] = TypeAdapter(info.annotation)
-            sections[name] = adapter.validate_python(document.tree[name])
+            kind: Any = info.annotation
+            sections[name] = TypeAdapter(kind).validate_python(document.tree[name])
     return sections
 
 

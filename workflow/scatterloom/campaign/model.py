@@ -6,7 +6,7 @@ the reference page are made from them.
 
 from __future__ import annotations
 
-from typing import Annotated, Literal
+from typing import Annotated, Any, Literal
 
 from pydantic import field_validator, model_validator
 
@@ -16,8 +16,8 @@ from scatterloom.campaign.sections import NAME_FORM, Name, Section, check_names,
 from scatterloom.campaign.shapes import Shape
 
 Wavelength = Annotated[float, setting("One wavelength.", unit="um", ge=1e-3, le=1e6)]
-_N = {"unit": "1", "ge": 0.01, "le": 10.0}
-_K = {"unit": "1", "ge": 0.0, "le": 10.0}
+_N: dict[str, Any] = {"unit": "1", "ge": 0.01, "le": 10.0}
+_K: dict[str, Any] = {"unit": "1", "ge": 0.0, "le": 10.0}
 _ABSORBS = "absorption is a positive k: the index is n + ik"
 
 
@@ -83,7 +83,9 @@ class Particle(Section):
     """A shape made of a material."""
 
     name: Name = setting("Name of the particle, a coordinate of the table.", form=NAME_FORM)
-    material: str = setting("One of the keys under `materials`.")
+    material: str = setting(
+        "One of the keys under `materials`.", form="the name of a material under 'materials'"
+    )
     shape: Shape = setting("Shape of the particle.")
 
 
@@ -111,7 +113,9 @@ class Sizes(Section):
         both = self.radius_um is not None and self.size_parameter is not None
         if both or (self.radius_um is None and self.size_parameter is None):
             raise wrong(
-                f"{'both' if both else 'neither'} of radius_um and size_parameter is given",
+                "both radius_um and size_parameter are given"
+                if both
+                else "neither radius_um nor size_parameter is given",
                 "give exactly one of 'radius_um' and 'size_parameter'",
                 *(["size_parameter"] if both else []),
             )

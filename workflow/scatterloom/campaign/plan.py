@@ -193,16 +193,13 @@ def _span_batches(segment: _Segment, seconds: float) -> list[list[tuple[int, lis
 
 
 def _batches(items: Sequence[T], costs: Sequence[float], seconds: float) -> list[list[T]]:
-    """Cut a sequence into runs of nearly equal cost, at most `seconds` where possible."""
-    if not items:
-        return []
-    # Equal shares rather than full jobs and a small rest: the last job is not wasted.
-    share = math.fsum(costs) / math.ceil(math.fsum(costs) / seconds)
-    batches: list[list[T]] = [[]]
-    spent = 0.0
+    """Cut a sequence into runs that cost at most `seconds`, or hold a single item."""
+    batches: list[list[T]] = []
+    spent = math.inf
     for item, cost in zip(items, costs, strict=True):
-        if batches[-1] and spent + 0.5 * cost > share * len(batches):
+        if spent + cost > seconds:
             batches.append([])
+            spent = 0.0
         batches[-1].append(item)
         spent += cost
     return batches

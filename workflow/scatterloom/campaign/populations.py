@@ -29,17 +29,10 @@ class Lognormal(Section):
 
     @model_validator(mode="after")
     def _check(self) -> Lognormal:
-        pairs = {
-            "radius_um": self.radius_um,
-            "geometric_sd": self.geometric_sd,
-            "effective_radius_um": self.effective_radius_um,
-            "effective_variance": self.effective_variance,
-        }
-        given = [name for name, value in pairs.items() if value is not None]
-        if given not in (
-            ["radius_um", "geometric_sd"],
-            ["effective_radius_um", "effective_variance"],
-        ):
+        direct = ["radius_um", "geometric_sd"]
+        effective = ["effective_radius_um", "effective_variance"]
+        given = [name for name in direct + effective if getattr(self, name) is not None]
+        if given not in (direct, effective):
             raise wrong(
                 f"a lognormal distribution cannot be made from {' and '.join(given) or 'nothing'}",
                 "give 'radius_um' and 'geometric_sd', or 'effective_radius_um' and "
@@ -51,7 +44,7 @@ class Lognormal(Section):
         """Return the median radius [um] and s, the standard deviation of ln r.
 
         r_eff = r_g exp(2.5 s^2), v_eff = exp(s^2) - 1 (Hansen & Travis 1974,
-        Space Sci. Rev. 16, 527, section 2.4).
+        Space Sci. Rev. 16, 527).
         """
         if self.radius_um is not None and self.geometric_sd is not None:
             return self.radius_um, math.log(self.geometric_sd)

@@ -11,7 +11,7 @@ from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
 
-from scatterloom.campaign.keys import Node, bounds, choices, follow, schema
+from scatterloom.campaign.keys import Node, bounds, choices, follow, schema, short
 
 ROOT = Path(__file__).parents[3]
 SCHEMA_FILE = Path("workflow/schemas/campaign.schema.json")
@@ -141,6 +141,10 @@ def _range(node: Node) -> str:
     if "form" in node:
         return str(node["form"])
     parts = [bounds(node)]
+    if "list" in (options := choices(node)):
+        return "list: " + _range(options["list"])
+    if "maxLength" in node:
+        parts.append(f"{node.get('minLength', 0)} to {node['maxLength']} characters")
     low, high = node.get("minItems"), node.get("maxItems")
     if low is not None and low == high:
         parts.append(f"{low} entries")
@@ -160,7 +164,7 @@ def _default(value: Any) -> str:
         return "its defaults"
     if value == []:
         return "empty"
-    return f"{value:g}" if isinstance(value, float) else str(value)
+    return short(value) if isinstance(value, float) else str(value)
 
 
 def _untitled(node: Any, names: bool = False) -> Any:

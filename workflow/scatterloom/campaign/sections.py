@@ -51,7 +51,7 @@ def setting(
         Bounds as pydantic names them: ge, gt, le, lt, min_length, max_length, pattern, alias.
     """
     extra = {"unit": unit, "form": form, "advice": advice}
-    known = {name: value for name, value in extra.items() if value is not None}
+    known: dict[str, Any] = {name: value for name, value in extra.items() if value is not None}
     return Field(default, description=description, json_schema_extra=known or None, **constraints)
 
 
