@@ -43,7 +43,7 @@ def execute(args: argparse.Namespace) -> int:
     )
     axes = Axes.of(graph.grid, campaign.angles_deg)
     cases = Cases(graph.case_files(), partial=args.partial)
-    gathered = gather(layout.table, axes, cases, about, dict(FLAGS))
+    gathered = gather(layout.table, axes, cases, about, FLAGS)
     if not args.partial:
         receipt = {
             "content_digest": gathered.content_digest,

@@ -33,6 +33,15 @@ FORMAT_VERSION = 1
 
 _FIXED = struct.Struct("<IQ32s")
 _HEADER_LENGTH = struct.Struct("<I")
+_NOT_RECORDS = (
+    zlib.error,
+    struct.error,
+    ValueError,
+    KeyError,
+    IndexError,
+    TypeError,
+    AttributeError,
+)
 _PLAIN_KINDS = "biufcSU"
 
 
@@ -54,7 +63,7 @@ def write_records(path: Path | str, records: Iterable[CaseRecord]) -> None:
         From the file system.
     """
     payload = zlib.compress(_encode([record.to_arrays() for record in records]), level=1)
-    digest = _digest(FORMAT_VERSION, payload)
+    digest = _digest(FORMAT_VERSION, len(payload), payload)
     with atomic_write(path) as stream:
         stream.write(SIGNATURE)
         stream.write(_FIXED.pack(FORMAT_VERSION, len(payload), digest))
@@ -78,7 +87,7 @@ def read_records(path: Path | str) -> list[CaseRecord]:
     payload = _checked_payload(path, content)
     try:
         return [CaseRecord.from_arrays(arrays) for arrays in _decode(zlib.decompress(payload))]
-    except (zlib.error, ValueError, KeyError, TypeError, struct.error) as error:
+    except _NOT_RECORDS as error:
         # The digest is right, so the file is as written: the writer was another program.
         raise IntegrityError(
             f"{path}: the content is whole but is no set of case records ({error})"
@@ -97,7 +106,7 @@ def _checked_payload(path: Path, content: bytes) -> bytes:
         raise IntegrityError(
             f"{path}: cut short, {len(payload)} of {length} bytes of its content are left"
         )
-    if _digest(version, payload) != digest:
+    if _digest(version, length, payload) != digest:
         raise IntegrityError(
             f"{path}: altered since it was written (its SHA-256 digest does not match)"
         )
@@ -109,8 +118,8 @@ def _checked_payload(path: Path, content: bytes) -> bytes:
     return payload
 
 
-def _digest(version: int, payload: bytes) -> bytes:
-    whole = hashlib.sha256(struct.pack("<IQ", version, len(payload)))
+def _digest(version: int, length: int, payload: bytes) -> bytes:
+    whole = hashlib.sha256(struct.pack("<IQ", version, length))
     whole.update(payload)
     return whole.digest()
 

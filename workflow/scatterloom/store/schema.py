@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from collections.abc import Mapping
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 GRID = ("particle", "wavelength", "size")
@@ -233,27 +234,28 @@ def error_variable(variable: Variable) -> Variable:
     )
 
 
-def variables(warning_flags: dict[str, int] | None = None) -> tuple[Variable, ...]:
+def variables(
+    warning_flags: Mapping[str, tuple[int, str]] | None = None,
+) -> tuple[Variable, ...]:
     """Every variable of a table, coordinates first.
 
     Parameters
     ----------
-    warning_flags : dict of str to int
-        Bit masks of the warnings by name, written as CF flags.
+    warning_flags : mapping of str to (int, str)
+        Bit and meaning of the warnings by name, written as CF flags.
     """
     listed: list[Variable] = [*COORDINATES]
     for variable in (SCATTERING_MATRIX, *SCALARS):
         listed += [variable, error_variable(variable)]
     listed += [*INDICES, *DIAGNOSTICS]
     if warning_flags:
-        flags = {
-            "flag_masks": list(warning_flags.values()),
+        attributes = {
+            "flag_masks": [bit for bit, _ in warning_flags.values()],
             "flag_meanings": " ".join(warning_flags),
         }
+        comment = "; ".join(f"{name}: {meaning}" for name, (_, meaning) in warning_flags.items())
         listed = [
-            Variable(v.name, v.dims, v.dtype, v.long_name, v.units, extra=flags)
-            if v.name == "warning_flags"
-            else v
+            replace(v, comment=comment, extra=attributes) if v.name == "warning_flags" else v
             for v in listed
         ]
     return tuple(listed)

@@ -47,7 +47,7 @@ class Gathered:
 
 
 def gather(
-    path: Path, axes: Axes, cases: Cases, about: About, warning_flags: Mapping[str, int]
+    path: Path, axes: Axes, cases: Cases, about: About, warning_flags: Mapping[str, tuple[int, str]]
 ) -> Gathered:
     """Write the table `path` from the published case files.
 

@@ -125,7 +125,7 @@ def write_hierarchy(
     axes: Axes,
     cases: Cases,
     attributes: Mapping[str, Any],
-    warning_flags: Mapping[str, int],
+    warning_flags: Mapping[str, tuple[int, str]],
 ) -> tuple[str, NDArray[np.int32]]:
     """Write a whole table into `folder`.
 
@@ -142,7 +142,7 @@ def write_hierarchy(
     OSError
         From the file system.
     """
-    listed = {v.name: v for v in schema.variables(dict(warning_flags))}
+    listed = {v.name: v for v in schema.variables(warning_flags)}
     extent = axes.extent()
     group = zarr.open_group(folder, mode="w", zarr_format=3)
     arrays = {
