@@ -33,7 +33,7 @@ with
 
 Lengths are in micrometres and angles in degrees, as the names of the keys say. A case is
 identified by its shape, relative refractive index, size parameter, the accuracy asked and the
-overrides under `solver`; editing anything else never solves it again.
+overrides `solver.levels` and `solver.tolerance`; editing anything else never solves it again.
 
 A unit of 1 means a number without unit.
 """

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import csv
 import math
+from bisect import bisect_left
 from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
@@ -39,7 +40,7 @@ class Spectrum:
         if not self.covers(wavelength_um):
             raise ValueError(f"{wavelength_um:g} um lies outside the optical constants")
         rows = self.wavelength_um
-        upper = next(i for i, value in enumerate(rows) if value >= wavelength_um)
+        upper = bisect_left(rows, wavelength_um)
         if rows[upper] == wavelength_um:
             return self.n[upper], self.k[upper]
         lower = upper - 1
