@@ -12,14 +12,41 @@ NUMERICS_REVISION = 1
 """Raised by hand whenever a change of the numerics alters published values."""
 
 
+_REFERENCE_RADIUS = 1.26
+"""Circumscribed radius (of a 2:1 oblate spheroid) up to which no extra cells are needed."""
+
+
 def levels(
     circumscribed_radius: float, index: complex, size_parameter: float, f11_relative: float = 0.02
 ) -> tuple[int, ...]:
-    """Cells across the longest axis on each lattice level, coarse to fine."""
-    reach = size_parameter * circumscribed_radius
-    if reach * abs(index) > 6.0:
-        return (16, 24, 32)
-    return (12, 16, 24)
+    """Cells across the longest axis on each lattice level, coarse to fine.
+
+    The finest lattice keeps the phase shift over a cell small (cells across proportional
+    to x |m|, with a floor for small particles), gains cells with the elongation of the
+    particle, so that its short axis is resolved too, and with the accuracy asked, whose
+    error falls as d^4 after the d^2 part is extrapolated away.
+
+    Parameters
+    ----------
+    circumscribed_radius : float
+        In units of the equal-volume-sphere radius.
+    index : complex
+    size_parameter : float
+        Of the sphere of equal volume.
+    f11_relative : float
+        Accuracy asked of F11.
+    """
+    phase = size_parameter * abs(index)
+    finest = 24.0
+    for limit, cells in ((5.0, 24), (8.0, 32), (11.0, 40), (14.0, 48)):
+        finest = float(cells)
+        if phase <= limit:
+            break
+    else:
+        finest = 48.0 * phase / 14.0
+    finest *= max(1.0, circumscribed_radius / _REFERENCE_RADIUS)
+    finest *= (0.02 / min(f11_relative, 0.02)) ** 0.25
+    return tuple(2 * math.ceil(finest * part / 2 - 1e-9) for part in (0.5, 0.75, 1.0))
 
 
 def n_max(reach: float) -> int:

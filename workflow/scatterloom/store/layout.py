@@ -126,3 +126,15 @@ class Layout:
     def job_file(self, job: str) -> Path:
         """Specification of a job."""
         return self.jobs / f"{job}.json"
+
+    def field_file(self, job: str) -> Path:
+        """Fields of an anchors job."""
+        return self.fields / f"{job}.npz"
+
+    def solved_case(self, digest: str) -> Path:
+        """Record of a single solved case."""
+        return self.solved / digest[:2] / f"{digest}.case"
+
+    def solved_fields(self, digest: str) -> Path:
+        """Fields of an anchor whose job has not finished."""
+        return self.solved / digest[:2] / f"{digest}.npz"

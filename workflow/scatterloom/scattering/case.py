@@ -1,0 +1,248 @@
+"""Combine the lattice levels of one case into its record: best estimate, bars, status."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from scatterloom.scattering import error_bars, record
+from scatterloom.scattering.error_bars import FIT, SCALE, SOLVER, TRUNCATION
+from scatterloom.scattering.extrapolate import Fit, combine, fits
+from scatterloom.scattering.observables import Observables, observe
+from scatterloom.transition.level import LevelResult
+from scatterloom.transition.matrix import TransitionMatrix
+
+
+@dataclass(frozen=True)
+class Asked:
+    """Accuracy asked for, as 95 % half widths.
+
+    Attributes
+    ----------
+    f11_relative : float
+        Of F11, root mean square over scattering angle.
+    ratio_absolute : float
+        Of every other element over F11, root mean square over scattering angle.
+    efficiency_relative : float
+        Of extinction and scattering efficiency.
+    """
+
+    f11_relative: float
+    ratio_absolute: float
+    efficiency_relative: float
+
+
+@dataclass(frozen=True)
+class _Variant:
+    name: str
+    cause: str
+    result: Observables
+    absorption: float
+
+
+def _variants(
+    levels: Sequence[LevelResult], cells: Sequence[int], symmetry: str, size_parameter: float
+) -> list[_Variant]:
+    rivals = fits(cells)
+    corrected = [level.transition for level in levels]
+    plain = [level.uncorrected for level in levels]
+    absorption = np.array([level.absorption_efficiency for level in levels])
+
+    def variant(
+        name: str, cause: str, fit: Fit, transitions: Sequence[TransitionMatrix], cut: int = 0
+    ) -> _Variant:
+        transition = combine(transitions, fit)
+        if cut:
+            transition = transition.truncated(transition.n_max - cut)
+        return _Variant(
+            name,
+            cause,
+            observe(transition, symmetry, size_parameter),
+            float(fit.weights @ absorption),
+        )
+
+    out = [variant("best: " + rivals[0].name, "best", rivals[0], corrected)]
+    out += [variant("fit: " + fit.name, FIT, fit, corrected) for fit in rivals[1:]]
+    out.append(variant("solver: without the last correction", SOLVER, rivals[0], plain))
+    if corrected[0].n_max > 1:
+        out.append(variant("truncation: one degree less", TRUNCATION, rivals[0], corrected, 1))
+    return out
+
+
+def _scalar_values(variant: _Variant) -> dict[str, float]:
+    result = variant.result
+    return {
+        "extinction_efficiency": result.extinction_efficiency,
+        "scattering_efficiency": result.scattering_efficiency,
+        "absorption_efficiency": variant.absorption,
+        "asymmetry_parameter": result.asymmetry_parameter,
+        "single_scattering_albedo": result.scattering_efficiency
+        / (result.scattering_efficiency + variant.absorption),
+    }
+
+
+def _scalars(
+    variants: Sequence[_Variant], model: float, field_error: float
+) -> dict[str, tuple[float, float]]:
+    """Values and half widths.
+
+    `model` is the relative error of the cell model, `field_error` that of the absorption,
+    which is linear in the residual of the fields where all else is quadratic.
+    """
+    values = [_scalar_values(v) for v in variants]
+    best = values[0]
+    out = {}
+    for name in record.SCALARS:
+        parts: dict[str, NDArray[np.float64]] = {}
+        for cause in (FIT, SOLVER, TRUNCATION):
+            deviations = [
+                SCALE[cause] * abs(value[name] - best[name])
+                for value, variant in zip(values, variants, strict=True)
+                if variant.cause == cause
+            ]
+            parts[cause] = np.array(max(deviations, default=0.0))
+        if name.endswith("efficiency"):
+            parts["model"] = np.array(model * abs(best[name]))
+        if name == "absorption_efficiency":
+            parts["fields"] = np.array(field_error * abs(best[name]))
+        if name == "single_scattering_albedo":
+            albedo = best[name]
+            parts["model"] = np.array((model + field_error) * albedo * (1.0 - albedo))
+        out[name] = (best[name], float(error_bars.combine_half_widths(parts)))
+    return out
+
+
+def _expansions(variants: Sequence[_Variant]) -> NDArray[np.float64]:
+    """Coefficients of all variants, padded with zeros to one length."""
+    longest = max(v.result.expansion.shape[0] for v in variants)
+    out = np.zeros((len(variants), longest, 4, 4))
+    for i, variant in enumerate(variants):
+        out[i, : variant.result.expansion.shape[0]] = variant.result.expansion
+    return out
+
+
+def _flags(
+    case: record.CaseRecord, asked: Asked, levels: Sequence[LevelResult], kd_finest: float
+) -> int:
+    """Warning flags of a finished case."""
+    bit = {name: value for name, (value, _) in record.FLAGS.items()}
+    flags = 0
+    if not all(level.solution.converged for level in levels):
+        flags |= bit["not_converged"]
+    if any(level.arithmetic_cells for level in levels):
+        flags |= bit["arithmetic_cells"]
+    if any(level.solution.start_dropped for level in levels):
+        flags |= bit["start_dropped"]
+    if kd_finest * abs(case.index) > 2.0 * np.pi / 10.0:
+        flags |= bit["cells_too_coarse"]
+    balance = case.checks["extinction_efficiency_balance"]
+    widths = [case.scalars[n][1] for n in record.SCALARS[:3]]
+    if abs(balance) > sum(widths):
+        flags |= bit["energy_balance"]
+    if case.checks["truncation_share"] > 0.5 * asked.f11_relative:
+        flags |= bit["truncation"]
+    if not meets(case, asked):
+        flags |= bit["accuracy_not_met"]
+    return flags
+
+
+def meets(case: record.CaseRecord, asked: Asked) -> bool:
+    """Whether every error bar is as narrow as asked."""
+    angles = np.arange(0.0, 181.0, 2.0)
+    matrix, half_width = case.scattering_matrix(angles)
+    f11 = matrix[:, 0, 0]
+    relative = half_width / f11[:, None, None]
+    spread = np.sqrt(np.mean(relative**2, axis=0))
+    if spread[0, 0] > asked.f11_relative:
+        return False
+    spread[0, 0] = 0.0
+    if spread.max() > asked.ratio_absolute:
+        return False
+    return all(
+        case.scalars[name][1] <= asked.efficiency_relative * abs(case.scalars[name][0])
+        for name in ("extinction_efficiency", "scattering_efficiency")
+    )
+
+
+def combine_levels(
+    levels: Sequence[LevelResult],
+    cells: Sequence[int],
+    symmetry: str,
+    index: complex,
+    size_parameter: float,
+    spacing: float,
+    asked: Asked,
+    **identity: Any,
+) -> record.CaseRecord:
+    """Record of a case from its lattice levels.
+
+    Parameters
+    ----------
+    levels : sequence of LevelResult
+        Coarse to fine, all with the same truncation.
+    cells : sequence of int
+        Cells across on each level.
+    symmetry : str
+    index : complex
+    size_parameter : float
+    spacing : float
+        Lattice spacing of the finest level in units of the equal-volume radius.
+    asked : Asked
+    identity
+        digest, shape, start, cold_products_estimate, wall_seconds.
+    """
+    variants = _variants(levels, cells, symmetry, size_parameter)
+    scale = np.array([SCALE.get(v.cause, 0.0) for v in variants])
+    best = variants[0]
+    fit = fits(cells)[0]
+    amplification = float(np.abs(fit.weights).sum())
+    operator_error = max(level.solution.error for level in levels)
+    # First order in the fields, but only their part not orthogonal to the loss: a tenth of
+    # the residual bounds what the energy balance of single levels showed.
+    field_error = 0.1 * amplification * max(level.solution.residual for level in levels)
+    across = 2.0 / spacing
+    scalars = _scalars(variants, error_bars.cell_model_error(index, across), field_error)
+    balance = best.result.extinction_efficiency - (
+        best.result.scattering_efficiency + best.absorption
+    )
+    shares = [
+        abs(v.result.scattering_efficiency / best.result.scattering_efficiency - 1.0)
+        for v in variants
+        if v.cause == TRUNCATION
+    ]
+    out = record.CaseRecord(
+        index=index,
+        size_parameter=size_parameter,
+        levels=tuple(cells),
+        lattice_cells=levels[-1].cells,
+        n_max=levels[-1].transition.n_max,
+        wave_count=len(levels[-1].transition.labels.kind),
+        status=record.SOLVED,
+        warning_flags=0,
+        products=sum(level.solution.products for level in levels),
+        residual=max(level.solution.residual for level in levels),
+        operator_error=operator_error,
+        memory_bytes=max(level.memory_bytes for level in levels),
+        scalars=scalars,
+        checks={
+            "extinction_efficiency_balance": balance,
+            "integrated_scattering_efficiency": best.result.integrated_scattering_efficiency,
+            "truncation_share": max(shares, default=1.0),
+            "lattice_asymmetry": levels[-1].asymmetry,
+        },
+        expansion=_expansions(variants),
+        variants=tuple(v.name for v in variants),
+        scale=scale,
+        **identity,
+    )
+    flags = _flags(out, asked, levels, spacing * size_parameter)
+    warned = flags & ~record.INFORMATIVE
+    return replace(
+        out,
+        warning_flags=flags,
+        status=record.SOLVED_WITH_WARNING if warned else record.SOLVED,
+    )

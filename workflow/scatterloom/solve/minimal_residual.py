@@ -1,0 +1,112 @@
+"""Block minimal residuals with rank-reduced residuals, for one parity class.
+
+Vectors are rows and carry their physical norm. For the incident block B (n_wave rows)
+the class holds the iterate X, its residual ``R = B - A X`` and search directions V with
+orthonormal images ``Y = A V``. Three invariants hold throughout, to rounding:
+``Y = A V``, ``R = B - A X``, and R is orthogonal to every Y kept.
+
+The next block of directions is not the whole residual but its significant part: a
+direction of the residual of norm s changes the amplitudes by about s^2, so all
+directions with s^2 below the error allowed are left out. A zero start begins with the
+significant directions of B itself, a start from neighbouring sizes with its own rows.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+
+def gram(block: NDArray) -> NDArray[np.complex128]:
+    """Hermitian Gram matrix of the rows of a block."""
+    return (block @ block.conj().T).astype(np.complex128)
+
+
+def significant_rows(gram_matrix: NDArray, threshold: float) -> NDArray[np.complex128]:
+    """Combinations P (k, n) such that ``P @ block`` has orthonormal rows.
+
+    Only directions whose squared norm exceeds `threshold` are kept.
+    """
+    value, vector = np.linalg.eigh(gram_matrix)
+    keep = value > max(threshold, 0.0)
+    return (vector[:, keep] / np.sqrt(value[keep])).conj().T
+
+
+class ClassIterate:
+    """Iterate of one parity class: X, R and the search directions so far.
+
+    Parameters
+    ----------
+    incident : complex (n_wave, n_row)
+        Right-hand sides B; left untouched.
+    """
+
+    def __init__(self, incident: NDArray) -> None:
+        self.incident = incident
+        self.fields = np.zeros_like(incident)
+        self.residual = incident.copy()
+        self._directions: list[NDArray] = []
+        self._images: list[NDArray] = []
+
+    def propose(self, threshold: float) -> NDArray:
+        """Significant directions of the residual, orthonormal rows, (k, n_row), k >= 0."""
+        combine = significant_rows(gram(self.residual), threshold)
+        return combine.astype(self.residual.dtype) @ self.residual
+
+    def propose_start(self, start: NDArray, threshold: float) -> NDArray:
+        """Rows of a start combined as the significant directions of B are."""
+        combine = significant_rows(gram(self.incident), threshold)
+        return combine.astype(start.dtype) @ start
+
+    def take(self, directions: NDArray, images: NDArray) -> None:
+        """Minimize the residual over the new directions as well.
+
+        Parameters
+        ----------
+        directions, images : complex (k, n_row)
+            V and A V.
+        """
+        if not len(directions):
+            return
+        v, y = directions, images
+        for old_v, old_y in zip(self._directions, self._images, strict=True):
+            overlap = y @ old_y.conj().T
+            y = y - overlap @ old_y
+            v = v - overlap @ old_v
+        squares = gram(y)
+        # Images that depend on the others to single precision add nothing but noise.
+        largest = float(np.trace(squares).real)
+        combine = significant_rows(squares, 1e-9 * largest).astype(y.dtype)
+        v, y = combine @ v, combine @ y
+        coefficients = self.residual @ y.conj().T
+        self.residual -= coefficients @ y
+        self.fields += coefficients @ v
+        self._directions.append(v)
+        self._images.append(y)
+
+    def amplitudes(self) -> tuple[NDArray, NDArray]:
+        """Stationary amplitudes and the leading term of their error.
+
+        ``S = B^T X + X^T B - X^T A X`` (here written with R) has the error
+        ``R^T A^-1 R``, whose leading term ``R^T R`` is returned beside it: added to S it
+        makes the error smaller still, and its size is an estimate of the error of S.
+
+        Returns
+        -------
+        stationary, remainder : complex128 (n_wave, n_wave), both symmetric
+        """
+        mixed = (self.incident @ self.fields.T + self.fields @ self.residual.T).astype(
+            np.complex128
+        )
+        remainder = (self.residual @ self.residual.T).astype(np.complex128)
+        return 0.5 * (mixed + mixed.T), 0.5 * (remainder + remainder.T)
+
+    def relative_residual(self) -> float:
+        """Norm of the residual block over the norm of the incident block."""
+        total = float(np.linalg.norm(self.incident))
+        return float(np.linalg.norm(self.residual)) / total if total else 0.0
+
+    def release(self) -> None:
+        """Forget the search directions; X and R stay."""
+        self._directions.clear()
+        self._images.clear()

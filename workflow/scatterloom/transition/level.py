@@ -1,0 +1,140 @@
+"""One case on one lattice level: fields, transition matrix and absorption."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from scatterloom.dipole.polarizability import cell_tensors
+from scatterloom.dipole.product import LatticeMatrix
+from scatterloom.particle.lattice import Lattice
+from scatterloom.solve.block import BlockSolution, solve_block
+from scatterloom.solve.start import StoredFields
+from scatterloom.transition.matrix import TransitionMatrix, from_amplitudes, project
+from scatterloom.waves.basis import wave_basis
+from scatterloom.waves.incident import incident_block
+
+
+@dataclass(frozen=True)
+class LevelResult:
+    """Outcome of one case on one lattice level.
+
+    Attributes
+    ----------
+    transition : TransitionMatrix
+        Projected onto the symmetry of the shape.
+    uncorrected : TransitionMatrix
+        The same without the remainder added to the amplitudes: what it changes is an
+        estimate of the solver's error.
+    asymmetry : float
+        Relative part (Frobenius) of the lattice's matrix that the projection took away:
+        an effect of the lattice alone.
+    absorption_efficiency : float
+        From the power absorbed in the cells, averaged over random orientation.
+    solution : BlockSolution
+    fields : StoredFields
+        Solved fields per unit incident norm, to start neighbouring sizes from.
+    cells : int
+        Cells of the whole particle.
+    memory_bytes : int
+        Fields, residuals and work space at the end of the solve.
+    arithmetic_cells : bool
+        Whether a negative real permittivity forced the arithmetic mean on cut cells.
+    """
+
+    transition: TransitionMatrix
+    uncorrected: TransitionMatrix
+    asymmetry: float
+    absorption_efficiency: float
+    solution: BlockSolution
+    fields: StoredFields
+    cells: int
+    memory_bytes: int
+    arithmetic_cells: bool
+
+
+def solve_level(
+    lattice: Lattice,
+    index: complex,
+    size_parameter: float,
+    n_max: int,
+    tolerance: float,
+    start: Callable[[list[NDArray[np.float64]]], list[NDArray] | None] | None = None,
+    dtype: type = np.complex64,
+    threads: int = 1,
+    progress: Callable[[float, float], None] | None = None,
+) -> LevelResult:
+    """Solve all incident waves of one case on one lattice.
+
+    Parameters
+    ----------
+    lattice : Lattice
+    index : complex
+        Relative to the medium.
+    size_parameter : float
+        Of the sphere of equal volume.
+    n_max : int
+        Truncation of the wave basis.
+    tolerance : float
+        Relative error of the amplitudes (see `solve_block`).
+    start : callable(norms) -> rows per class or None, optional
+        Makes a start from the norms of the incident waves.
+    dtype : complex64 (default) or complex128
+    threads : int
+    progress : callable(error, residual), optional
+    """
+    kd = size_parameter * lattice.spacing
+    tensors = cell_tensors(lattice.fill, lattice.normal, index, kd)
+    matrix = LatticeMatrix(lattice, tensors, kd, dtype, threads)
+    incident = incident_block(lattice, matrix, size_parameter, wave_basis(n_max))
+    first = None if start is None else start(incident.norms)
+    solution = solve_block(matrix, incident.rows, tolerance, first, progress=progress)
+    raw = from_amplitudes(n_max, incident.members, solution.amplitudes)
+    transition = project(raw, lattice.symmetry)
+    stationary = [s - r for s, r in zip(solution.amplitudes, solution.remainder, strict=True)]
+    uncorrected = project(
+        from_amplitudes(n_max, incident.members, stationary), lattice.symmetry
+    )
+    lost = np.linalg.norm(raw.matrix - transition.matrix) / np.linalg.norm(raw.matrix)
+    return LevelResult(
+        transition=transition,
+        uncorrected=uncorrected,
+        asymmetry=float(lost),
+        absorption_efficiency=_absorption(matrix, solution.fields, size_parameter),
+        solution=solution,
+        fields=StoredFields(
+            size_parameter,
+            [
+                (rows / norm[:, None].astype(rows.real.dtype))
+                for rows, norm in zip(solution.fields, incident.norms, strict=True)
+            ],
+        ),
+        cells=len(lattice.cell),
+        memory_bytes=matrix.nbytes + 3 * sum(rows.nbytes for rows in incident.rows),
+        arithmetic_cells=tensors.arithmetic,
+    )
+
+
+def _absorption(
+    matrix: LatticeMatrix, fields: list[NDArray], size_parameter: float
+) -> float:
+    """Absorption efficiency from the loss in the cells.
+
+    One plane wave: C_abs = 4 pi sum x^H L x (Bohren & Huffman 1983, section 3.2, applied to
+    dipoles); the mean over all plane waves is 2 pi times the sum over normalized waves.
+    """
+    loss = matrix.loss
+    total = 0.0
+    for rows in fields:
+        x, y, z = (rows.reshape(len(rows), 3, matrix.n_cell)[:, q] for q in range(3))
+        diagonal = [np.sum(np.abs(u) ** 2, axis=0, dtype=np.float64) for u in (x, y, z)]
+        mixed = [
+            np.sum((u.conj() * v).real, axis=0, dtype=np.float64)
+            for u, v in ((x, y), (x, z), (y, z))
+        ]
+        total += sum(float(loss[q] @ diagonal[q]) for q in range(3))
+        total += 2.0 * sum(float(loss[3 + q] @ mixed[q]) for q in range(3))
+    return 8.0 * np.pi**2 * total / (np.pi * size_parameter**2)

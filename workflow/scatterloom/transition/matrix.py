@@ -1,0 +1,116 @@
+"""The transition matrix of one case: scattered-wave from incident-wave coefficients."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from scatterloom.waves.basis import WaveLabels, complex_from_real, wave_basis
+
+
+@dataclass(frozen=True)
+class TransitionMatrix:
+    """Transition matrix in complex vector spherical waves.
+
+    Scattered field = sum over rows of ``T a`` times outgoing waves, a being the
+    coefficients of the regular waves (Waterman 1971, Phys. Rev. D 3, 825). For a
+    sphere T is diagonal: -b_n for RgM and -a_n for RgN waves (Mie coefficients).
+
+    Attributes
+    ----------
+    matrix : complex128 (n_wave, n_wave)
+    labels : WaveLabels
+        Kind, degree and order of rows and columns.
+    """
+
+    matrix: NDArray[np.complex128]
+    labels: WaveLabels
+
+    @property
+    def n_max(self) -> int:
+        return self.labels.n_max
+
+    def truncated(self, n_max: int) -> TransitionMatrix:
+        """The same matrix with all waves above degree `n_max` left out."""
+        if n_max >= self.n_max:
+            return self
+        keep = self.labels.degree <= n_max
+        labels = WaveLabels(
+            n_max, self.labels.kind[keep], self.labels.degree[keep], self.labels.order[keep]
+        )
+        return TransitionMatrix(self.matrix[np.ix_(keep, keep)], labels)
+
+
+def from_amplitudes(
+    n_max: int, members: Sequence[NDArray[np.int64]], amplitudes: Sequence[NDArray]
+) -> TransitionMatrix:
+    """Transition matrix ``T = 4 pi i k^3 S`` from the amplitudes of all parity classes.
+
+    In real waves the amplitude into an outgoing wave is the product with that wave
+    itself, so S symmetric is reciprocity (Mackowski 2002, J. Opt. Soc. Am. A 19, 881).
+
+    Parameters
+    ----------
+    n_max : int
+    members : list of int64
+        Indices into ``wave_basis(n_max)`` of the waves of each class.
+    amplitudes : list of complex128 [k^-3]
+        Stationary amplitudes of each class.
+    """
+    size = len(wave_basis(n_max))
+    real = np.zeros((size, size), dtype=np.complex128)
+    for member, block in zip(members, amplitudes, strict=True):
+        real[np.ix_(member, member)] = 4j * np.pi * block
+    change, labels = complex_from_real(n_max)
+    return TransitionMatrix(change @ real @ change.conj().T, labels)
+
+
+def project(transition: TransitionMatrix, symmetry: str) -> TransitionMatrix:
+    """Nearest matrix with the symmetry of the shape itself.
+
+    The lattice has only part of the particle's symmetry. Projecting onto the
+    matrices that commute with the full group is orthogonal (Frobenius) and leaves the
+    exact matrix where it is, so it can only bring T closer to it.
+
+    Parameters
+    ----------
+    transition : TransitionMatrix
+    symmetry : {"sphere", "axial", "mirrors", "none"}
+
+    Raises
+    ------
+    ValueError
+        For any other symmetry.
+    """
+    labels, t = transition.labels, transition.matrix
+    if symmetry in ("mirrors", "none"):
+        return transition
+    if symmetry == "axial":
+        same = labels.order[:, None] == labels.order[None, :]
+        return TransitionMatrix(np.where(same, t, 0.0), labels)
+    if symmetry == "sphere":
+        diagonal = np.diag(t)
+        out = np.zeros_like(diagonal)
+        for kind in (0, 1):
+            for n in range(1, labels.n_max + 1):
+                chosen = (labels.kind == kind) & (labels.degree == n)
+                out[chosen] = diagonal[chosen].mean()
+        return TransitionMatrix(np.diag(out), labels)
+    raise ValueError(f"unknown symmetry {symmetry!r}; known: sphere, axial, mirrors, none")
+
+
+def efficiencies(
+    transition: TransitionMatrix, size_parameter: float
+) -> tuple[float, float]:
+    """Extinction and scattering efficiency, exact average over random orientation.
+
+    ``C_ext = -(2 pi/k^2) Re Tr T``, ``C_sca = (2 pi/k^2) sum |T|^2`` (Mishchenko et al.
+    2002, Scattering, Absorption, and Emission of Light by Small Particles, eqs. 5.107,
+    5.140), over pi r_ev^2.
+    """
+    unit = 2.0 / size_parameter**2
+    t = transition.matrix
+    return -unit * float(np.trace(t).real), unit * float(np.sum(np.abs(t) ** 2))
