@@ -30,7 +30,12 @@ LOG_LINES_SHOWN = 5
 
 def configure(parser: argparse.ArgumentParser) -> None:
     """Add the arguments of the command."""
-    parser.add_argument("config", metavar="CONFIG", help="campaign file (YAML)")
+    parser.add_argument(
+        "config",
+        metavar="CONFIG",
+        nargs="?",
+        help="campaign file (YAML; default: config/demo.yaml of the checkout)",
+    )
     parser.add_argument(
         "--results", metavar="DIR", help="folder of all results (default: results/ here)"
     )
@@ -56,7 +61,7 @@ def execute(args: argparse.Namespace) -> int:
     from scatterloom.store.held import hold
     from scatterloom.store.progress import Meter
 
-    config = Path(args.config)
+    config = Path(args.config) if args.config else _demo()
     graph = Graph.open(config, args.results)
     for warning in graph.campaign.warnings:
         print(f"warning: {warning}", file=sys.stderr)
@@ -75,6 +80,16 @@ def execute(args: argparse.Namespace) -> int:
     if code != 0:
         return _explain(engine, graph, meter.measure())
     return _conclude(graph)
+
+
+def _demo() -> Path:
+    from scatterloom.errors import BadInput
+    from scatterloom.store.layout import checkout
+
+    top = checkout()
+    if top is None:
+        raise BadInput("no campaign is named\n  hint: scatterloom run CONFIG")
+    return top / "config" / "demo.yaml"
 
 
 def _cores() -> int:
