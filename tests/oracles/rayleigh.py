@@ -11,7 +11,7 @@ from scipy.special import elliprd
 
 
 def depolarization_factors(half_axes) -> NDArray[np.float64]:
-    """L_x, L_y, L_z of an ellipsoid (Bohren & Huffman 1983, eq. 5.33); they add to 1.
+    """L_x, L_y, L_z of an ellipsoid (Bohren & Huffman 1983, sec. 5.3); they add to 1.
 
     The integrals are Carlson's R_D: L_x = a b c R_D(b^2, c^2, a^2) / 3.
     """
@@ -21,7 +21,7 @@ def depolarization_factors(half_axes) -> NDArray[np.float64]:
 
 
 def polarizabilities(half_axes, index: complex) -> NDArray[np.complex128]:
-    """Polarizability along each axis over the volume (Bohren & Huffman 1983, eq. 5.32)."""
+    """Polarizability along each axis over the volume (Bohren & Huffman 1983, sec. 5.3)."""
     susceptibility = complex(index) ** 2 - 1
     return susceptibility / (1 + depolarization_factors(half_axes) * susceptibility)
 
@@ -29,7 +29,7 @@ def polarizabilities(half_axes, index: complex) -> NDArray[np.complex128]:
 def efficiencies(half_axes, index: complex, size_parameter: float) -> dict[str, float]:
     """Orientation-averaged efficiencies, to the cross section of the equal-volume sphere.
 
-    Bohren & Huffman 1983, eq. 5.49 to 5.51; extinction is the sum of the other two.
+    Bohren & Huffman 1983, sec. 5.5; extinction is the sum of the other two.
     """
     alpha = polarizabilities(half_axes, index)
     x = size_parameter

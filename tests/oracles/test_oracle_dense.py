@@ -66,6 +66,25 @@ def test_radiative_part_is_that_of_a_point_dipole():
     assert dense.on_site(1.3, 0.7).imag == pytest.approx(2 / 3 * (1.3 * 0.7) ** 3, rel=1e-14)
 
 
+def test_self_term_is_the_interaction_at_zero_distance():
+    # V G(0) = (2 d^3 / pi) PV int_0^k_F q^2 (k^2 - q^2/3) / (q^2 - k^2) dq + i (2/3) (kd)^3:
+    # the filtered field of a dipole at its own place is finite.
+    k, spacing = 1.3, 0.7
+    integral, _ = integrate.quad(
+        lambda q: q**2 * (k**2 - q**2 / 3) / (q + k),
+        0,
+        np.pi / spacing,
+        weight="cauchy",
+        wvar=k,
+        epsabs=1e-12,
+    )
+    self_term = dense.on_site(k, spacing)
+    assert self_term.real == pytest.approx(2 * spacing**3 / np.pi * integral, rel=1e-9)
+    # and the interaction tends to it, by (k_F r)^2 / 10 at short distance
+    near = dense.filtered_green(np.array([[0.0, 0.02 * spacing, 0.0]]), k, spacing)[0]
+    np.testing.assert_allclose(near * spacing**3, self_term * np.eye(3), rtol=2e-3, atol=1e-12)
+
+
 def test_energy_balance(triaxial):
     # The imaginary parts of filtered interaction and self term are those of radiation,
     # so extinction less absorption is the power scattered: to rounding.
@@ -87,8 +106,8 @@ def test_energy_balance(triaxial):
 
 
 def test_reciprocity(triaxial):
-    # Reversed path: S(-s -> -i) = (S1, S2, -S4, -S3) (van de Hulst 1957, sec. 5.2:
-    # the transpose of the matrix; signs from e_perp = scattered x incident of each path).
+    # Reversed path: S(-s -> -i) = (S1, S2, -S4, -S3) (van de Hulst 1957, ch. 5, from
+    # memory: the transpose of the matrix; signs from e_perp = scattered x incident of each path).
     i_hat = np.array([0.6, 0.0, 0.8])
     s_hat = np.array([2.0, -1.0, 0.5]) / np.linalg.norm([2.0, -1.0, 0.5])
     s1, s2, s3, s4 = triaxial.amplitude_matrix(i_hat, s_hat[None])[:, 0]

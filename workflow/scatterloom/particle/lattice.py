@@ -15,7 +15,8 @@ SMALLEST_FILL = 1e-9
 """Cells emptier than this are left out; all of them together weigh less than 1e-9."""
 
 
-@dataclass(frozen=True)
+# Compared and hashed by identity: it holds arrays.
+@dataclass(frozen=True, eq=False)
 class Lattice:
     """Cells of a particle on a cubic lattice; lengths in units of the equal-volume-sphere radius.
 
