@@ -74,7 +74,8 @@ def test_jobs_are_consistent(grid_of):
     assert len({job.name for job in jobs}) == len(jobs)
 
 
-def test_two_anchors_on_either_side(grid_of):
+def test_four_anchors_around_every_size(grid_of):
+    """Two on either side; at the ends of a ladder the four nearest the end."""
     jobs = plan(grid_of(*FINE))
     anchors = {}
     for job in jobs:
@@ -83,11 +84,12 @@ def test_two_anchors_on_either_side(grid_of):
             anchors.setdefault(key, []).extend(x for _, x in job.cases)
     for job in (job for job in jobs if job.kind == "span"):
         ladder = anchors[json.dumps(job.shape), job.index, job.levels]
-        first, last = job.cases[0][1], job.cases[-1][1]
-        low = [x for x in ladder if x < first][-2:]
-        high = [x for x in ladder if x > last][:2]
-        inside = [x for x in ladder if first < x < last]
-        assert [x for _, x, _ in job.anchors] == low + inside + high
+        given = [x for _, x, _ in job.anchors]
+        assert given == sorted(given) and set(given) <= set(ladder)
+        for _, size in job.cases:
+            below = sum(x < size for x in ladder)
+            first = max(0, min(below - 2, len(ladder) - 4))
+            assert set(ladder[first : first + 4]) <= set(given)
 
 
 def test_ladders_merge_wavelengths(grid_of):

@@ -209,7 +209,7 @@ class _Job:
 
 
 def _products(levels: Sequence[LevelResult]) -> float:
-    return sum(level.solution.products for level in levels)
+    return float(np.mean([level.solution.products for level in levels]))
 
 
 def _cold_estimate(anchors: Sequence[FieldFile], x: float) -> float:

@@ -221,8 +221,11 @@ def _jobs(segment: _Segment, seconds: float) -> Iterator[Job]:
         yield job
     for pieces in _span_batches(segment, seconds):
         first, last = pieces[0][0], pieces[-1][0]
-        low = max(0, first + 1 - ANCHORS_EACH_SIDE)
-        around = tuple(placed[low : last + 1 + ANCHORS_EACH_SIDE])
+        # At the end of a segment the other side makes up for the anchors that are not there.
+        spare = len(placed) - 2 * ANCHORS_EACH_SIDE
+        low = max(0, min(first + 1 - ANCHORS_EACH_SIDE, spare))
+        high = max(last + 1 + ANCHORS_EACH_SIDE, 2 * ANCHORS_EACH_SIDE)
+        around = tuple(placed[low:high])
         sizes = [size for _, piece in pieces for size in piece]
         yield _job("span", segment, sizes, around, math.fsum(size.warm for size in sizes))
 

@@ -223,7 +223,7 @@ def combine_levels(
         wave_count=len(levels[-1].transition.labels.kind),
         status=record.SOLVED,
         warning_flags=0,
-        products=sum(level.solution.products for level in levels),
+        products=float(np.mean([level.solution.products for level in levels])),
         residual=max(level.solution.residual for level in levels),
         operator_error=operator_error,
         memory_bytes=max(level.memory_bytes for level in levels),

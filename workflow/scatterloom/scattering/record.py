@@ -61,7 +61,7 @@ class CaseRecord:
     warning_flags : int
         Bits of `FLAGS`.
     products : float
-        Block products per incident wave, summed over the levels.
+        Products with the lattice matrix per incident wave, mean over the levels.
     cold_products_estimate : float
         What zero starts would have used, from cold blocks of the same ladder.
     residual : float

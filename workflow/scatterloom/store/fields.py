@@ -27,7 +27,7 @@ class FieldFile:
         Of its case.
     size_parameter : float
     products : float
-        Block products per wave that its solution took, all levels together.
+        Products per wave that its solution took, mean over the levels.
     levels : list of StoredFields
         Coarse to fine.
     """

@@ -201,7 +201,7 @@ DIAGNOSTICS = (
         "products",
         GRID,
         "f8",
-        "matrix products for each incident wave, over all lattices",
+        "matrix products for each incident wave, mean over the lattices",
         comment="one product of the interaction matrix with a block counts once for each wave",
     ),
     Variable(
