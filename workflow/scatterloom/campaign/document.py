@@ -295,7 +295,7 @@ class _Builder:
             return None
         try:
             return self._constructor.construct_object(node, deep=True)
-        except (ValueError, OverflowError, KeyError, YAMLError):
+        except (ValueError, OverflowError, LookupError, TypeError, AttributeError, YAMLError):
             self._refuse(node, "not a number that can be read", "write it as 0.25 or 2.5e-1")
             return None
 
