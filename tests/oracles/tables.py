@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import warnings
 from pathlib import Path
 
 import numpy as np
@@ -9,6 +10,7 @@ import xarray
 import zarr
 
 from oracles.mie import sphere
+from scatterloom.scattering.record import FLAGS
 from scatterloom.store import schema
 from scatterloom.store.commit import publish, staging
 from scatterloom.store.writer import ShardedArray
@@ -25,7 +27,6 @@ def mie_table(
     angles_deg: np.ndarray | None = None,
     indices: dict[str, complex] | None = None,
     relative_error: float = 0.01,
-    warning_flags: dict[str, int] | None = None,
 ) -> xarray.Dataset:
     """Table of spheres in vacuum that obeys the schema, exact but for its stated errors.
 
@@ -46,7 +47,7 @@ def mie_table(
         "row": 4,
         "col": 4,
     }
-    listed = schema.variables(warning_flags or {"not_met_f11": 1})
+    listed = schema.variables(FLAGS)
     data = {}
     for v in listed:
         dtype = np.dtypes.StringDType() if v.dtype == "string" else v.dtype
@@ -107,11 +108,13 @@ def publish_table(path: Path, dataset: xarray.Dataset) -> None:
     """Write such a dataset as a committed table."""
     with staging(path) as folder:
         group = zarr.open_group(folder, mode="w", zarr_format=3)
-        for v in schema.variables({"not_met_f11": 1}):
+        for v in schema.variables(FLAGS):
             content = dataset[v.name].values
             if v.dtype == "string":
                 content = content.astype(np.dtypes.StringDType())
             ShardedArray(group, v, content.shape).write_all(content)
         group.attrs.update(dataset.attrs)
-        zarr.consolidate_metadata(group.store)
+        with warnings.catch_warnings():
+            warnings.filterwarnings("ignore", message="Consolidated metadata", module="zarr")
+            zarr.consolidate_metadata(group.store)
         publish(folder, path, "table", dataset.attrs["content_digest"], "2000-01-01T00:00:00Z")

@@ -5,7 +5,7 @@ from __future__ import annotations
 import contextlib
 import hashlib
 import warnings
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -13,9 +13,10 @@ import numpy as np
 import zarr
 
 from scatterloom.bulk import schema
+from scatterloom.bulk.build import Population
 from scatterloom.errors import IntegrityError
 from scatterloom.store.atomic import sweep_abandoned
-from scatterloom.store.commit import commit_record, publish, staging, verify_folder
+from scatterloom.store.commit import COMMIT, commit_record, publish, staging, verify_folder
 from scatterloom.store.provenance import now
 from scatterloom.store.writer import ShardedArray
 
@@ -23,6 +24,7 @@ if TYPE_CHECKING:
     import xarray
 
 KIND = "bulk"
+COMMIT_FILE = COMMIT
 _OWN = ("title", "summary", "id", "history", "date_created", "content_digest", "error_statement")
 
 
@@ -118,3 +120,37 @@ def open_bulk(path: Path | str) -> xarray.Dataset:
         raise IntegrityError(f"{path}: a committed {kind}, not bulk properties")
     verify_folder(path)
     return xarray.open_zarr(path)
+
+
+def bulk_of(path: Path, table: xarray.Dataset, populations: Sequence[Population]) -> xarray.Dataset:
+    """Open the bulk properties that belong to a table and to a campaign's populations.
+
+    Parameters
+    ----------
+    path : Path
+        A `bulk.zarr` folder.
+    table : xarray.Dataset
+        The opened table.
+    populations : sequence of Population
+        What the campaign names.
+
+    Returns
+    -------
+    xarray.Dataset
+        Its populations are those given, in the same order.
+
+    Raises
+    ------
+    IntegrityError
+        If they are missing, altered, or of another table or other populations.
+    """
+    hint = "\n  hint: run 'scatterloom bulk' again"
+    if not path.exists():
+        raise IntegrityError(f"{path}: not written yet{hint}")
+    bulk = open_bulk(path)
+    if bulk.attrs.get("table_content_digest") != table.attrs.get("content_digest"):
+        raise IntegrityError(f"{path}: made from another table than the one beside it{hint}")
+    names = [str(name) for name in bulk["population"].values]
+    if names != [population.name for population in populations]:
+        raise IntegrityError(f"{path}: holds other populations than the campaign{hint}")
+    return bulk

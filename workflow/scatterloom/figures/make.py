@@ -68,7 +68,7 @@ def make_figures(
                 notes.append(f"not drawn: {reason}")
                 continue
             entries.append(save(picture, folder))
-    write_index(folder, entries, notes)
+    write_index(folder, entries, notes, str(table.attrs.get("content_digest", "")))
     return entries, notes
 
 
@@ -87,10 +87,15 @@ def _plans(
         ladder = load_ladder(table, particle, wavelength)
         yield partial(matrix_curves, ladder)
         yield partial(size_angle_map, ladder)
-    for particle in range(min(table.sizes["particle"], LADDERS_SHOWN)):
+    particles = table.sizes["particle"]
+    if particles > LADDERS_SHOWN:
+        notes.append(f"products are drawn for the first {LADDERS_SHOWN} of {particles} particles")
+    for particle in range(min(particles, LADDERS_SHOWN)):
         yield partial(product_counts, table, particle)
     if bulk is None:
         return
+    if len(populations) > LADDERS_SHOWN:
+        notes.append(f"the first {LADDERS_SHOWN} of {len(populations)} populations are drawn")
     radius = table["radius_um"].values
     reach = (float(radius.min()), float(radius.max()))
     for i, population in enumerate(populations[:LADDERS_SHOWN]):

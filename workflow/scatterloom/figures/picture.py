@@ -15,6 +15,7 @@ from typing import Any
 import matplotlib
 from matplotlib.figure import Figure
 
+from scatterloom.errors import IntegrityError
 from scatterloom.store.atomic import atomic_write
 
 INDEX = "figures.json"
@@ -107,7 +108,9 @@ def _plain(value: Any) -> Any:
     return "" if value is None or value != value else f"{float(value):.5g}"
 
 
-def write_index(folder: Path, entries: Sequence[dict[str, str]], notes: Sequence[str]) -> None:
+def write_index(
+    folder: Path, entries: Sequence[dict[str, str]], notes: Sequence[str], table_digest: str
+) -> None:
     """Write the index of a folder of figures, after everything it names.
 
     Parameters
@@ -117,7 +120,46 @@ def write_index(folder: Path, entries: Sequence[dict[str, str]], notes: Sequence
         What `save` returned, in the order of presentation.
     notes : sequence of str
         What was not drawn, and why.
+    table_digest : str
+        Content digest of the table that the figures show.
     """
-    text = json.dumps({"figures": list(entries), "notes": list(notes)}, indent=1)
+    index = {"table_content_digest": table_digest, "figures": list(entries), "notes": list(notes)}
     with atomic_write(folder / INDEX) as stream:
-        stream.write(text.encode())
+        stream.write(json.dumps(index, indent=1).encode())
+
+
+def read_index(folder: Path, table_digest: str) -> dict[str, Any]:
+    """Read the index of a folder of figures.
+
+    Parameters
+    ----------
+    folder : Path
+    table_digest : str
+        Content digest of the table that the figures must show.
+
+    Returns
+    -------
+    dict
+        figures (list of dict) and notes (list of str).
+
+    Raises
+    ------
+    IntegrityError
+        If there is no index, if it is of another table, or if a file it names is missing.
+    """
+    path = folder / INDEX
+    hint = "\n  hint: run 'scatterloom figures' again"
+    try:
+        index: dict[str, Any] = json.loads(path.read_bytes())
+        digest, figures = index["table_content_digest"], index["figures"]
+    except FileNotFoundError:
+        raise IntegrityError(f"{path}: not written yet{hint}") from None
+    except (ValueError, KeyError, TypeError):
+        raise IntegrityError(f"{path}: unreadable{hint}") from None
+    if digest != table_digest:
+        raise IntegrityError(f"{path}: figures of another table than the one beside them{hint}")
+    for entry in figures:
+        for ending in ("png", "svg", "csv"):
+            if not (folder / entry[ending]).is_file():
+                raise IntegrityError(f"{folder / entry[ending]}: missing{hint}")
+    return index

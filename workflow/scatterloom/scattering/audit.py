@@ -29,6 +29,9 @@ FloatArray = NDArray[np.float64]
 ROUNDING = 1e-10
 """Allowance for rounding in sums of about a hundred terms, relative to F11 or Qext."""
 
+SLOPE_ANGLES = 5
+"""Angles from either end that the check of slopes uses."""
+
 _SIX = ((0, 0), (1, 1), (2, 2), (3, 3), (0, 1), (2, 3))
 _EIGHT_ZERO = ((0, 2), (0, 3), (1, 2), (1, 3), (2, 0), (2, 1), (3, 0), (3, 1))
 
@@ -114,8 +117,10 @@ def audit_matrix(
         out["forward_f22_f33"] = _scaled(a[..., 1, 1] - a[..., 2, 2], b[..., 1, 1] + b[..., 2, 2])
         out["forward_f12"] = _scaled(a[..., 0, 1], b[..., 0, 1])
         out["forward_f34"] = _scaled(a[..., 2, 3], b[..., 2, 3])
-        if angles.size >= 4:
-            out["forward_slope"] = _slope(f[..., :4, :, :], h[..., :4, :, :], angles[:4])
+        if angles.size >= SLOPE_ANGLES:
+            out["forward_slope"] = _slope(
+                f[..., :SLOPE_ANGLES, :, :], h[..., :SLOPE_ANGLES, :, :], angles[:SLOPE_ANGLES]
+            )
     if angles[-1] == 180.0:
         a, b = f[..., -1, :, :], h[..., -1, :, :]
         out["backward_f22_f33"] = _scaled(a[..., 1, 1] + a[..., 2, 2], b[..., 1, 1] + b[..., 2, 2])
@@ -125,8 +130,8 @@ def audit_matrix(
             a[..., 3, 3] - a[..., 0, 0] + 2 * a[..., 1, 1],
             b[..., 3, 3] + b[..., 0, 0] + 2 * b[..., 1, 1],
         )
-        if angles.size >= 4:
-            last = slice(None, -5, -1)
+        if angles.size >= SLOPE_ANGLES:
+            last = slice(None, -SLOPE_ANGLES - 1, -1)
             out["backward_slope"] = _slope(
                 f[..., last, :, :], h[..., last, :, :], 180.0 - angles[last]
             )
@@ -197,23 +202,27 @@ def _scaled(violation: FloatArray, half_width: FloatArray) -> FloatArray:
 def _slope(f: FloatArray, h: FloatArray, distance_deg: FloatArray) -> FloatArray:
     """Largest slope among the six elements, as change over the first step of angle.
 
-    The slope is that of ``a + s t + b t^2 + c t^4`` through four angles: an even
-    function has s = 0 up to sixth order. The change against the fit without the
-    fourth-order term is granted as truncation error. The unit is the largest half
-    width at these angles: errors vary smoothly with angle, so that adding up the bars
-    of neighbouring angles would blunt the check.
+    The slope is that of ``a + s t + b t^2 + c t^4 + d t^6`` through five angles: an
+    even function has s = 0 up to eighth order. The changes from leaving out the
+    fourth- and sixth-order terms are granted as truncation error, so that a grid too
+    coarse for the oscillations of a large particle flags nothing. The unit is the
+    largest half width at these angles: errors vary smoothly with angle, so that adding
+    up the bars of neighbouring angles would blunt the check.
     """
     t = np.deg2rad(distance_deg)
-    step = t[1]
-    fine = np.linalg.inv(np.stack([t**0, t, t**2, t**4], axis=1))[1] * step
-    coarse = np.zeros(4)
-    coarse[:3] = np.linalg.inv(np.stack([t**0, t, t**2], axis=1)[:3])[1] * step
+    rules = []
+    for powers in ((0, 1, 2), (0, 1, 2, 4), (0, 1, 2, 4, 6)):
+        count = len(powers)
+        rule = np.zeros(t.size)
+        rule[:count] = np.linalg.inv(np.stack([t[:count] ** p for p in powers], axis=1))[1] * t[1]
+        rules.append(rule)
+    low, middle, high = rules
     worst = np.zeros(f.shape[:-3])
     for row, col in _SIX:
-        value = f[..., row, col] @ fine
-        truncation = np.abs(f[..., row, col] @ (fine - coarse))
+        element = f[..., row, col]
+        truncation = np.abs(element @ (high - middle)) + np.abs(element @ (middle - low))
         unit = h[..., row, col].max(axis=-1)
-        worst = np.maximum(worst, np.abs(value) / (unit + truncation))
+        worst = np.maximum(worst, np.abs(element @ high) / (unit + truncation))
     return worst
 
 

@@ -1,0 +1,43 @@
+"""`scatterloom bulk`: average the table over the populations of a campaign."""
+
+from __future__ import annotations
+
+import argparse
+import os
+
+from scatterloom.commands import COMMANDS
+
+NAME = "bulk"
+HELP = COMMANDS[NAME]
+
+
+def configure(parser: argparse.ArgumentParser) -> None:
+    """Add the arguments of the command."""
+    parser.add_argument("config", metavar="CONFIG", help="campaign file (YAML)")
+    parser.add_argument("--results", metavar="DIR", help="folder of all results")
+
+
+def execute(args: argparse.Namespace) -> int:
+    """Write bulk.zarr and print its main values; 1 if an average failed or is flagged."""
+    from scatterloom.bulk.build import build, populations_of
+    from scatterloom.bulk.bulkfile import COMMIT_FILE, write_bulk
+    from scatterloom.bulk.listing import listing
+    from scatterloom.campaign import load
+    from scatterloom.errors import BadInput
+    from scatterloom.store.layout import Layout, results_root
+    from scatterloom.store.table import open_table
+
+    campaign = load(args.config)
+    populations = populations_of(campaign.model)
+    if not populations:
+        raise BadInput(
+            f"{args.config}: no populations to average over\n  hint: add a section 'populations'"
+        )
+    layout = Layout(results_root(args.results) / campaign.name)
+    table = open_table(layout.table)
+    columns = build(table, populations)
+    if not write_bulk(layout.bulk, columns, table.attrs):
+        # The rule graph compares times: an equal, older file is as good as a new one.
+        os.utime(layout.bulk / COMMIT_FILE)
+    print("\n".join(listing(columns)))
+    return 0 if (columns["status"] == 1).all() else 1

@@ -1,0 +1,208 @@
+"""The audit of a whole table: every identity for every case, summed up."""
+
+from __future__ import annotations
+
+import json
+import math
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from scatterloom.errors import IntegrityError
+from scatterloom.scattering.audit import CHECKS, FloatArray, audit_energy, audit_matrix
+from scatterloom.scattering.elements import RATIOS, ratio
+from scatterloom.scattering.record import FAILED, MISSING, SOLVED, SOLVED_WITH_WARNING
+
+if TYPE_CHECKING:
+    import xarray
+
+STATUS = {
+    "missing": MISSING,
+    "solved": SOLVED,
+    "solved_with_warning": SOLVED_WITH_WARNING,
+    "failed": FAILED,
+}
+FORMAT_VERSION = 1
+_EFFICIENCIES = (
+    "extinction_efficiency",
+    "scattering_efficiency",
+    "absorption_efficiency",
+    "single_scattering_albedo",
+)
+_ACCURACY = {
+    "f11_relative": "largest half width of F11 over all angles, relative",
+    "ratio_absolute": "largest half width of the five ratios over all angles (bound)",
+    "efficiency_relative": "largest half width of extinction and scattering efficiency, relative",
+}
+
+
+def audit_table(table: xarray.Dataset, asked: dict[str, float]) -> dict[str, Any]:
+    """Audit a table.
+
+    Parameters
+    ----------
+    table : xarray.Dataset
+        An opened table.
+    asked : dict of str to float
+        Accuracy asked: f11_relative, ratio_absolute, efficiency_relative.
+
+    Returns
+    -------
+    dict
+        Fit for JSON: counts of cells by status and by warning; for each check the
+        number of cases judged, not judged and flagged and the worst deviation in
+        units of the error bar; for each kind of accuracy the half widths reached.
+        ``passed`` is whether nothing is missing, failed, warned or flagged.
+    """
+    shape = tuple(table.sizes[d] for d in ("particle", "wavelength", "size"))
+    deviations = {check.name: np.full(shape, np.nan) for check in CHECKS}
+    reached = {name: np.full(shape, np.nan) for name in _ACCURACY}
+    for p, w in np.ndindex(shape[:2]):
+        part = table.isel(particle=p, wavelength=w).load()
+        for name, value in _audit_ladder(part).items():
+            deviations[name][p, w] = value
+        for name, value in _half_widths(part).items():
+            reached[name][p, w] = value
+
+    status = table["status"].values
+    solved = (status == STATUS["solved"]) | (status == STATUS["solved_with_warning"])
+    cells = {name: int((status == value).sum()) for name, value in STATUS.items()}
+    checks = [
+        {"name": c.name, "statement": c.statement, **_judge(table, deviations[c.name], solved, 1.0)}
+        for c in CHECKS
+    ]
+    accuracy = []
+    for name, words in _ACCURACY.items():
+        result = _judge(table, reached[name], solved, asked[name])
+        known = reached[name][np.isfinite(reached[name])]
+        accuracy.append(
+            {
+                "name": name,
+                "statement": words,
+                "asked": asked[name],
+                "median": _number(float(np.median(known))) if known.size else None,
+                "above": result["flagged"],
+                "judged": result["judged"],
+                "worst": result["worst"],
+                "worst_case": result["worst_case"],
+            }
+        )
+    flagged = sum(check["flagged"] for check in checks)
+    return {
+        "format_version": FORMAT_VERSION,
+        "campaign": str(table.attrs.get("campaign", "")),
+        "table_content_digest": str(table.attrs.get("content_digest", "")),
+        "cells": cells,
+        "warnings": _warnings(table),
+        "unit": "deviations are in units of the error bar; above 1 is flagged",
+        "checks": checks,
+        "accuracy": accuracy,
+        "flagged": flagged,
+        "passed": flagged == 0 and cells["solved"] == status.size,
+    }
+
+
+def _audit_ladder(part: xarray.Dataset) -> dict[str, FloatArray]:
+    """Deviations of all sizes of one particle at one wavelength."""
+    matrix = audit_matrix(
+        part["scattering_matrix"].values,
+        part["scattering_matrix_error"].values,
+        part["angle"].values,
+        part["asymmetry_parameter"].values,
+        part["asymmetry_parameter_error"].values,
+    )
+    absorbing = np.full(part.sizes["size"], float(part["refractive_index_k"]) > 0.0)
+    values = {name: part[name].values for name in _EFFICIENCIES}
+    half_widths = {name: part[f"{name}_error"].values for name in _EFFICIENCIES}
+    return matrix | audit_energy(values, half_widths, absorbing)
+
+
+def _half_widths(part: xarray.Dataset) -> dict[str, FloatArray]:
+    f = part["scattering_matrix"].values
+    h = part["scattering_matrix_error"].values.astype(np.float64)
+    ratios = np.stack([ratio(f, h, which)[1].max(axis=-1) for which in RATIOS])
+    efficiencies = np.stack(
+        [part[f"{name}_error"].values / np.abs(part[name].values) for name in _EFFICIENCIES[:2]]
+    )
+    return {
+        "f11_relative": (h[..., 0, 0] / f[..., 0, 0]).max(axis=-1),
+        "ratio_absolute": ratios.max(axis=0),
+        "efficiency_relative": efficiencies.max(axis=0),
+    }
+
+
+def _judge(
+    table: xarray.Dataset, values: FloatArray, solved: np.ndarray, limit: float
+) -> dict[str, Any]:
+    known = np.isfinite(values)
+    # A solved case with an infinite deviation (an error bar of zero) is worse than flagged.
+    known |= np.isinf(values)
+    worst = None
+    place = None
+    if known.any():
+        at = np.unravel_index(int(np.nanargmax(values)), values.shape)
+        worst = _number(float(values[at]))
+        p, w, s = (int(i) for i in at)
+        ladder = table.isel(particle=p, wavelength=w)
+        place = {
+            "particle": str(ladder["particle"].values),
+            "wavelength_um": _number(float(ladder["wavelength"])),
+            "size_parameter": _number(float(ladder["size_parameter"].values[s])),
+        }
+    return {
+        "judged": int(known.sum()),
+        "not_judged": int((solved & ~known).sum()),
+        "flagged": int((values[known] > limit).sum()),
+        "worst": worst,
+        "worst_case": place,
+    }
+
+
+def _warnings(table: xarray.Dataset) -> dict[str, int]:
+    flags = table["warning_flags"]
+    names = str(flags.attrs.get("flag_meanings", "")).split()
+    masks = np.atleast_1d(flags.attrs.get("flag_masks", [])).tolist()
+    counts = {
+        name: int((flags.values & int(mask) != 0).sum())
+        for name, mask in zip(names, masks, strict=True)
+    }
+    return {name: count for name, count in counts.items() if count}
+
+
+def _number(value: float) -> float | None:
+    if math.isinf(value):
+        return 1e300  # JSON has no infinity
+    return float(f"{value:.6g}")
+
+
+def read_audit(path: Path, table_digest: str) -> dict[str, Any]:
+    """Read audit.json.
+
+    Parameters
+    ----------
+    path : Path
+    table_digest : str
+        Content digest of the table that it must be about.
+
+    Returns
+    -------
+    dict
+        As `audit_table` returns it.
+
+    Raises
+    ------
+    IntegrityError
+        If it is missing, unreadable or about another table.
+    """
+    hint = "\n  hint: run 'scatterloom audit' again"
+    try:
+        result: dict[str, Any] = json.loads(path.read_bytes())
+        digest, version = result["table_content_digest"], result["format_version"]
+    except FileNotFoundError:
+        raise IntegrityError(f"{path}: not written yet{hint}") from None
+    except (ValueError, KeyError, TypeError):
+        raise IntegrityError(f"{path}: unreadable{hint}") from None
+    if digest != table_digest or version != FORMAT_VERSION:
+        raise IntegrityError(f"{path}: about another table than the one beside it{hint}")
+    return result
