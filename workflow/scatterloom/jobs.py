@@ -214,11 +214,7 @@ def _products(levels: Sequence[LevelResult]) -> float:
 
 def _cold_estimate(anchors: Sequence[FieldFile], x: float) -> float:
     """Products a zero start would have used at `x`, from those the anchors around it used."""
-    return float(
-        np.interp(
-            x, [a.size_parameter for a in anchors], [a.products for a in anchors]
-        )
-    )
+    return float(np.interp(x, [a.size_parameter for a in anchors], [a.products for a in anchors]))
 
 
 def _solve_levels(

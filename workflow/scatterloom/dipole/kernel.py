@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import ducc0
 import numpy as np
-from numpy.typing import NDArray
+from numpy.typing import DTypeLike, NDArray
 from scipy.special import sici
 
 
@@ -86,7 +86,7 @@ def octant_spectrum(
     box: tuple[int, int, int],
     half: tuple[int, int, int],
     kd: float,
-    dtype: type = np.complex64,
+    dtype: DTypeLike = np.complex64,
 ) -> NDArray:
     """Transform of the Green tensor on the padded grid, one octant.
 
@@ -109,7 +109,7 @@ def octant_spectrum(
     tensor = lag_tensor(box, kd)
     padded = np.zeros((6, *(h + 1 for h in half)), dtype=np.complex128)
     padded[:, : box[0], : box[1], : box[2]] = tensor
-    out = np.empty((half[0] + 1, 6, half[1] + 1, half[2] + 1), dtype=dtype)
+    out: NDArray = np.empty((half[0] + 1, 6, half[1] + 1, half[2] + 1), dtype=dtype)
     scale = 1.0 / (8.0 * half[0] * half[1] * half[2])
     for c, odd in enumerate(_ODD_AXES):
         # A real symmetric sequence transforms to a cosine sum, an antisymmetric one

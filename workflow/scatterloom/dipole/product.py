@@ -15,7 +15,7 @@ from __future__ import annotations
 import ducc0
 import numpy as np
 from numba import njit
-from numpy.typing import NDArray
+from numpy.typing import DTypeLike, NDArray
 
 from scatterloom.dipole.kernel import octant_spectrum
 from scatterloom.dipole.polarizability import CellTensors
@@ -172,7 +172,7 @@ class LatticeMatrix:
         lattice: Lattice,
         tensors: CellTensors,
         kd: float,
-        dtype: type = np.complex64,
+        dtype: DTypeLike = np.complex64,
         threads: int = 1,
     ) -> None:
         self.dtype = np.dtype(dtype)
@@ -198,7 +198,7 @@ class LatticeMatrix:
         self._flip = np.zeros(3, dtype=np.int64)
         for bit, a in enumerate(mirrored):
             self._flip[a] = 1 << bit
-        self.root = np.ascontiguousarray(tensors.root[self.fundamental].T.astype(dtype))
+        self.root: NDArray = np.ascontiguousarray(tensors.root[self.fundamental].T.astype(dtype))
         self.loss = np.ascontiguousarray(tensors.loss[self.fundamental].T)
         self._kernel = octant_spectrum(lattice.box, self.half, kd, dtype)  # type: ignore[arg-type]
         self._batch = max(1, min(8, int(4e6 / (3 * 8 * np.prod(self.half) / self.half[0] * 4))))

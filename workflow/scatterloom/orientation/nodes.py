@@ -53,14 +53,10 @@ def incidence_nodes(symmetry: str, n_max: int) -> IncidenceNodes:
     if symmetry == "axial":
         node, weight = np.polynomial.legendre.leggauss(2 * ((n_max + 2) // 2))
         half = node > 0.0
-        return IncidenceNodes(
-            np.arccos(node[half]), np.zeros(half.sum()), weight[half], True
-        )
+        return IncidenceNodes(np.arccos(node[half]), np.zeros(half.sum()), weight[half], True)
     if symmetry not in ("mirrors", "none"):
         raise ValueError(f"unknown symmetry {symmetry!r}; known: sphere, axial, mirrors, none")
-    high_enough = [
-        d for d in _LEBEDEV_DEGREES if d >= 2 * n_max and d not in _NEGATIVE_WEIGHTS
-    ]
+    high_enough = [d for d in _LEBEDEV_DEGREES if d >= 2 * n_max and d not in _NEGATIVE_WEIGHTS]
     if not high_enough:
         raise ValueError(f"no Lebedev rule for truncation n_max = {n_max}, largest is 65")
     point, weight = lebedev_rule(high_enough[0])

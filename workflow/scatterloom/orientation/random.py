@@ -36,9 +36,7 @@ def _scattered_in_beam_frame(
         for kind in (0, 1):
             for hand, m in enumerate((1, -1)):
                 # Rows of one kind and degree are sorted by order.
-                incident[rows[kind][n], :, hand] = (
-                    axial[kind][hand, n] * rotation[:, :, n + m].T
-                )
+                incident[rows[kind][n], :, hand] = axial[kind][hand, n] * rotation[:, :, n + m].T
     scattered = np.tensordot(transition.matrix, incident, axes=1)
     out = np.zeros((2, n_max + 1, 2 * n_max + 1, n_node, 2), dtype=np.complex128)
     for n in range(1, n_max + 1):

@@ -45,9 +45,7 @@ def observe(transition: TransitionMatrix, symmetry: str, size_parameter: float) 
     node, weight = np.polynomial.legendre.leggauss(2 * transition.n_max + 2)
     matrix = random_orientation(transition, symmetry, node)
     integral = 2.0 * np.pi * float(weight @ matrix[:, 0, 0])
-    expansion = expand(
-        matrix * (4.0 * np.pi / integral), node, weight, l_max=2 * transition.n_max
-    )
+    expansion = expand(matrix * (4.0 * np.pi / integral), node, weight, l_max=2 * transition.n_max)
     extinction, scattering = efficiencies(transition, size_parameter)
     return Observables(
         extinction_efficiency=extinction,

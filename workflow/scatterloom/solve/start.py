@@ -66,7 +66,9 @@ def interpolated_start(
         out = []
         for c, norm in enumerate(norms):
             shared = min(len(norm), *(len(n.rows[c]) for n in neighbours))
-            rows = np.zeros((len(norm), neighbours[0].rows[c].shape[1]), neighbours[0].rows[c].dtype)
+            rows = np.zeros(
+                (len(norm), neighbours[0].rows[c].shape[1]), neighbours[0].rows[c].dtype
+            )
             for weight, neighbour in zip(weights, neighbours, strict=True):
                 rows[:shared] += rows.real.dtype.type(weight) * neighbour.rows[c][:shared]
             rows *= norm[:, None].astype(rows.real.dtype)

@@ -95,9 +95,7 @@ def solve_level(
     raw = from_amplitudes(n_max, incident.members, solution.amplitudes)
     transition = project(raw, lattice.symmetry)
     stationary = [s - r for s, r in zip(solution.amplitudes, solution.remainder, strict=True)]
-    uncorrected = project(
-        from_amplitudes(n_max, incident.members, stationary), lattice.symmetry
-    )
+    uncorrected = project(from_amplitudes(n_max, incident.members, stationary), lattice.symmetry)
     lost = np.linalg.norm(raw.matrix - transition.matrix) / np.linalg.norm(raw.matrix)
     return LevelResult(
         transition=transition,
@@ -118,9 +116,7 @@ def solve_level(
     )
 
 
-def _absorption(
-    matrix: LatticeMatrix, fields: list[NDArray], size_parameter: float
-) -> float:
+def _absorption(matrix: LatticeMatrix, fields: list[NDArray], size_parameter: float) -> float:
     """Absorption efficiency from the loss in the cells.
 
     One plane wave: C_abs = 4 pi sum x^H L x (Bohren & Huffman 1983, section 3.2, applied to

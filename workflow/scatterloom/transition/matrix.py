@@ -102,9 +102,7 @@ def project(transition: TransitionMatrix, symmetry: str) -> TransitionMatrix:
     raise ValueError(f"unknown symmetry {symmetry!r}; known: sphere, axial, mirrors, none")
 
 
-def efficiencies(
-    transition: TransitionMatrix, size_parameter: float
-) -> tuple[float, float]:
+def efficiencies(transition: TransitionMatrix, size_parameter: float) -> tuple[float, float]:
     """Extinction and scattering efficiency, exact average over random orientation.
 
     ``C_ext = -(2 pi/k^2) Re Tr T``, ``C_sca = (2 pi/k^2) sum |T|^2`` (Mishchenko et al.

@@ -48,9 +48,7 @@ class WaveBasis:
         Odd means E(-x) = +(Ex, -Ey, -Ez)(x), and so on for y and z. RgN carries the
         parity of its scalar harmonic, RgM (a curl of it) the opposite one.
         """
-        scalar = np.stack(
-            [(self.order + self.sine) % 2, self.sine, (self.degree + self.order) % 2]
-        )
+        scalar = np.stack([(self.order + self.sine) % 2, self.sine, (self.degree + self.order) % 2])
         return np.where(self.kind == ELECTRIC, scalar, 1 - scalar)
 
     def class_of(self, mirrors: tuple[bool, bool, bool]) -> NDArray[np.int64]:
