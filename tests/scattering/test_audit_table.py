@@ -57,6 +57,7 @@ def test_exact_spheres_pass(table) -> None:
     for row in result["checks"]:
         assert row["flagged"] == 0
         assert row["judged"] == (12 if row["name"] == "lossless" else 24)
+        assert row["not_judged"] == 0
     accuracy = {row["name"]: row for row in result["accuracy"]}
     assert accuracy["efficiency_relative"]["worst"] == pytest.approx(0.01, rel=1e-4)
     assert accuracy["efficiency_relative"]["above"] == 24

@@ -8,5 +8,6 @@ rule make_bulk:
         "bulk.zarr/commit.json",
     log:
         "state/logs/bulk.log",
+    # Code 1 says that some averages are flagged, which is a finding and no failure.
     shell:
-        "exec {SCATTERLOOM} bulk {CAMPAIGN} > {log} 2>&1"
+        "{SCATTERLOOM} bulk {CAMPAIGN} > {log} 2>&1 || [ $? -eq 1 ]"

@@ -127,7 +127,7 @@ def _contents(table: xarray.Dataset) -> list[dict[str, str]]:
             {
                 "particle": str(part["particle"].values),
                 "wavelength": f"{float(wavelength[w]):g}",
-                "index": f"{n:.4g} + {k:.3g}i",
+                "index": f"{n:.4g} + {k:.3g}i" if k else f"{n:.4g}",
                 "radius": f"{radius.min():.3g} to {radius.max():.3g}",
                 "size_parameter": f"{x.min():.3g} to {x.max():.3g}",
                 "sizes": str(x.size),

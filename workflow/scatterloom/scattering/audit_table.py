@@ -68,10 +68,13 @@ def audit_table(table: xarray.Dataset, asked: dict[str, float]) -> dict[str, Any
     status = table["status"].values
     solved = (status == STATUS["solved"]) | (status == STATUS["solved_with_warning"])
     cells = {name: int((status == value).sum()) for name, value in STATUS.items()}
-    checks = [
-        {"name": c.name, "statement": c.statement, **_judge(table, deviations[c.name], solved, 1.0)}
-        for c in CHECKS
-    ]
+    lossless = (table["refractive_index_k"].values == 0.0)[:, :, None]
+    checks = []
+    for check in CHECKS:
+        # The check of lossless particles has nothing to judge in absorbing ones.
+        cases = solved & lossless if check.name == "lossless" else solved
+        result = _judge(table, deviations[check.name], cases, 1.0)
+        checks.append({"name": check.name, "statement": check.statement, **result})
     accuracy = []
     for name, words in _ACCURACY.items():
         result = _judge(table, reached[name], solved, asked[name])
