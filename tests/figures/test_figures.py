@@ -174,6 +174,14 @@ def test_an_index_of_another_table_or_with_lost_files_is_refused(table, tmp_path
         read_index(folder, "0" * 64)
 
 
+def test_figures_of_an_earlier_campaign_file_are_removed(table, tmp_path) -> None:
+    few = table.isel(size=[0, 1])
+    make_figures(few, tmp_path)
+    entries, _ = make_figures(few.isel(particle=[1]), tmp_path)
+    left = {path.stem for path in tmp_path.iterdir()} - {"figures"}
+    assert left == {entry["name"] for entry in entries} == {"matrix-dark-0.55um", "products-dark"}
+
+
 def test_signed_map_is_centred_on_zero(table) -> None:
     with style():
         picture = size_angle_map(load_ladder(table, 1, 0))

@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import csv
+from pathlib import Path
+
 import numpy as np
 import pytest
 
@@ -209,6 +212,42 @@ def test_energy_checks() -> None:
     )
     assert lossless["lossless"] > 1
     assert lossless["energy_balance"] < 1
+
+
+def spheroids() -> dict[str, tuple[np.ndarray, np.ndarray, float]]:
+    """Exact matrices of randomly oriented spheroids (see tests/check_values/README.md)."""
+    folder = Path(__file__).parents[1] / "check_values"
+    with open(folder / "spheroids.csv", newline="") as stream:
+        g = {
+            (row["equatorial_to_polar"], row["m"], row["x_equal_volume"]): float(row["g"])
+            for row in csv.DictReader(stream)
+        }
+    rows: dict[tuple[str, str, str], list[dict[str, str]]] = {}
+    with open(folder / "spheroid_matrices.csv", newline="") as stream:
+        for row in csv.DictReader(stream):
+            key = (row["equatorial_to_polar"], row["m"], row["x_equal_volume"])
+            rows.setdefault(key, []).append(row)
+    out = {}
+    for key, listed in rows.items():
+        f = np.zeros((len(listed), 4, 4))
+        f11 = np.array([float(row["F11"]) for row in listed])
+        f[:, 0, 0] = f11
+        for i, name in enumerate(("F22/F11", "F33/F11", "F44/F11"), start=1):
+            f[:, i, i] = f11 * [float(row[name]) for row in listed]
+        f[:, 0, 1] = f[:, 1, 0] = -f11 * [float(row["-F12/F11"]) for row in listed]
+        f[:, 2, 3] = f11 * [float(row["F34/F11"]) for row in listed]
+        f[:, 3, 2] = -f[:, 2, 3]
+        out[" ".join(key)] = (np.array([float(row["angle_deg"]) for row in listed]), f, g[key])
+    return out
+
+
+@pytest.mark.parametrize("name", sorted(spheroids()))
+def test_exact_spheroids_pass(name: str) -> None:
+    angles, f, g = spheroids()[name]
+    # The table has eight digits.
+    half_width = 2e-7 * np.maximum(f[:, :1, :1], 1.0) * np.ones((4, 4))
+    for check, deviation in audit_matrix(f, half_width, angles, g, 1e-9).items():
+        assert deviation < 1.0, check
 
 
 def test_names_are_unique() -> None:

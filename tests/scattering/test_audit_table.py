@@ -137,9 +137,11 @@ def test_commands_without_a_table_end_with_integrity(tmp_path, capsys) -> None:
         assert "table.zarr" in err and "Traceback" not in err
 
 
-def test_the_whole_chain_of_commands(campaign, capsys) -> None:
-    config, results = campaign
+def test_the_whole_chain_of_commands(table, tmp_path, capsys) -> None:
+    config, results = tmp_path / "saltmere.yaml", tmp_path / "results"
     folder = results / "saltmere"
+    config.write_text(CONFIG)
+    publish_table(folder / "table.zarr", table.isel(wavelength=[0]))  # fewer figures to draw
     options = [str(config), "--results", str(results)]
     # Figures and report want the bulk properties that the campaign asks for.
     assert main(["figures", *options]) == 4

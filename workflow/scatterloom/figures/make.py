@@ -13,7 +13,7 @@ from scatterloom.bulk.build import Population
 from scatterloom.figures.curves import matrix_curves
 from scatterloom.figures.effort import product_counts
 from scatterloom.figures.maps import size_angle_map
-from scatterloom.figures.picture import INDEX, Picture, save, style, write_index
+from scatterloom.figures.picture import ENDINGS, INDEX, Picture, save, style, write_index
 from scatterloom.figures.population import population_panel
 from scatterloom.figures.selection import load_ladder
 
@@ -38,7 +38,7 @@ def make_figures(
         An opened table.
     folder : Path
         Where PNG, SVG, CSV and `figures.json` go. The index is taken away first, so
-        that it never names figures of two tables.
+        that it never names figures of two tables; figures it no longer names are removed.
     bulk : xarray.Dataset, optional
         Bulk properties of the table.
     populations : sequence of Population
@@ -68,6 +68,12 @@ def make_figures(
                 notes.append(f"not drawn: {reason}")
                 continue
             entries.append(save(picture, folder))
+    # Figures of an earlier campaign file would be taken for figures of this table.
+    named = {entry[ending] for entry in entries for ending in ENDINGS}
+    for ending in ENDINGS:
+        for path in folder.glob(f"*.{ending}"):
+            if path.name not in named:
+                path.unlink()
     write_index(folder, entries, notes, str(table.attrs.get("content_digest", "")))
     return entries, notes
 

@@ -19,6 +19,7 @@ from scatterloom.errors import IntegrityError
 from scatterloom.store.atomic import atomic_write
 
 INDEX = "figures.json"
+ENDINGS = ("png", "svg", "csv")
 BAND = "Bands are 95 % half widths."
 
 SERIES = (
@@ -159,7 +160,7 @@ def read_index(folder: Path, table_digest: str) -> dict[str, Any]:
     if digest != table_digest:
         raise IntegrityError(f"{path}: figures of another table than the one beside them{hint}")
     for entry in figures:
-        for ending in ("png", "svg", "csv"):
+        for ending in ENDINGS:
             if not (folder / entry[ending]).is_file():
                 raise IntegrityError(f"{folder / entry[ending]}: missing{hint}")
     return index
