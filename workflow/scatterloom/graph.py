@@ -19,7 +19,9 @@ from scatterloom import campaign as campaigns
 from scatterloom.campaign.effort import NUMERICS_REVISION
 from scatterloom.campaign.expand import Grid, expand
 from scatterloom.campaign.plan import Job, plan
+from scatterloom.errors import IntegrityError
 from scatterloom.store.atomic import sweep_abandoned, write_if_changed
+from scatterloom.store.commit import commit_record, verify_folder
 from scatterloom.store.layout import Layout, results_root
 
 
@@ -117,16 +119,20 @@ class Graph:
         """Remove what killed writers left behind."""
         layout = self.layout
         folders = [layout.folder, layout.jobs, layout.cases, layout.fields, layout.progress]
-        folders += sorted(p for p in layout.state.glob("cases/*") if p.is_dir())
+        folders += sorted(p for p in layout.state.glob("*/*") if p.is_dir())
         for folder in (*folders, layout.table, layout.figures):
             sweep_abandoned(folder)
 
 
 def receipt_holds(layout: Layout) -> bool:
-    """Tell whether the receipt names the table that is committed now."""
+    """Tell whether the receipt names the table that is committed now, with all its files.
+
+    Names and lengths are compared; digests are left to `verify` and to every reader.
+    """
     try:
         receipt = json.loads(layout.receipt.read_bytes())
-        record = json.loads((layout.table / "commit.json").read_bytes())
-        return bool(receipt["manifest_sha256"] == record["manifest_sha256"])
-    except (OSError, ValueError, KeyError, TypeError):
+        verify_folder(layout.table, digests=False)
+        committed = commit_record(layout.table)["manifest_sha256"]
+        return bool(receipt["manifest_sha256"] == committed)
+    except (OSError, ValueError, KeyError, TypeError, IntegrityError):
         return False

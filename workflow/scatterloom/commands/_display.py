@@ -23,6 +23,7 @@ PHASES = {
     "audit": "checking against the laws of physics",
     "make_figures": "drawing figures",
     "make_report": "writing the report",
+    "all": "finishing",
 }
 
 
@@ -114,7 +115,7 @@ class Display:
             from rich.live import Live
 
             # rich itself honours NO_COLOR.
-            console = Console(file=self._stream)
+            console = Console(file=self._stream, force_terminal=True)
             self._live = Live(console=console, transient=True, refresh_per_second=4)
             self._live.start()
         return self
@@ -132,7 +133,7 @@ class Display:
     def show(self, progress: Progress, phase: str, left: float | None) -> None:
         """Show the state of the run; on plain streams only if it changed, every few seconds."""
         if self._live is not None:
-            self._live.update(self._table(progress, phase, left))
+            self._live.update(self._table(progress, phase, left), refresh=True)
             return
         text = line(progress, phase, left)
         now = time.monotonic()

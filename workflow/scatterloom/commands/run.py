@@ -189,8 +189,15 @@ def _conclude(graph: Graph) -> int:
     ):
         print(f"{label:<8} {path}")
     flagged = {name: count for name, count in cells.items() if name != "solved" and count}
-    if not flagged:
+    text = [f"{count} {name.replace('_', ' ')}" for name, count in flagged.items()]
+    audit = json.loads(layout.audit.read_bytes())
+    if not flagged and audit["passed"]:
         return 0
-    text = ", ".join(f"{count} {name.replace('_', ' ')}" for name, count in flagged.items())
-    print(f"scatterloom: of {sum(cells.values())} cells, {text}; see the report", file=sys.stderr)
+    checks = sum(1 for check in audit["checks"] if check["flagged"])
+    if checks:
+        text.append(f"{checks} physical checks flagged")
+    print(
+        f"scatterloom: of {sum(cells.values())} cells, {', '.join(text)}; see the report",
+        file=sys.stderr,
+    )
     return 1
