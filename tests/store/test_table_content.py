@@ -84,6 +84,9 @@ def test_every_variable_says_what_it_is(table):
     assert set(table.variables) == {v.name for v in schema.variables()}
     for name, variable in table.variables.items():
         assert variable.attrs["long_name"], name
+        content = variable.attrs["coverage_content_type"]
+        assert (content == "coordinate") == (name in table.coords), name
+        assert (content == "qualityInformation") >= str(name).endswith("_error"), name
         numeric = variable.dtype.kind in "fi" and not name.endswith(("status", "flags"))
         assert numeric == ("units" in variable.attrs), name
 

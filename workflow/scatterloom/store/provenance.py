@@ -13,7 +13,7 @@ from typing import Any
 from scatterloom.campaign.effort import NUMERICS_REVISION
 
 PACKAGES = ("numpy", "scipy", "numba", "ducc0", "snakemake", "zarr", "xarray", "scatterloom")
-DATED = frozenset({"date_created", "history", "content_digest", "platform"})
+DATED = frozenset({"date_created", "history", "content_digest", "computer"})
 """Attributes that may differ between two runs of the same computation."""
 NOT_STATED = "not stated"
 MOST_NAMED = 10
@@ -63,6 +63,8 @@ def global_attributes(
         "keywords": ", ".join(stated.get("keywords") or KEYWORDS),
         "id": about.campaign,
         "campaign": about.campaign,
+        "project": about.campaign,
+        "standard_name_vocabulary": "CF Standard Name Table",
         "source": (
             "coupled-dipole solution on filtered lattices with tensor cells, stationary transition "
             "matrix, extrapolation over lattice spacings"
@@ -76,7 +78,7 @@ def global_attributes(
         "numerics_revision": NUMERICS_REVISION,
         "version_python": platform.python_version(),
         **versions,
-        "platform": platform.platform(),
+        "computer": platform.platform(),
         "time_factor": "exp(-i w t), so a positive imaginary index absorbs",
         "sign_convention": (
             "elements 12 and 34 of the scattering matrix as in Bohren & Huffman (1983), "

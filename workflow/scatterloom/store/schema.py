@@ -42,6 +42,9 @@ class Variable:
         What a reader must know to use the numbers.
     error : bool
         Whether a companion `NAME_error` holds its half width.
+    content : str
+        Kind of content in the words of ACDD 1.3: "modelResult", "coordinate" or
+        "qualityInformation"; found from the name and dimensions if "".
     extra : dict
         Further attributes.
     """
@@ -54,6 +57,7 @@ class Variable:
     standard_name: str | None = None
     comment: str | None = None
     error: bool = False
+    content: str = ""
     extra: dict[str, Any] = field(default_factory=dict)
 
     @property
@@ -65,7 +69,10 @@ class Variable:
 
     def attributes(self) -> dict[str, Any]:
         """Attributes as CF 1.11 wants them."""
-        attributes: dict[str, Any] = {"long_name": self.long_name}
+        attributes: dict[str, Any] = {
+            "long_name": self.long_name,
+            "coverage_content_type": self.content or self._usual_content(),
+        }
         if self.units:
             attributes["units"] = self.units
         if self.standard_name:
@@ -78,7 +85,15 @@ class Variable:
             attributes["coordinates"] = " ".join(AUXILIARY)
         return attributes | self.extra
 
+    def _usual_content(self) -> str:
+        if self.dims == (self.name,) or self.name in AUXILIARY:
+            return "coordinate"
+        if self.name.endswith("_error") or self.name in QUALITY:
+            return "qualityInformation"
+        return "modelResult"
 
+
+QUALITY = ("status", "warning_flags", "residual")
 AUXILIARY = ("size_parameter", "radius_um")
 """Coordinates that are no dimension: they depend on wavelength and size."""
 
