@@ -119,9 +119,10 @@ def octant_spectrum(
             if axis in odd:
                 inner = [slice(None)] * 4
                 inner[axis + 1] = slice(1, half[axis])
-                sines = ducc0.fft.dst(np.ascontiguousarray(parts[tuple(inner)]), 1, [axis + 1])
+                values = np.ascontiguousarray(parts[tuple(inner)])
                 parts = np.zeros_like(parts)
-                parts[tuple(inner)] = sines
+                if values.size:  # an axis of one cell has no odd part
+                    parts[tuple(inner)] = ducc0.fft.dst(values, 1, [axis + 1])
             else:
                 parts = ducc0.fft.dct(parts, 1, [axis + 1])
         sign = -scale if odd else scale
