@@ -54,6 +54,8 @@ def _fields(points, n_max, out):  # type: ignore[no-untyped-def]
         rho = math.sqrt(x * x + y * y)
         r = max(math.sqrt(rho * rho + z * z), 1e-9)
         ct, st = z / r, rho / r
+        if ct == 0.0 and st == 0.0:
+            ct = 1.0  # the origin: any direction will do
         if rho > 0.0:
             cp, sp = x / rho, y / rho
         else:
