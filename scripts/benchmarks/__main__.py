@@ -1,0 +1,56 @@
+"""Run benchmarks by name: ``scripts/bench transforms product``."""
+
+from __future__ import annotations
+
+import argparse
+import importlib
+import sys
+from pathlib import Path
+
+from threadpoolctl import threadpool_limits
+
+from benchmarks.machine import describe
+from benchmarks.output import write_result
+
+BENCHMARKS = {
+    "transforms": "Fourier transforms of two libraries on the boxes of the lattice product",
+    "product": "the lattice product against the textbook way and against its bare transforms",
+    "solve": "one oblate spheroid: block solve and in-fill against one plane wave at a time",
+    "starts": "products and error of in-filled sizes against the spacing of their anchors",
+}
+DEFAULT_OUTPUT = Path(__file__).parents[2] / "workflow" / "docs" / "benchmarks"
+
+
+def main() -> int:
+    """Run the benchmarks named, all of them if none is."""
+    listed = "\n".join(f"  {name:<12} {text}" for name, text in BENCHMARKS.items())
+    parser = argparse.ArgumentParser(
+        prog="scripts/bench",
+        description="Measure speed and accuracy against independent references.",
+        epilog=f"benchmarks:\n{listed}",
+        formatter_class=argparse.RawDescriptionHelpFormatter,
+    )
+    parser.add_argument("names", nargs="*", metavar="NAME", help="benchmarks; all if none is given")
+    parser.add_argument("--threads", type=int, default=1, metavar="N", help="threads (default: 1)")
+    parser.add_argument(
+        "--output", type=Path, default=DEFAULT_OUTPUT, metavar="DIR", help="folder of the results"
+    )
+    args = parser.parse_args()
+    unknown = [name for name in args.names if name not in BENCHMARKS]
+    if unknown:
+        parser.error(f"unknown benchmark {unknown[0]!r}; known: {', '.join(BENCHMARKS)}")
+    if args.threads < 1:
+        parser.error(f"--threads is {args.threads}, must be 1 or more")
+    args.output.mkdir(parents=True, exist_ok=True)
+    for name in args.names or BENCHMARKS:
+        module = importlib.import_module(f"benchmarks.{name}")
+        print(f"== {name}: {BENCHMARKS[name]}", file=sys.stderr)
+        with threadpool_limits(args.threads):
+            machine = describe(args.threads)
+            result = module.run(args.threads)
+        write_result(args.output, name, BENCHMARKS[name], machine, result)
+    return 0
+
+
+if __name__ == "__main__":
+    sys.exit(main())
