@@ -166,6 +166,7 @@ def test_killed_mid_way_the_same_command_resumes_to_the_same_bits(undisturbed, t
     solved_twice = [digest for digest in kept if after[digest] != kept[digest]]
     assert solved_twice == []
     assert list(campaign.rglob("*.partial")) == []
+    assert not (campaign / "fields").exists()
     assert_same_numbers(
         scatterloom.open_table(campaign / "table.zarr"),
         scatterloom.open_table(campaign_of(undisturbed[0]) / "table.zarr"),

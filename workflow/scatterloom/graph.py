@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import hashlib
 import json
+import shutil
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from functools import cached_property
@@ -108,12 +109,23 @@ class Graph:
         layout = self.layout
         write_if_changed(layout.config, self.campaign.merged_yaml().encode())
         for name, spec in self.specs.items():
-            write_if_changed(layout.job_file(name), json.dumps(spec, sort_keys=True).encode())
+            text = json.dumps(spec, sort_keys=True).encode()
+            # Made again from the campaign if lost: ten thousand syncs would take a minute.
+            write_if_changed(layout.job_file(name), text, durable=False)
         for path in layout.jobs.glob("*.json"):
             if path.stem not in self.jobs:
                 path.unlink(missing_ok=True)
         if not receipt_holds(layout):
             layout.receipt.unlink(missing_ok=True)
+
+    def drop_fields(self) -> None:
+        """Remove the fields that a finished campaign has no more use for.
+
+        The engine drops them as it goes, but forgets those of a run that was killed.
+        """
+        shutil.rmtree(self.layout.fields, ignore_errors=True)
+        for path in self.layout.solved.glob("*/*.npz"):
+            path.unlink(missing_ok=True)
 
     def sweep(self) -> None:
         """Remove what killed writers left behind."""

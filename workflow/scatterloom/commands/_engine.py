@@ -105,7 +105,12 @@ class Engine:
         return None
 
     def stop(self) -> None:
-        """End the engine and all its children, first kindly, then at once."""
+        """End the engine and all its children, first kindly, then at once.
+
+        An engine that has ended has no children left: they end with it.
+        """
+        if self.poll() is not None:
+            return
         try:
             self._signal(signal.SIGTERM)
             self.wait(GRACE_S)

@@ -77,6 +77,8 @@ def execute(args: argparse.Namespace) -> int:
         finally:
             # Silent if it has ended; otherwise an interrupt, or a fault of this program.
             engine.stop()
+        if code == 0:
+            graph.drop_fields()
     if code != 0:
         return _explain(engine, graph, meter.measure())
     return _conclude(graph)
@@ -100,12 +102,20 @@ def _cores() -> int:
 
 @contextlib.contextmanager
 def _terminable() -> Iterator[None]:
-    """Let SIGTERM and SIGHUP end the run as an interrupt from the keyboard does."""
+    """Let SIGTERM and SIGHUP end the run as an interrupt from the keyboard does.
+
+    A signal that is ignored already, as SIGHUP under nohup, stays so.
+    """
 
     def interrupt(number: int, frame: FrameType | None) -> None:
         raise KeyboardInterrupt
 
-    previous = {n: signal.signal(n, interrupt) for n in (signal.SIGTERM, signal.SIGHUP)}
+    numbers = [
+        number
+        for number in (signal.SIGTERM, signal.SIGHUP)
+        if signal.getsignal(number) != signal.SIG_IGN
+    ]
+    previous = {number: signal.signal(number, interrupt) for number in numbers}
     try:
         yield
     finally:

@@ -84,7 +84,7 @@ def atomic_write(path: Path | str, *, durable: bool = True) -> Iterator[BinaryIO
         sync_folder(path.parent)
 
 
-def write_if_changed(path: Path, content: bytes) -> bool:
+def write_if_changed(path: Path, content: bytes, *, durable: bool = True) -> bool:
     """Write `content` atomically unless `path` holds it already; return whether it wrote.
 
     Leaving an equal file alone keeps its modification time, which the rule graph reads.
@@ -94,7 +94,7 @@ def write_if_changed(path: Path, content: bytes) -> bool:
             return False
     except FileNotFoundError:
         pass
-    with atomic_write(path) as stream:
+    with atomic_write(path, durable=durable) as stream:
         stream.write(content)
     return True
 
