@@ -14,6 +14,9 @@ from scatterloom.solve.minimal_residual import ClassIterate
 BAD_START = 0.3
 """A start whose images miss the incident block by more than this is dropped."""
 
+_ROUNDING = 8.0
+"""Error of the amplitudes by rounding alone, in units of the precision (measured: 1 to 4)."""
+
 
 @dataclass
 class BlockSolution:
@@ -29,7 +32,8 @@ class BlockSolution:
         X + R of each class.
     error : float
         Estimated relative error (Frobenius) of the amplitudes: the size of the
-        remainder, which is already added, hence on the safe side in most cases.
+        remainder, which is already added, hence on the safe side in most cases. Never
+        below what rounding in the matrix's precision leaves.
     residual : float
         Relative residual norm of the block.
     products : float
@@ -41,7 +45,7 @@ class BlockSolution:
         Relative residual of the start as it was given; 1 for a zero start.
     start_dropped : bool
     history : list of float
-        `error` after every block of products.
+        Relative size of the remainder after every block of products.
     """
 
     amplitudes: list[NDArray]
@@ -166,6 +170,8 @@ def solve_block(
             break
         if len(history) > 8 and error > 0.9 * history[-5]:
             break
+    # The residual is updated, not recomputed, so the remainder does not see rounding.
+    error = max(error, _ROUNDING * float(np.finfo(matrix.dtype).eps))
     return BlockSolution(
         amplitudes=amplitudes,
         remainder=remainders,
