@@ -55,7 +55,8 @@ def record(particle: str, size_parameter: float, status: int = 1, **changes) -> 
         "checks": {},
         "expansion": np.stack([coefficients, 1.01 * coefficients]),
         "variants": ("best", "one percent off"),
-        "scale": np.array([0.0, 2.0]),
+        "causes": ("best", "remainder"),
+        "model_error": 0.0,
     }
     return CaseRecord(**(content | changes))
 

@@ -52,8 +52,49 @@ def _assemble(across: NDArray, along: NDArray, normal: NDArray) -> NDArray:
     return out
 
 
+ALONG_SHIFT, ACROSS_SHIFT = -0.0613, -0.00115
+"""Shift of the interface in cells, per contrast (see `boundary_shift`)."""
+
+
+def boundary_shift(
+    normal: NDArray[np.float64], permittivity: complex
+) -> tuple[NDArray[np.complex128], complex]:
+    """Outward shift of the interface that cancels the linear error of the cut cells.
+
+    With tensor means alone a particle on the lattice behaves as if its surface lay a few
+    thousandths of a cell further in or out, which leaves an error linear in the
+    spacing. A shift h of the interface changes the static energy by
+    h [(eps - 1) |E_across|^2 + (1 - 1/eps) |D_along|^2] per area (Johnson et al. 2002,
+    Phys. Rev. E 65, 066611), so the shift for either part was read off the polarizability
+    of spheres and spheroids on the lattice against the closed form for ellipsoids: it is
+    proportional to the Clausius-Mossotti contrast, and along the normal it vanishes for
+    interfaces parallel to the lattice planes. Measured with |m| from 1.2 to 2.3, absorbing
+    and not, this takes away nine tenths of the linear error.
+
+    Parameters
+    ----------
+    normal : float64 (n_cell, 3)
+    permittivity : complex
+
+    Returns
+    -------
+    along : complex128 (n_cell,) [cells]
+        For the field along the normal.
+    across : complex [cells]
+        For the field across it.
+    """
+    contrast = (permittivity - 1.0) / (permittivity + 2.0)
+    oblique = 1.0 - np.sum(normal**4, axis=1)
+    along = ALONG_SHIFT * contrast * oblique
+    return along, ACROSS_SHIFT * (permittivity - 1.0) * contrast
+
+
 def cell_tensors(
-    fill: NDArray[np.float64], normal: NDArray[np.float64], index: complex, kd: float
+    fill: NDArray[np.float64],
+    normal: NDArray[np.float64],
+    index: complex,
+    kd: float,
+    area: NDArray[np.float64] | None = None,
 ) -> CellTensors:
     """Polarizability of full and cut cells of a homogeneous particle.
 
@@ -71,11 +112,19 @@ def cell_tensors(
         Refractive index relative to the medium, Im >= 0.
     kd : float
         Lattice spacing times wavenumber.
+    area : float64 (n_cell,), optional
+        Surface inside each cell in units of a cell's face; if given, the fill of cut cells
+        is corrected by `boundary_shift`.
     """
     eps = complex(index) ** 2
     arithmetic = eps.real < 0.0
-    mean = 1.0 + fill * (eps - 1.0)
-    harmonic = mean if arithmetic else 1.0 / (1.0 + fill * (1.0 / eps - 1.0))
+    along_fill, across_fill = fill.astype(np.complex128), fill.astype(np.complex128)
+    if area is not None and not arithmetic:
+        along_shift, across_shift = boundary_shift(normal, eps)
+        along_fill += along_shift * area
+        across_fill += across_shift * area
+    mean = 1.0 + across_fill * (eps - 1.0)
+    harmonic = mean if arithmetic else 1.0 / (1.0 + along_fill * (1.0 / eps - 1.0))
     volume = kd**3
     g0 = self_term(kd)
 

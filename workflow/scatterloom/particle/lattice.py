@@ -33,6 +33,9 @@ class Lattice:
         Volume fraction of the cell inside the particle, in (0, 1].
     normal : float64 (n_cell, 3)
         Unit outward normal, averaged over the surface inside the cell; 0 in full cells.
+    area : float64 (n_cell,)
+        Area of the surface inside the cell, projected along its mean normal, in units of
+        a face of the cell; 0 in full cells.
     mirrors : tuple of 3 bool
         Whether x, y, z -> -x, -y, -z map the lattice onto itself.
     symmetry : str
@@ -46,6 +49,7 @@ class Lattice:
     cell: NDArray[np.int32]
     fill: NDArray[np.float64]
     normal: NDArray[np.float64]
+    area: NDArray[np.float64]
     mirrors: tuple[bool, bool, bool]
     symmetry: str
     cells_across: int
@@ -96,13 +100,15 @@ def lattice(shape: Shape, cells_across: int) -> Lattice:
     fill = np.where(fill > SMALLEST_FILL, fill, 0.0)
     cut = (fill > 0.0) & (fill < 1.0)
     normal = np.zeros_like(area)
-    normal[cut] = area[cut] / np.linalg.norm(area[cut], axis=-1, keepdims=True)
+    length = np.where(cut, np.linalg.norm(area, axis=-1), 0.0)
+    normal[cut] = area[cut] / length[cut][:, None]
     # One octant reflected: the mirror symmetry is exact to the last bit.
     for axis in range(3):
         mirrored = np.flip(normal, axis).copy()
         mirrored[..., axis] *= -1.0
         normal = np.concatenate((mirrored, normal), axis)
         fill = np.concatenate((np.flip(fill, axis), fill), axis)
+        length = np.concatenate((np.flip(length, axis), length), axis)
     inside = fill > 0.0
     return Lattice(
         box=(2 * nx, 2 * ny, 2 * nz),
@@ -110,6 +116,7 @@ def lattice(shape: Shape, cells_across: int) -> Lattice:
         cell=np.argwhere(inside).astype(np.int32),
         fill=fill[inside],
         normal=normal[inside] + 0.0,  # no negative zeros
+        area=length[inside],
         mirrors=(True, True, True),
         symmetry=shape.symmetry,
         cells_across=cells_across,

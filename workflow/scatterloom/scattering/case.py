@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from typing import Any
@@ -10,7 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterloom.scattering import error_bars, record
-from scatterloom.scattering.error_bars import FIT, SCALE, SOLVER, TRUNCATION
+from scatterloom.scattering.error_bars import SOLVER, TRUNCATION
 from scatterloom.scattering.extrapolate import Fit, combine, fits
 from scatterloom.scattering.observables import Observables, observe
 from scatterloom.transition.level import LevelResult
@@ -65,11 +66,10 @@ def _variants(
             float(fit.weights @ absorption),
         )
 
-    out = [variant("best: " + rivals[0].name, "best", rivals[0], corrected)]
-    out += [variant("fit: " + fit.name, FIT, fit, corrected) for fit in rivals[1:]]
-    out.append(variant("solver: without the last correction", SOLVER, rivals[0], plain))
+    out = [variant(fit.name, fit.cause, fit, corrected) for fit in rivals]
+    out.append(variant("without the last correction", SOLVER, rivals[0], plain))
     if corrected[0].n_max > 1:
-        out.append(variant("truncation: one degree less", TRUNCATION, rivals[0], corrected, 1))
+        out.append(variant("one degree less", TRUNCATION, rivals[0], corrected, 1))
     return out
 
 
@@ -94,25 +94,20 @@ def _scalars(
     which is linear in the residual of the fields where all else is quadratic.
     """
     values = [_scalar_values(v) for v in variants]
+    causes = [v.cause for v in variants]
     best = values[0]
     out = {}
     for name in record.SCALARS:
-        parts: dict[str, NDArray[np.float64]] = {}
-        for cause in (FIT, SOLVER, TRUNCATION):
-            deviations = [
-                SCALE[cause] * abs(value[name] - best[name])
-                for value, variant in zip(values, variants, strict=True)
-                if variant.cause == cause
-            ]
-            parts[cause] = np.array(max(deviations, default=0.0))
+        deviation = np.array([abs(value[name] - best[name]) for value in values])
+        parts = [float(error_bars.combined(deviation, causes))]
         if name.endswith("efficiency"):
-            parts["model"] = np.array(model * abs(best[name]))
+            parts.append(model * abs(best[name]))
         if name == "absorption_efficiency":
-            parts["fields"] = np.array(field_error * abs(best[name]))
+            parts.append(field_error * abs(best[name]))
         if name == "single_scattering_albedo":
             albedo = best[name]
-            parts["model"] = np.array((model + field_error) * albedo * (1.0 - albedo))
-        out[name] = (best[name], float(error_bars.combine_half_widths(parts)))
+            parts.append((model + field_error) * albedo * (1.0 - albedo))
+        out[name] = (best[name], math.hypot(*parts))
     return out
 
 
@@ -152,11 +147,8 @@ def _flags(
 
 def meets(case: record.CaseRecord, asked: Asked) -> bool:
     """Whether every error bar is as narrow as asked."""
-    angles = np.arange(0.0, 181.0, 2.0)
-    matrix, half_width = case.scattering_matrix(angles)
-    f11 = matrix[:, 0, 0]
-    relative = half_width / f11[:, None, None]
-    spread = np.sqrt(np.mean(relative**2, axis=0))
+    _, _, ratio = case.scattering_matrix(np.arange(0.0, 181.0, 2.0))
+    spread = np.sqrt(np.mean(ratio**2, axis=0))
     if spread[0, 0] > asked.f11_relative:
         return False
     spread[0, 0] = 0.0
@@ -196,7 +188,6 @@ def combine_levels(
         digest, shape, start, cold_products_estimate, wall_seconds.
     """
     variants = _variants(levels, cells, symmetry, size_parameter)
-    scale = np.array([SCALE.get(v.cause, 0.0) for v in variants])
     best = variants[0]
     fit = fits(cells)[0]
     amplification = float(np.abs(fit.weights).sum())
@@ -205,7 +196,8 @@ def combine_levels(
     # the residual bounds what the energy balance of single levels showed.
     field_error = 0.1 * amplification * max(level.solution.residual for level in levels)
     across = 2.0 / spacing
-    scalars = _scalars(variants, error_bars.cell_model_error(index, across), field_error)
+    model = error_bars.cell_model_error(index, across)
+    scalars = _scalars(variants, model, field_error)
     balance = best.result.extinction_efficiency - (
         best.result.scattering_efficiency + best.absorption
     )
@@ -236,7 +228,8 @@ def combine_levels(
         },
         expansion=_expansions(variants),
         variants=tuple(v.name for v in variants),
-        scale=scale,
+        causes=tuple(v.cause for v in variants),
+        model_error=model,
         **identity,
     )
     flags = _flags(out, asked, levels, spacing * size_parameter)

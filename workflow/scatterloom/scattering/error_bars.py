@@ -1,36 +1,50 @@
 """Half widths (95 %) from the disagreement of variants of the same case.
 
-Each variant redoes the result with one choice changed: another fit over the lattices,
-the amplitudes without their last correction, a wave basis one degree shorter. Deviations
-of fits are rivals for the same error, so the largest counts; different causes are
+Each variant redoes the result with one choice changed: another fit over the lattices, the
+amplitudes without their last correction, a wave basis one degree shorter. Deviations that
+are rival measures of one cause count by the largest; different causes are taken as
 independent and add in squares.
 """
 
 from __future__ import annotations
+
+from collections.abc import Sequence
 
 import numpy as np
 from numpy.typing import NDArray
 
 from scatterloom.scattering.expansion import synthesize
 
-FIT, SOLVER, TRUNCATION = "fit", "solver", "truncation"
+BEST = "best"
+CURVATURE = "curvature"
+LINEAR = "linear part"
+REMAINDER = "remainder"
+SOLVER = "solver"
+TRUNCATION = "truncation"
 
-SCALE = {FIT: 1.5, SOLVER: 2.0, TRUNCATION: 0.5}
-"""Factor on the deviation of a variant of each kind.
+SCALE = {CURVATURE: 1.5, LINEAR: 0.1, REMAINDER: 0.12, SOLVER: 2.0, TRUNCATION: 0.5}
+"""Factor on the deviation of the variants of each cause.
 
-Fits: scored against exact spheres and spheroids (see the validation page). Solver: in-fill
-near a resonance underestimates its error up to twofold (measured). Truncation: leaving out
-the last degree changes more than the degrees never included by a factor of two or more.
+Curvature: other fits in even and cubic powers of the spacing. Linear part: a fit that allows
+for an error linear in the spacing. Remainder: the finest lattice alone, that is, the part of
+the extrapolation step that its law may get wrong. These three were set by comparison with
+exact spheres and spheroids (validation page). Solver: near a resonance the estimate of a
+filled-in size can be half of the error (measured). Truncation: leaving out the last degree
+changes more than all the degrees never included, by a factor of two or more.
 """
 
-CELL_MODEL = 0.15
+CELL_MODEL = 0.04
 """Relative error of efficiencies in units of |(m^2-1)/(m^2+2)| / n, n cells across.
 
-The boundary cells leave a small part of the error linear in the lattice spacing, which fits
-in d^2 cannot see; measured on small spheres and spheroids against exact efficiencies.
+What the shift of the boundary cells leaves of the error linear in the spacing, which fits in
+even powers cannot see; measured on spheres and spheroids against exact efficiencies.
 """
 
-_GRID_STEP_DEG = 1.0
+CELL_MODEL_MATRIX = 0.25
+"""The same for normalized matrix elements, whose errors are smaller, as a share of it."""
+
+GRID_DEG = np.arange(0.0, 180.5, 1.0)
+"""Angles on which deviations are compared [deg]."""
 
 
 def cell_model_error(index: complex, cells_across: float) -> float:
@@ -39,49 +53,81 @@ def cell_model_error(index: complex, cells_across: float) -> float:
     return CELL_MODEL * abs((eps - 1.0) / (eps + 2.0)) / cells_across
 
 
-def combine_half_widths(deviations: dict[str, NDArray[np.float64]]) -> NDArray[np.float64]:
-    """Root of the sum of squares over independent causes."""
-    total = sum(np.square(part) for part in deviations.values())
-    return np.sqrt(np.asarray(total, dtype=np.float64))
+def combined(deviation: NDArray[np.float64], causes: Sequence[str]) -> NDArray[np.float64]:
+    """Half width from the deviations of the variants.
+
+    Parameters
+    ----------
+    deviation : float64 (n_variant, ...)
+        Absolute deviation of each variant from the best estimate.
+    causes : sequence of str
+        Cause of each variant; those called `BEST` do not count.
+
+    Returns
+    -------
+    float64 (...)
+    """
+    squares = np.zeros(deviation.shape[1:])
+    for cause, factor in SCALE.items():
+        rivals = [d for d, c in zip(deviation, causes, strict=True) if c == cause]
+        if rivals:
+            squares = squares + (factor * np.max(rivals, axis=0)) ** 2
+    return np.sqrt(squares)
 
 
 def _envelope(deviation: NDArray[np.float64], reach: int) -> NDArray[np.float64]:
-    """Running maximum over angle: a deviation that crosses zero is not small there by merit."""
-    count = deviation.shape[0]
-    padded = np.pad(deviation, ((reach, reach), (0, 0), (0, 0)), mode="edge")
-    windows = np.lib.stride_tricks.sliding_window_view(padded, 2 * reach + 1, axis=0)
-    return windows.max(axis=-1)[:count]
+    """Running maximum over angle (axis 1): a deviation crossing zero is not small by merit."""
+    padding = [(0, 0), (reach, reach), (0, 0), (0, 0)]
+    padded = np.pad(deviation, padding, mode="edge")
+    windows = np.lib.stride_tricks.sliding_window_view(padded, 2 * reach + 1, axis=1)
+    return windows.max(axis=-1)
 
 
-def matrix_half_width(
-    expansion: NDArray[np.float64], scale: NDArray[np.float64], angles_deg: NDArray[np.float64]
-) -> NDArray[np.float64]:
-    """Half widths of all elements at the given angles.
+def _at(angles_deg: NDArray[np.float64], on_grid: NDArray[np.float64]) -> NDArray[np.float64]:
+    flat = on_grid.reshape(GRID_DEG.size, 16)
+    columns = [np.interp(angles_deg, GRID_DEG, column) for column in flat.T]
+    return np.stack(columns, axis=-1).reshape(len(angles_deg), 4, 4)
+
+
+def matrix_half_widths(
+    expansion: NDArray[np.float64],
+    causes: Sequence[str],
+    model_error: float,
+    angles_deg: NDArray[np.float64],
+) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    """Half widths of all elements, and of all elements over F11.
+
+    The ratio has a bar of its own: deviations of an element and of F11 go together, and a
+    bar put together from those of both would be too wide.
 
     Parameters
     ----------
     expansion : float64 (n_variant, l_max + 1, 4, 4)
         Best estimate first.
-    scale : float64 (n_variant,)
-        Factor on each variant's deviation. Equal factors mark rivals of one cause.
+    causes : sequence of str
+        Cause of each variant.
+    model_error : float
+        Relative error of efficiencies from the cell model.
     angles_deg : float64 (n_angle,) [deg]
 
     Returns
     -------
-    float64 (n_angle, 4, 4)
+    element, ratio : float64 (n_angle, 4, 4)
+        The ratio of F11 to itself has the relative half width of F11 in its place.
     """
-    grid = np.arange(0.0, 180.0 + 0.5 * _GRID_STEP_DEG, _GRID_STEP_DEG)
-    deviation = np.abs(synthesize(expansion[1:] - expansion[:1], grid))
+    matrices = synthesize(expansion, GRID_DEG)
+    f11 = matrices[..., :1, :1]
+    ratios = matrices / f11
+    ratios[..., 0, 0] = matrices[..., 0, 0] / matrices[0, :, 0, 0]
     # The finest structure of degree l_max is 180/l_max degrees wide.
     degree = max(1, expansion.shape[1] - 1)
-    reach = max(1, round(90.0 / degree / _GRID_STEP_DEG))
-    squares = np.zeros((grid.size, 4, 4))
-    for factor in np.unique(scale[1:]):
-        rivals = deviation[scale[1:] == factor]
-        squares += _envelope(factor * rivals.max(axis=0), reach) ** 2
-    half_width = np.sqrt(squares)
-    out = np.empty((len(angles_deg), 4, 4))
-    for i in range(4):
-        for j in range(4):
-            out[:, i, j] = np.interp(angles_deg, grid, half_width[:, i, j])
-    return out
+    reach = max(1, round(90.0 / degree))
+    floor = CELL_MODEL_MATRIX * model_error
+    out = []
+    for values, scale in ((matrices, f11[0]), (ratios, np.ones_like(f11[0]))):
+        deviation = _envelope(np.abs(values - values[:1]), reach)
+        # Elements that symmetry makes zero are exactly zero in every variant.
+        present = np.any(values != 0.0, axis=(0, 1))
+        width = np.hypot(combined(deviation, causes), floor * scale * present)
+        out.append(_at(angles_deg, width))
+    return out[0], out[1]

@@ -14,14 +14,19 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from scatterloom.scattering.error_bars import BEST, CURVATURE, LINEAR, REMAINDER
 from scatterloom.transition.matrix import TransitionMatrix
 
 
 @dataclass(frozen=True)
 class Fit:
-    """Weights of the levels, coarse to fine, whose sum is the value at zero spacing."""
+    """Weights of the levels, coarse to fine, whose sum is the value at zero spacing.
+
+    `cause` says what source of error the deviation of a rival fit measures.
+    """
 
     name: str
+    cause: str
     weights: NDArray[np.float64]
 
 
@@ -42,9 +47,9 @@ def fits(cells_across: Sequence[int]) -> list[Fit]:
     Returns
     -------
     list of Fit
-        Best: d^2 through the two finest levels. Rivals with three levels or more: d^2 by
-        least squares over the last three, and d^2 + d^3 through them. With one level only
-        that level, with two the finest level as the rival.
+        Best: d^2 through the two finest levels. Rivals: the finest level alone; with three
+        levels or more d^2 by least squares over the last three, d^2 + d^3 and d + d^2
+        through them. With one level only that level, and no rival.
 
     Raises
     ------
@@ -56,20 +61,20 @@ def fits(cells_across: Sequence[int]) -> list[Fit]:
         raise ValueError(f"cells across must ascend, found {list(cells_across)}")
     count = len(cells)
 
-    def padded(name: str, part: NDArray[np.float64]) -> Fit:
-        return Fit(name, np.concatenate([np.zeros(count - len(part)), part]))
+    def fit(name: str, cause: str, levels: int, *powers: int) -> Fit:
+        weights = _weights(cells[-levels:], powers)
+        return Fit(name, cause, np.concatenate([np.zeros(count - levels), weights]))
 
     if count == 1:
-        return [padded("single", np.ones(1))]
-    best = padded("d2 through the two finest", _weights(cells[-2:], (2,)))
-    if count == 2:
-        return [best, padded("finest", np.ones(1))]
-    last = cells[-3:]
-    return [
-        best,
-        padded("d2 over three", _weights(last, (2,))),
-        padded("d2 and d3 through three", _weights(last, (2, 3))),
-    ]
+        return [fit("single level", BEST, 1)]
+    out = [fit("d2 through the two finest", BEST, 2, 2), fit("finest level", REMAINDER, 1)]
+    if count > 2:
+        out += [
+            fit("d2 over three", CURVATURE, 3, 2),
+            fit("d2 and d3 through three", CURVATURE, 3, 2, 3),
+            fit("d and d2 through three", LINEAR, 3, 1, 2),
+        ]
+    return out
 
 
 def combine(transitions: Sequence[TransitionMatrix], fit: Fit) -> TransitionMatrix:

@@ -3,13 +3,13 @@
 from __future__ import annotations
 
 import json
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterloom.scattering.error_bars import matrix_half_width
+from scatterloom.scattering.error_bars import BEST, matrix_half_widths
 from scatterloom.scattering.expansion import synthesize
 
 MISSING, SOLVED, SOLVED_WITH_WARNING, FAILED = 0, 1, 2, 3
@@ -79,8 +79,10 @@ class CaseRecord:
         Coefficients of the best estimate, then of the variants that span its error.
     variants : tuple of str
         What each variant is.
-    scale : float64 (n_variant,)
-        Factor on the deviation of each variant (the best estimate's is zero).
+    causes : tuple of str
+        The source of error that each variant measures (`scatterloom.scattering.error_bars`).
+    model_error : float
+        Relative error of efficiencies from the cell model, part of their half widths.
     """
 
     digest: str
@@ -104,12 +106,13 @@ class CaseRecord:
     checks: dict[str, float]
     expansion: NDArray[np.float64]
     variants: tuple[str, ...]
-    scale: NDArray[np.float64] = field(default_factory=lambda: np.zeros(0))
+    causes: tuple[str, ...]
+    model_error: float
 
     def scattering_matrix(
         self, angles_deg: NDArray[np.float64]
-    ) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
-        """Scattering matrix and its half width (95 %) at the given angles.
+    ) -> tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.float64]]:
+        """Scattering matrix and its half widths (95 %) at the given angles.
 
         Parameters
         ----------
@@ -119,9 +122,14 @@ class CaseRecord:
         -------
         matrix, half_width : float64 (n_angle, 4, 4)
             Normalized so that the mean of F11 over all directions is one.
+        ratio_half_width : float64 (n_angle, 4, 4)
+            Of every element over F11; of F11 itself the relative half width.
         """
         matrix = synthesize(self.expansion[0], angles_deg)
-        return matrix, matrix_half_width(self.expansion, self.scale, angles_deg)
+        element, ratio = matrix_half_widths(
+            self.expansion, self.causes, self.model_error, angles_deg
+        )
+        return matrix, element, ratio
 
     def to_arrays(self) -> dict[str, np.ndarray]:
         """Plain arrays that `from_arrays` turns back into the same record."""
@@ -131,14 +139,13 @@ class CaseRecord:
                 "digest", "shape", "size_parameter", "lattice_cells", "n_max", "wave_count",
                 "status", "warning_flags", "products", "cold_products_estimate", "residual",
                 "operator_error", "wall_seconds", "memory_bytes", "start", "scalars", "checks",
-                "variants", "levels",
+                "variants", "causes", "model_error", "levels",
             )
         }  # fmt: skip
         return {
             "header": np.array(json.dumps(header, sort_keys=True)),
             "index": np.array(self.index, dtype=np.complex128),
             "expansion": self.expansion,
-            "scale": self.scale,
         }
 
     @classmethod
@@ -153,11 +160,11 @@ class CaseRecord:
         header = json.loads(str(arrays["header"]))
         header["levels"] = tuple(header["levels"])
         header["variants"] = tuple(header["variants"])
+        header["causes"] = tuple(header["causes"])
         header["scalars"] = {k: (v[0], v[1]) for k, v in header["scalars"].items()}
         return cls(
             index=complex(arrays["index"]),
             expansion=np.asarray(arrays["expansion"]),
-            scale=np.asarray(arrays["scale"]),
             **header,
         )
 
@@ -178,5 +185,5 @@ def failed_record(
         products=0.0, cold_products_estimate=0.0, residual=nan, operator_error=nan,
         wall_seconds=0.0, memory_bytes=0.0, start="cold",
         scalars={name: (nan, nan) for name in SCALARS}, checks={},
-        expansion=np.full((1, 1, 4, 4), nan), variants=("none",), scale=np.zeros(1),
+        expansion=np.full((1, 1, 4, 4), nan), variants=("none",), causes=(BEST,), model_error=nan,
     )  # fmt: skip

@@ -116,5 +116,5 @@ def matrix_block(
     for position, record in cells:
         if record is None or record.status == schema.FAILED:
             continue
-        matrix[position], half_width[position] = record.scattering_matrix(angles_deg)
+        matrix[position], half_width[position], _ = record.scattering_matrix(angles_deg)
     return matrix, half_width

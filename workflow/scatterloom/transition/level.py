@@ -87,7 +87,7 @@ def solve_level(
     progress : callable(error, residual), optional
     """
     kd = size_parameter * lattice.spacing
-    tensors = cell_tensors(lattice.fill, lattice.normal, index, kd)
+    tensors = cell_tensors(lattice.fill, lattice.normal, index, kd, lattice.area)
     matrix = LatticeMatrix(lattice, tensors, kd, dtype, threads)
     incident = incident_block(lattice, matrix, size_parameter, wave_basis(n_max))
     first = None if start is None else start(incident.norms)
