@@ -6,12 +6,6 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.integrate import lebedev_rule
-
-_NEGATIVE_WEIGHTS = {13, 25, 27}
-_LEBEDEV_DEGREES = (
-    *range(3, 32, 2), 35, 41, 47, 53, 59, 65, 71, 77, 83, 89, 95, 101, 107, 113, 119, 125, 131
-)  # fmt: skip
 
 
 @dataclass(frozen=True)
@@ -32,40 +26,48 @@ class IncidenceNodes:
     weight: NDArray[np.float64]
     mirrored: bool
 
+    def batches(self, count: int) -> list[IncidenceNodes]:
+        """The same nodes in `count` parts, or one node each if there are fewer."""
+        size = self.weight.size
+        return [
+            IncidenceNodes(self.beta[part], self.phi[part], self.weight[part], self.mirrored)
+            for part in np.array_split(np.arange(size), min(count, size))
+        ]
+
 
 def incidence_nodes(symmetry: str, n_max: int) -> IncidenceNodes:
     """Nodes exact for a transition matrix truncated at degree `n_max`.
 
-    Averaged over rotation about the beam, the scattering matrix is a spherical
-    polynomial of degree 2 n_max in the direction of incidence. Symmetry of the
-    transition matrix restricts the nodes: one for spheres, Gauss-Legendre nodes on a
-    half meridian for axial symmetry with an equatorial mirror plane, one octant of a
-    Lebedev rule (Lebedev & Laikov 1999) for three mirror planes.
+    A product of two amplitudes is a spherical polynomial of degree 2 n_max in the
+    direction of incidence and another one in that of scattering; averaged over rotation
+    about the beam, both depend on the direction of incidence alone, so the scattering
+    matrix has degree 4 n_max there. Gauss-Legendre nodes in the polar angle and evenly
+    spaced azimuths integrate it exactly, restricted by the symmetry of the transition
+    matrix: one node for spheres, half a meridian for axial symmetry with an equatorial
+    mirror plane, one octant for three mirror planes, the whole sphere for none.
 
     Raises
     ------
     ValueError
-        If the symmetry is unknown or no Lebedev rule is high enough.
+        If the symmetry is unknown.
     """
     if symmetry == "sphere":
         one = np.ones(1)
         return IncidenceNodes(0.3 * one, 0.0 * one, one, True)
-    if symmetry == "axial":
-        node, weight = np.polynomial.legendre.leggauss(2 * ((n_max + 2) // 2))
-        half = node > 0.0
-        return IncidenceNodes(np.arccos(node[half]), np.zeros(half.sum()), weight[half], True)
-    if symmetry not in ("mirrors", "none"):
+    if symmetry not in ("axial", "mirrors", "none"):
         raise ValueError(f"unknown symmetry {symmetry!r}; known: sphere, axial, mirrors, none")
-    high_enough = [d for d in _LEBEDEV_DEGREES if d >= 2 * n_max and d not in _NEGATIVE_WEIGHTS]
-    if not high_enough:
-        raise ValueError(f"no Lebedev rule for truncation n_max = {n_max}, largest is 65")
-    point, weight = lebedev_rule(high_enough[0])
-    x, y, z = point
-    weight = weight / weight.sum()
-    if symmetry == "mirrors":
-        tiny = 1e-12
-        keep = (x > -tiny) & (y > -tiny) & (z > -tiny)
-        images = 2 ** ((x > tiny).astype(int) + (y > tiny) + (z > tiny))
-        x, y, z, weight = x[keep], y[keep], z[keep], (weight * images)[keep]
-    beta = np.arctan2(np.hypot(x, y), z)
-    return IncidenceNodes(beta, np.arctan2(y, x), weight, symmetry == "mirrors")
+    cosine, weight = np.polynomial.legendre.leggauss(2 * n_max + 2)
+    mirrored = symmetry != "none"
+    if mirrored:
+        upper = cosine > 0.0
+        cosine, weight = cosine[upper], 2.0 * weight[upper]
+    # Harmonics up to 4 n_max, with two mirror planes through the axis only even ones.
+    count, span = {
+        "axial": (1, 0.0),
+        "mirrors": (n_max + 1, 0.5 * np.pi),
+        "none": (4 * n_max + 2, 2.0 * np.pi),
+    }[symmetry]
+    azimuth = (np.arange(count) + 0.5) * span / count
+    beta, phi = np.meshgrid(np.arccos(cosine), azimuth, indexing="ij")
+    weights = np.repeat(weight / (2.0 * count), count)
+    return IncidenceNodes(beta.ravel(), phi.ravel(), weights, mirrored)

@@ -9,6 +9,9 @@ from scatterloom.orientation.nodes import IncidenceNodes, incidence_nodes
 from scatterloom.transition.matrix import TransitionMatrix
 from scatterloom.waves.angular import axial_plane_wave, polar_functions, wigner_d
 
+_MOST_SAMPLES = 4_000_000
+"""Complex amplitudes held at a time (64 MB, and a few copies)."""
+
 
 def _scattered_in_beam_frame(
     transition: TransitionMatrix, nodes: IncidenceNodes
@@ -86,7 +89,7 @@ def _coherency(
     linear = np.stack([plus + minus, 1j * (plus - minus)], axis=-1) / np.sqrt(2.0)
     # (mu, angle, scattered, node, incident) -> per angle a tall matrix of samples
     sample = np.moveaxis(linear, 1, 0) * np.sqrt(nodes.weight)[:, None]
-    sample = np.ascontiguousarray(np.moveaxis(sample, 2, 3)).transpose(0, 1, 2, 4, 3)
+    sample = np.ascontiguousarray(np.moveaxis(sample, 2, 3))
     sample = sample.reshape(n_angle, (2 * n_max + 3) * n_node, 4)
     product = np.einsum("asx,asy->axy", sample, sample.conj(), optimize=True)
     return product.reshape(n_angle, 2, 2, 2, 2)
@@ -153,7 +156,11 @@ def random_orientation(
         average is exact for the truncation of the transition matrix.
     """
     nodes = incidence_nodes(symmetry, transition.n_max)
-    matrix = mueller_from_products(_coherency(transition, nodes, np.asarray(cosine)))
+    at = np.asarray(cosine, dtype=np.float64)
+    samples = (2 * transition.n_max + 3) * at.size * 4
+    batches = -(-samples * nodes.weight.size // _MOST_SAMPLES)
+    product = sum(_coherency(transition, part, at) for part in nodes.batches(batches))
+    matrix = mueller_from_products(np.asarray(product))
     if nodes.mirrored:
         matrix[:, :2, 2:] = 0.0
         matrix[:, 2:, :2] = 0.0

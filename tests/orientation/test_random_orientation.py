@@ -1,0 +1,164 @@
+"""Random orientation against exact spheres and spheroids, and against dense dipoles."""
+
+from functools import lru_cache
+
+import numpy as np
+import pytest
+
+from lattice_kit import full_root, random_lattice
+from oracles import axial, mie
+from oracles.dense import DenseLattice
+from oracles.mueller import mueller
+from scatterloom.orientation.nodes import incidence_nodes
+from scatterloom.orientation.random import mueller_from_products, random_orientation
+from scatterloom.transition.level import solve_level
+from scatterloom.transition.matrix import efficiencies
+from transition_kit import exact_axial, exact_sphere, exact_spheroid, rotated
+
+ANGLES = np.array([0.0, 0.5, 10.0, 37.0, 60.0, 90.0, 123.4, 150.0, 179.0, 180.0])
+COSINE = np.cos(np.radians(ANGLES))
+
+
+def normalized(matrix, transition, x):
+    """Mean F11 of 1 over the sphere, by the scattering efficiency from T."""
+    _, scattering = efficiencies(transition, x)
+    return matrix * 4.0 / (x**2 * scattering)
+
+
+@pytest.mark.parametrize("index", [1.33, 1.5 + 0.01j, 1.75 + 0.44j])
+@pytest.mark.parametrize("x", [0.2, 1.0, 4.0])
+def test_spheres(index, x):
+    exact = mie.sphere(index, x, n_max=14).scattering_matrix(ANGLES)
+    transition = exact_sphere(index, x, 14)
+    for symmetry in ("sphere", "axial"):
+        found = normalized(random_orientation(transition, symmetry, COSINE), transition, x)
+        np.testing.assert_allclose(found, exact, atol=1e-10 * exact[:, 0, 0].max())
+
+
+def test_unnormalized_matrix_is_the_differential_cross_section():
+    # k^2 dC/dOmega = (|S1|^2 + |S2|^2)/2 (Bohren & Huffman 1983, eq. 4.77)
+    transition = exact_sphere(1.5 + 0.01j, 2.0, 12)
+    s1, s2 = mie.sphere(1.5 + 0.01j, 2.0, n_max=12).amplitudes(ANGLES)
+    found = random_orientation(transition, "sphere", COSINE)
+    np.testing.assert_allclose(found[:, 0, 0], (abs(s1) ** 2 + abs(s2) ** 2) / 2, rtol=1e-10)
+
+
+SPHEROIDS = [(2.0, 1.5 + 0.01j, 1.5), (0.5, 1.5 + 0.01j, 1.5), (1.5, 1.6 + 0.2j, 2.0)]
+
+
+@lru_cache(maxsize=8)
+def expected(case):
+    return axial.random_orientation(exact_axial(*case))
+
+
+@pytest.mark.parametrize("case", SPHEROIDS, ids=str)
+def test_spheroids(case):
+    transition = exact_spheroid(*case)
+    exact = expected(case).scattering_matrix(ANGLES)
+    # the oracle leaves out elements of T below 1e-10
+    found = normalized(random_orientation(transition, "axial", COSINE), transition, case[2])
+    np.testing.assert_allclose(found, exact, atol=1e-9)
+    assert not found[:, :2, 2:].any() and not found[:, 2:, :2].any()
+
+
+@pytest.mark.parametrize("symmetry", ["mirrors", "none"])
+def test_more_general_rules_give_the_same(symmetry):
+    case = SPHEROIDS[0]
+    transition = exact_spheroid(*case, 7)
+    special = random_orientation(transition, "axial", COSINE)
+    general = random_orientation(transition, symmetry, COSINE)
+    # all sixteen elements, those that vanish too; both averages are exact, the integrand
+    # being of degree 28 (rules of half that degree err by 2e-7 here)
+    np.testing.assert_allclose(general, special, atol=1e-12 * special.max())
+
+
+def test_rotating_the_particle_changes_nothing():
+    case = SPHEROIDS[1]
+    transition = exact_spheroid(*case, 7)
+    special = random_orientation(transition, "axial", COSINE)
+    turned = rotated(transition, 0.7, 1.1, -0.4)
+    assert np.abs(turned.matrix - transition.matrix).max() > 0.05
+    general = random_orientation(turned, "none", COSINE)
+    np.testing.assert_allclose(general, special, atol=1e-12 * special.max())
+
+
+@pytest.mark.parametrize("mirrors", [(False, False, False), (True, True, True)])
+def test_lattice_of_any_form_against_dense_plane_waves(mirrors):
+    # The averages of plane-wave solutions, incidence by incidence, far fields summed over
+    # the cells, with no waves, no T and no projection on the other side. A random heap of
+    # cells has no symmetry: all sixteen elements are at work.
+    box = (4, 3, 5) if not mirrors[0] else (4, 4, 4)
+    cells = random_lattice(box, mirrors, seed=6)
+    index, x = 1.7 + 0.1j, 1.6
+    kd = x * cells.spacing
+    level = solve_level(cells, index, x, 8, 1e-9, dtype=np.complex128)
+    assert level.solution.converged
+    root = full_root(cells, index, kd)
+    dense = DenseLattice(x * cells.centre(), root @ root, 1.0, kd, radius=x)
+    exact = dense.random_orientation(ANGLES[1:-1], degree=15, azimuths=16)
+    extinction, _ = efficiencies(level.transition, x)
+    # rules of the oracle exact to degree 15, waves of degree 8 for a reach of 1.4
+    assert extinction == pytest.approx(exact["extinction_efficiency"], rel=1e-7)
+    assert level.absorption_efficiency == pytest.approx(exact["absorption_efficiency"], rel=1e-5)
+    matrix = random_orientation(level.transition, "mirrors" if mirrors[0] else "none", COSINE)
+    matrix = normalized(matrix, level.transition, x)[1:-1]
+    np.testing.assert_allclose(matrix, exact["scattering_matrix"], atol=1e-6)
+    beside = exact["scattering_matrix"][:, :2, 2:]
+    # the heap without mirror planes is handed
+    assert (np.abs(beside).max() > 1e-4) == (not mirrors[0])
+
+
+def test_mueller_matrix_of_random_amplitudes():
+    rng = np.random.default_rng(5)
+    amplitudes = rng.normal(size=(6, 2, 2)) + 1j * rng.normal(size=(6, 2, 2))
+    products = np.einsum("apq,ars->apqrs", amplitudes, amplitudes.conj())
+    s2, s3, s4, s1 = (amplitudes[:, p, q] for p, q in ((0, 0), (0, 1), (1, 0), (1, 1)))
+    np.testing.assert_allclose(mueller_from_products(products), mueller(s1, s2, s3, s4), atol=1e-14)
+
+
+@pytest.mark.parametrize("symmetry", ["sphere", "axial", "mirrors", "none"])
+@pytest.mark.parametrize("n_max", [1, 2, 5, 6])
+def test_nodes_average_polynomials_of_four_times_the_degree(symmetry, n_max):
+    # Moments of a uniform direction: <z^2p> = 1/(2p+1), and <x^2 y^2 z^2> = 1/105.
+    nodes = incidence_nodes(symmetry, n_max)
+    assert nodes.weight.sum() == pytest.approx(1.0, rel=1e-13)
+    assert np.all(nodes.weight > 0)
+    assert nodes.mirrored == (symmetry != "none")
+    if symmetry == "sphere":
+        return
+    z = np.cos(nodes.beta)
+    for p in range(2 * n_max + 1):
+        assert nodes.weight @ z ** (2 * p) == pytest.approx(1 / (2 * p + 1), rel=1e-12)
+    if symmetry == "none":
+        assert nodes.weight @ z == pytest.approx(0.0, abs=1e-14)
+    if symmetry in ("mirrors", "none"):
+        x, y = np.sin(nodes.beta) * np.cos(nodes.phi), np.sin(nodes.beta) * np.sin(nodes.phi)
+        for axis in (x, y):
+            assert nodes.weight @ axis ** (2 * n_max) == pytest.approx(
+                1 / (2 * n_max + 1), rel=1e-12
+            )
+        if n_max >= 2:
+            assert nodes.weight @ (x * y * z) ** 2 == pytest.approx(1 / 105, rel=1e-12)
+        if symmetry == "mirrors":
+            assert min(x.min(), y.min(), z.min()) > -1e-12
+
+
+def test_unknown_symmetry_is_refused():
+    with pytest.raises(ValueError, match="unknown symmetry 'cube'"):
+        incidence_nodes("cube", 3)
+
+
+@pytest.mark.parametrize("symmetry", ["axial", "mirrors", "none"])
+def test_nodes_in_parts_are_the_same_nodes(symmetry, monkeypatch):
+    nodes = incidence_nodes(symmetry, 3)
+    for count in (1, 3, 1000):
+        parts = nodes.batches(count)
+        assert len(parts) == min(count, len(nodes.weight))
+        for name in ("beta", "phi", "weight"):
+            joined = np.concatenate([getattr(part, name) for part in parts])
+            np.testing.assert_array_equal(joined, getattr(nodes, name))
+    transition = exact_spheroid(*SPHEROIDS[0], 5)
+    whole = random_orientation(transition, symmetry, COSINE)
+    monkeypatch.setattr("scatterloom.orientation.random._MOST_SAMPLES", 2000)
+    parts = random_orientation(transition, symmetry, COSINE)
+    np.testing.assert_allclose(parts, whole, atol=1e-13 * whole.max())
