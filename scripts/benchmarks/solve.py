@@ -130,7 +130,7 @@ def _ours(
         cold_products_estimate=0.0,
         wall_seconds=0.0,
     )
-    matrix, _ = record.scattering_matrix(ANGLES_DEG)
+    matrix, _, _ = record.scattering_matrix(ANGLES_DEG)
     return {
         "way": way,
         "cells_across": "+".join(str(n) for n in cells),
@@ -147,7 +147,7 @@ def run(threads: int) -> Result:
     """Solve the case three ways and compare each with the exact solution."""
     shape = from_spec(SHAPE)
     exact = random_orientation(spheroid(RATIO, INDEX, SIZE_PARAMETER))
-    cells = effort.levels(shape.circumscribed_radius, INDEX, SIZE_PARAMETER, ASKED.f11_relative)
+    cells = effort.levels(tuple(shape.half_axes), INDEX, SIZE_PARAMETER, ASKED.f11_relative)
     lattices = [lattice(shape, n) for n in cells]
     step = effort.anchor_step(INDEX, SIZE_PARAMETER)
     warm_up = solve_case(shape, lattices[:1], INDEX, SIZE_PARAMETER, (), threads)

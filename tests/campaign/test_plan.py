@@ -24,13 +24,13 @@ FINE = (
 def fixed_effort(monkeypatch):
     """Rules of effort of the tests' own: tuning the real ones must not change what is tested."""
 
-    def levels(radius, index, x, f11_relative=0.02):
-        return (12, 16, 24) if x * radius < 5.0 else (16, 24, 32)
+    def levels(axes, index, x, f11_relative=0.02):
+        return (12, 16, 24) if x * max(axes) < 5.0 else (16, 24, 32)
 
     monkeypatch.setattr(effort, "levels", levels)
     monkeypatch.setattr(effort, "anchor_step", lambda index, x: 0.3)
     monkeypatch.setattr(effort, "operator_tolerance", lambda ratio_absolute: 1e-4)
-    monkeypatch.setattr(effort, "cost", lambda radius, index, x, cold: 4.0 if cold else 1.0)
+    monkeypatch.setattr(effort, "cost", lambda axes, index, x, cold: 4.0 if cold else 1.0)
 
 
 @pytest.fixture
@@ -108,8 +108,9 @@ def test_ladders_merge_wavelengths(grid_of):
 
 def test_segments_have_equal_levels(grid_of):
     for job in plan(grid_of(*FINE)):
-        radius = 2.0 ** (1 / 3) if job.shape["kind"] == "spheroid" else 1.0
-        assert {effort.levels(radius, job.index, x) for _, x in job.cases} == {job.levels}
+        a = 2.0 ** (1 / 3)
+        axes = (a, a, a / 2) if job.shape["kind"] == "spheroid" else (1.0, 1.0, 1.0)
+        assert {effort.levels(axes, job.index, x) for _, x in job.cases} == {job.levels}
 
 
 def test_overrides(grid_of):

@@ -17,7 +17,7 @@ from typing import Any, TypeVar
 from scatterloom.campaign import effort
 from scatterloom.campaign.case import Accuracy, Case, canonical_json
 from scatterloom.campaign.expand import Grid
-from scatterloom.campaign.geometry import circumscribed_radius
+from scatterloom.campaign.geometry import half_axes
 from scatterloom.errors import BadInput
 
 MOST_JOBS = 10_000
@@ -123,11 +123,11 @@ def _ladders(grid: Grid) -> list[list[Case]]:
 
 
 def _segments(ladder: Sequence[Case], grid: Grid) -> Iterator[_Segment]:
-    radius = circumscribed_radius(ladder[0].shape)
+    axes = half_axes(ladder[0].shape)
     run: list[_Size] = []
     current: tuple[int, ...] = ()
     for case in ladder:
-        levels, size = _predict(case, radius)
+        levels, size = _predict(case, axes)
         if run and levels != current:
             yield _segment(ladder[0], current, run, grid)
             run = []
@@ -136,14 +136,14 @@ def _segments(ladder: Sequence[Case], grid: Grid) -> Iterator[_Segment]:
     yield _segment(ladder[0], current, run, grid)
 
 
-def _predict(case: Case, radius: float) -> tuple[tuple[int, ...], _Size]:
+def _predict(case: Case, axes: Sequence[float]) -> tuple[tuple[int, ...], _Size]:
     x, index = case.size_parameter, case.index
-    chosen = effort.levels(radius, index, x, case.accuracy.f11_relative)
+    chosen = effort.levels(axes, index, x, case.accuracy.f11_relative)
     levels = case.overrides.levels or chosen
     # The prediction is for the chosen levels; cost is proportional to the number of cells.
     scale = sum(n**3 for n in levels) / sum(n**3 for n in chosen)
-    cold = scale * effort.cost(radius, index, x, cold=True)
-    warm = scale * effort.cost(radius, index, x, cold=False)
+    cold = scale * effort.cost(axes, index, x, cold=True)
+    warm = scale * effort.cost(axes, index, x, cold=False)
     return levels, _Size(case.digest, x, cold, warm)
 
 
