@@ -1,11 +1,13 @@
 """The documents say what is there: links, commands, variables, flags; and the rooms keep order."""
 
 import ast
+import json
 import re
 import tomllib
 from functools import lru_cache
 from pathlib import Path
 
+import numpy as np
 import pytest
 from ruamel.yaml import YAML
 
@@ -179,6 +181,55 @@ def test_licences_of_all_direct_dependencies_are_listed():
     for requirement in needed:
         name = re.match(r"[\w.-]+", requirement).group().replace(".", "-").lower()
         assert f"| {name} |" in page, name
+
+
+def benchmark(name):
+    """Rows of a benchmark as it was last measured."""
+    return json.loads(text_of(ROOT / f"workflow/docs/benchmarks/{name}.json"))["rows"]
+
+
+def signed(value, digits):
+    return f"{value:.{digits}f}".replace("-", "\N{MINUS SIGN}")
+
+
+def test_figures_quoted_are_those_last_measured():
+    readme = text_of(ROOT / "README.md")
+    cold, infill, textbook = benchmark("solve")
+    assert [row["way"] for row in (cold, infill, textbook)] == ["cold block", "in-fill", "textbook"]
+    qext, rms, ratio = (
+        signed(cold["Qext_error_percent"], 2) + " %",
+        f"{cold['F11_rms_percent']:.2f} %",
+        f"{cold['worst_ratio_error']:.3f}",
+    )
+    assert f"| extinction efficiency | {qext} |" in readme
+    assert f"| F11, root mean square over angle | {rms} |" in readme
+    assert f"| any ratio Fij/F11, worst angle | {ratio} |" in readme
+    lattices = cold["cells_across"].replace("+", ", ")
+    validation = text_of(ROOT / "workflow/docs/validation.md")
+    assert f"| {lattices} | {qext} | {rms} | {ratio} |" in validation
+    for row in (cold, infill):
+        line = f"| {row['packed_products']}, each serving 8 waves | {row['seconds_solving']:.2f} |"
+        assert f"{line} {row['F11_rms_percent']:.2f} % |" in readme
+    line = f"| {textbook['packed_products']} | {textbook['seconds_solving']:.1f} |"
+    assert f"{line} {textbook['F11_rms_percent']:.1f} % |" in readme
+
+
+def test_figures_quoted_of_transforms_are_those_last_measured():
+    page = " ".join(text_of(ROOT / "workflow/docs/transforms.md").split())
+    gain = {
+        kind: np.median(
+            [
+                r["scipy / ducc0, in place"]
+                for r in benchmark("transforms")
+                if r["precision"] == kind
+            ]
+        )
+        for kind in ("complex64", "complex128")
+    }
+    assert f"by a factor of {gain['complex64']:.1f} in single precision" in page
+    assert f"and {gain['complex128']:.1f} in double precision" in page
+    share = [row["ours / bare transforms"] for row in benchmark("product")]
+    assert f"takes {min(share):.1f} to {max(share):.1f} times the time of its bare" in page
 
 
 SOURCES = sorted(PACKAGE.rglob("*.py"))

@@ -55,7 +55,7 @@ def run(threads: int) -> Result:
     for cells in CELLS:
         grid = lattice(shape, cells)
         kd = SIZE_PARAMETER * grid.spacing
-        tensors = cell_tensors(grid.fill, grid.normal, INDEX, kd)
+        tensors = cell_tensors(grid.fill, grid.normal, INDEX, kd, grid.area)
         matrix = LatticeMatrix(grid, tensors, kd, threads=threads)
         size = (matrix.n_class, PACKED, 3, matrix.n_cell)
         waves = (random.standard_normal(size) + 1j * random.standard_normal(size)).astype(
