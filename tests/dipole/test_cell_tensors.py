@@ -6,7 +6,7 @@ import pytest
 from lattice_kit import root_of
 from oracles import dense
 from scatterloom.dipole.kernel import radial_parts
-from scatterloom.dipole.polarizability import cell_tensors, self_term
+from scatterloom.dipole.polarizability import boundary_shift, cell_tensors, self_term
 
 INDICES = [1.33, 1.5 + 0.01j, 2.0 + 0.5j, 0.8 + 0.3j]
 
@@ -122,3 +122,64 @@ def test_negative_permittivity_falls_back_to_the_arithmetic_mean():
     root = as_matrices(cells.root)
     alpha = dense.cell_polarizability(eps, 1.0, kd)
     np.testing.assert_allclose(root @ root, alpha, atol=1e-13 * np.abs(alpha).max())
+
+
+def test_the_interface_shift_changes_the_fill_of_cut_cells():
+    # A shift h of the interface adds the volume h times its area; here with the fill of the
+    # mean along the normal and of the one across it shifted each by its own h.
+    fill, normal = some_cells()
+    area = np.where(fill < 1.0, 0.9, 0.0)
+    index, kd = 1.6, 0.3
+    along, across = boundary_shift(normal, index**2)
+    shifted = as_matrices(cell_tensors(fill, normal, index, kd, area).root)
+    parts = [
+        dense.cell_polarizability(
+            dense.cell_permittivity((fill + area * shift).real, normal, index**2), 1.0, kd
+        )
+        for shift in (along, across)
+    ]
+    dyad = normal[:, :, None] * normal[:, None, :]
+    alpha = dyad @ parts[0] + (np.eye(3) - dyad) @ parts[1]
+    np.testing.assert_allclose(shifted @ shifted, alpha, atol=1e-13 * np.abs(alpha).max())
+    # full cells and interfaces without area keep their fill
+    plain = cell_tensors(fill, normal, index, kd)
+    none = cell_tensors(fill, normal, index, kd, np.zeros_like(area))
+    np.testing.assert_array_equal(none.root, plain.root)
+    np.testing.assert_array_equal(
+        cell_tensors(fill, normal, index, kd, area).root[-2:], plain.root[-2:]
+    )
+    assert np.all(np.abs(shifted[:-2] - as_matrices(plain.root)[:-2]).max(axis=(1, 2)) > 0)
+
+
+def test_the_interface_shift_keeps_energy():
+    # A complex shift makes a complex fill: the loss must be that of the shifted cell.
+    fill, normal = some_cells()
+    area = np.where(fill < 1.0, 1.0, 0.0)
+    index, kd = 1.5 + 0.2j, 0.3
+    cells = cell_tensors(fill, normal, index, kd, area)
+    rng = np.random.default_rng(6)
+    x = rng.normal(size=(len(fill), 3)) + 1j * rng.normal(size=(len(fill), 3))
+    root = as_matrices(cells.root)
+    moment = np.einsum("nij,nj->ni", root, x)
+    # E = (V chi)^-1 P = (alpha^-1 + g0/V) P
+    inverse = np.linalg.inv(root @ root) + self_term(kd) / kd**3 * np.eye(3)
+    field = np.einsum("nij,nj->ni", inverse, moment)
+    power = np.sum(moment * field.conj(), axis=1).imag
+    found = np.einsum("ni,nij,nj->n", x.conj(), as_matrices(cells.loss), x)
+    np.testing.assert_allclose(found, power, rtol=1e-9)
+    assert not cell_tensors(fill, normal, 1.6, kd, area).loss.any()
+
+
+def test_no_shift_without_contrast_or_with_negative_permittivity():
+    fill, normal = some_cells()
+    along, across = boundary_shift(normal, 1.0 + 0.0j)
+    assert not along.any() and across == 0.0
+    # interfaces parallel to the lattice planes are not shifted along the normal
+    along, _ = boundary_shift(np.eye(3), 2.25)
+    np.testing.assert_allclose(along, 0.0, atol=1e-15)
+    area = np.ones_like(fill)
+    metal = 0.2 + 3.0j
+    np.testing.assert_array_equal(
+        cell_tensors(fill, normal, metal, 0.2, area).root,
+        cell_tensors(fill, normal, metal, 0.2).root,
+    )
