@@ -54,7 +54,7 @@ def solve_case(
                 grid,
                 index,
                 x,
-                effort.n_max(x * shape.circumscribed_radius),
+                effort.n_max(tuple(shape.half_axes), x),
                 effort.operator_tolerance(ASKED.ratio_absolute),
                 start=interpolated_start(neighbours, x) if neighbours else None,
                 threads=threads,

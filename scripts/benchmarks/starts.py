@@ -35,7 +35,7 @@ def run(threads: int) -> Result:
     rows: list[dict[str, Any]] = []
     for index in INDICES:
         for x in SIZES:
-            n_max = effort.n_max(x * shape.circumscribed_radius)
+            n_max = effort.n_max(tuple(shape.half_axes), x)
 
             def solve(
                 size: float,

@@ -44,9 +44,13 @@ def test_cells_resolve_the_wave_inside():
 
 
 def test_truncation_grows():
-    orders = [effort.n_max(reach) for reach in (0.1, 1.0, 3.0, 10.0)]
-    assert orders == sorted(orders)
-    assert all(order > reach for order, reach in zip(orders, (0.1, 1, 3, 10), strict=True))
+    ball, plate = (1.0, 1.0, 1.0), (1.26, 1.26, 0.63)
+    for axes in (ball, plate):
+        orders = [effort.n_max(axes, x) for x in (0.1, 1.0, 3.0, 10.0)]
+        assert orders == sorted(orders) and orders[0] >= 2
+        assert all(n > x for n, x in zip(orders, (0.1, 1, 3, 10), strict=True))
+    assert effort.n_max(plate, 3.0) > effort.n_max(ball, 3.0)
+    assert effort.n_max(ball, 3.0, f11_relative=0.002) > effort.n_max(ball, 3.0)
 
 
 def test_anchors_are_denser_for_strong_refraction():

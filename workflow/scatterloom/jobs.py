@@ -244,7 +244,8 @@ def solve_case(
 ) -> tuple[CaseRecord, list[LevelResult]]:
     """Solve one case on all its lattice levels; the truncation is raised until it is confirmed."""
     begun = time.perf_counter()
-    n_max = effort.n_max(x * task.shape.circumscribed_radius)
+    half_axes = tuple(float(a) for a in task.shape.half_axes)
+    n_max = effort.n_max(half_axes, x, task.asked.f11_relative)
     truncation = record.FLAGS["truncation"][0]
     for attempt in range(3):
         levels = _solve_levels(task, x, n_max, anchors, report)

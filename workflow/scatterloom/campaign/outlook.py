@@ -8,7 +8,7 @@ from dataclasses import dataclass
 
 from scatterloom.campaign import effort
 from scatterloom.campaign.expand import Grid
-from scatterloom.campaign.geometry import circumscribed_radius
+from scatterloom.campaign.geometry import half_axes
 from scatterloom.campaign.plan import Job
 
 _COMPLEX64_BYTES = 8
@@ -48,17 +48,22 @@ def outlook(grid: Grid, jobs: Sequence[Job]) -> Outlook:
 
 
 def job_bytes(job: Job) -> int:
-    """Return the predicted memory of a job [bytes].
+    """Return the predicted memory of a job [bytes], beside that of the program itself.
 
-    Counted are the block of fields of the largest case on its finest lattice and the block
-    of products with it, three components in every filled cell for every wave, and for a
-    span the fields of the anchors around it, all in single precision.
+    Counted are, on the finest lattice and in single precision: the incident block, the
+    fields and residuals, search directions and their images (about two of each for every
+    wave), one octant of cells standing for all; the kernel and the padded grids of one
+    product; and for a span the fields of the anchors on all lattices.
     """
-    radius = circumscribed_radius(job.shape)
-    reach = radius * max(x for _, x in job.cases)
-    order = effort.n_max(reach)
+    axes = half_axes(job.shape)
+    order = effort.n_max(axes, max(x for _, x in job.cases), job.accuracy.f11_relative)
     waves = 2 * order * (order + 2)
-    spacing = 2.0 * radius / max(job.levels)
+    finest = max(job.levels)
+    spacing = 2.0 * max(axes) / finest
     filled = 4.0 * math.pi / 3.0 / spacing**3
-    blocks = 2 + (len(job.anchors) if job.kind == "span" else 0)
-    return round(blocks * 3.0 * filled * waves * _COMPLEX64_BYTES)
+    fields = 3.0 * filled / 8.0 * waves
+    box = math.prod(2.0 * axis / spacing + 1.0 for axis in axes)
+    blocks = 7.0
+    if job.kind == "span":
+        blocks += len(job.anchors) * sum((n / finest) ** 3 for n in job.levels)
+    return round((blocks * fields + 6.0 * box + 8 * 3 * 2.0 * box) * _COMPLEX64_BYTES)
