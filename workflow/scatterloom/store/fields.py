@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import zipfile
+import zlib
 from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
@@ -15,6 +16,19 @@ from scatterloom.solve.start import StoredFields
 from scatterloom.store.atomic import atomic_write
 
 FORMAT_VERSION = 1
+
+# What a damaged archive may raise: a changed bit can also ask for encryption (RuntimeError)
+# or for an unknown compression (NotImplementedError, a RuntimeError).
+_NOT_FIELDS = (
+    OSError,
+    ValueError,
+    KeyError,
+    EOFError,
+    TypeError,
+    RuntimeError,
+    zipfile.BadZipFile,
+    zlib.error,
+)
 
 
 @dataclass(frozen=True)
@@ -99,5 +113,5 @@ def read_fields(path: Path) -> list[FieldFile]:
             ]
     except FileNotFoundError:
         raise IntegrityError(f"{path}: the file is missing") from None
-    except (OSError, ValueError, KeyError, EOFError, zipfile.BadZipFile, TypeError) as error:
+    except _NOT_FIELDS as error:
         raise IntegrityError(f"{path}: not a whole file of fields ({error})") from None
