@@ -133,14 +133,18 @@ def test_spheroid(solved, which):
 
 
 def test_bars_hold_over_all_spheroids(solved):
-    inside = []
+    inside, scalars = [], []
     for which, rows in MATRICES.items():
         ratio, index, _ = which
         case = solved[str({"kind": "spheroid", "equatorial_to_polar": ratio}), index, which[2]]
         angles = np.array([float(r["angle_deg"]) for r in rows])
         exact = {name: np.array([float(r[name]) for r in rows]) for name in ("F11", *RATIOS)}
         inside.append(check_matrix(case, angles, exact))
+        for name, column in (("extinction_efficiency", "Qext"), ("scattering_efficiency", "Qsca")):
+            value, width = case.scalars[name]
+            scalars.append(abs(value - float(EFFICIENCIES[which][column])) <= width)
     assert np.mean(np.concatenate(inside)) > 0.9
+    assert np.mean(scalars) > 0.9
 
 
 @pytest.mark.parametrize("shape", [SPHERE, OBLATE, PROLATE, TRIAXIAL], ids=str)
