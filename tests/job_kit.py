@@ -28,6 +28,7 @@ def job(
     levels: tuple[int, ...],
     anchors: Job | tuple[Job, ...] = (),
     tolerance: float = 1e-4,
+    refinements: int = 0,
 ) -> Job:
     """An anchors job, or a span job that starts from the cases of anchors jobs."""
     sources = (anchors,) if isinstance(anchors, Job) else anchors
@@ -39,6 +40,7 @@ def job(
         index=complex(index),
         accuracy=ACCURACY,
         levels=tuple(levels),
+        refinements=refinements,
         tolerance=tolerance,
         cases=tuple((digest_of(shape, complex(index), x, tuple(levels)), x) for x in sizes),
         needs=tuple(source.name for source in sources),

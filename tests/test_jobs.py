@@ -11,7 +11,7 @@ import pytest
 from job_kit import job, records_of, spec_of
 from lattice_kit import OBLATE, SPHERE
 from oracles import axial, mie
-from scatterloom import jobs
+from scatterloom import attempts, jobs
 from scatterloom.campaign import effort
 from scatterloom.errors import IntegrityError
 from scatterloom.scattering import record
@@ -344,13 +344,13 @@ def test_no_changed_bit_and_no_cut_passes_for_fields(tmp_path):
 
 def test_a_case_without_a_result_is_recorded_as_failed(tmp_path, monkeypatch):
     # A solver that never gets anywhere.
-    original = jobs.solve_level
+    original = attempts.solve_level
 
     def hopeless(*args, **options):
         level = original(*args, **options)
         return replace(level, solution=replace(level.solution, error=0.5, converged=False))
 
-    monkeypatch.setattr(jobs, "solve_level", hopeless)
+    monkeypatch.setattr(attempts, "solve_level", hopeless)
     anchors, span = small_jobs()
     jobs.solve(spec_of(anchors), tmp_path)
     found = records_of(tmp_path, anchors)

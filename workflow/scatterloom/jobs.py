@@ -11,53 +11,31 @@ from __future__ import annotations
 import json
 import sys
 import time
-from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, replace
+from collections.abc import Mapping
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 from threadpoolctl import threadpool_limits
 
-from scatterloom.campaign import effort
+from scatterloom.attempts import Task, solve_case
 from scatterloom.errors import IntegrityError
-from scatterloom.particle.lattice import Lattice, lattice
-from scatterloom.particle.shapes import Shape, from_spec
-from scatterloom.scattering import record
-from scatterloom.scattering.case import Asked, combine_levels
-from scatterloom.scattering.record import CaseRecord, failed_record
-from scatterloom.solve.start import StoredFields, interpolated_start, nearest
+from scatterloom.particle.shapes import from_spec
+from scatterloom.scattering.case import Asked
+from scatterloom.scattering.record import CaseRecord
 from scatterloom.store.casefile import read_records, write_records
 from scatterloom.store.fields import FieldFile, read_fields, write_fields
 from scatterloom.store.layout import Layout
 from scatterloom.store.progress import DONE, RUNNING, Heartbeat, write_heartbeat
-from scatterloom.transition.level import LevelResult, solve_level
 
 _HEARTBEAT_S = 0.5
-_GIVE_UP = 0.01
-"""A relative error of the amplitudes above this is no result at all."""
-
-
-@dataclass(frozen=True)
-class _Task:
-    """What all cases of a job share."""
-
-    name: str
-    kind: str
-    shape: Shape
-    shape_json: str
-    index: complex
-    cells: tuple[int, ...]
-    lattices: tuple[Lattice, ...]
-    tolerance: float
-    asked: Asked
-    threads: int
 
 
 class _Reporter:
     """Writes the heartbeat of a job, at most twice a second."""
 
-    def __init__(self, folder: Path, task: _Task, total: int) -> None:
+    def __init__(self, folder: Path, task: Task, total: int) -> None:
         self._folder = folder
         self._beat = Heartbeat(task.name, task.kind, RUNNING, 0, total)
         self._last = 0.0
@@ -116,14 +94,14 @@ class _Job:
         shape = from_spec(spec["shape"])
         cells = tuple(int(n) for n in spec["levels"])
         accuracy = spec["accuracy"]
-        self.task = _Task(
+        self.task = Task(
             name=spec["name"],
             kind=spec["kind"],
             shape=shape,
             shape_json=json.dumps(spec["shape"], sort_keys=True),
             index=complex(*spec["index"]),
             cells=cells,
-            lattices=tuple(lattice(shape, n) for n in cells),
+            refinements=int(spec["refinements"]),
             tolerance=float(spec["tolerance"]),
             asked=Asked(
                 accuracy["f11_relative"],
@@ -144,9 +122,9 @@ class _Job:
             kept = self._kept(digest)
             own = self._kept_fields(digest) if keep_fields else None
             if kept is None or (keep_fields and own is None):
-                solved, levels = solve_case(self.task, digest, x, anchors, self.report)
+                solved, levels = solve_case(self.task, digest, x, anchors, self.report.solving)
                 if keep_fields:
-                    own = FieldFile(digest, x, _products(levels), [lv.fields for lv in levels])
+                    own = FieldFile(digest, x, solved.products, [lv.fields for lv in levels])
                     write_fields(self.layout.solved_fields(digest), [own])
                 if kept is None:
                     # A record published before stays as it is: only its fields were wanting.
@@ -206,72 +184,3 @@ class _Job:
                 "delete the fields files named in the job file and run again"
             )
         return sorted(found.values(), key=lambda entry: entry.size_parameter)
-
-
-def _products(levels: Sequence[LevelResult]) -> float:
-    return float(np.mean([level.solution.products for level in levels]))
-
-
-def _cold_estimate(anchors: Sequence[FieldFile], x: float) -> float:
-    """Products a zero start would have used at `x`, from those the anchors around it used."""
-    return float(np.interp(x, [a.size_parameter for a in anchors], [a.products for a in anchors]))
-
-
-def _solve_levels(
-    task: _Task, x: float, n_max: int, anchors: Sequence[FieldFile], report: _Reporter
-) -> list[LevelResult]:
-    levels = []
-    around = nearest(anchors, x)
-    for number, grid in enumerate(task.lattices):
-        neighbours: list[StoredFields] = [entry.levels[number] for entry in around]
-        levels.append(
-            solve_level(
-                grid,
-                task.index,
-                x,
-                n_max,
-                task.tolerance,
-                start=interpolated_start(neighbours, x) if neighbours else None,
-                threads=task.threads,
-                progress=lambda error, residual: report.solving(x, residual),
-            )
-        )
-    return levels
-
-
-def solve_case(
-    task: _Task, digest: str, x: float, anchors: Sequence[FieldFile], report: _Reporter
-) -> tuple[CaseRecord, list[LevelResult]]:
-    """Solve one case on all its lattice levels; the truncation is raised until it is confirmed."""
-    begun = time.perf_counter()
-    half_axes = tuple(float(a) for a in task.shape.half_axes)
-    n_max = effort.n_max(half_axes, x, task.asked.f11_relative)
-    truncation = record.FLAGS["truncation"][0]
-    for attempt in range(3):
-        levels = _solve_levels(task, x, n_max, anchors, report)
-        infilled = bool(anchors) and not any(lv.solution.start_dropped for lv in levels)
-        products = _products(levels)
-        solved = combine_levels(
-            levels,
-            task.cells,
-            task.shape.symmetry,
-            task.index,
-            x,
-            task.lattices[-1].spacing,
-            task.asked,
-            digest=digest,
-            shape=task.shape_json,
-            start="infill" if infilled else "cold",
-            cold_products_estimate=_cold_estimate(anchors, x) if anchors else products,
-            wall_seconds=time.perf_counter() - begun,
-        )
-        if not solved.warning_flags & truncation or attempt == 2:
-            break
-        n_max += 3
-    if not solved.operator_error < _GIVE_UP:
-        flags = solved.warning_flags | record.FLAGS["not_converged"][0]
-        return (
-            failed_record(digest, task.shape_json, task.index, x, task.cells, flags),
-            levels,
-        )
-    return solved, levels

@@ -126,17 +126,26 @@ class AccuracyGoal(Section):
     """What the user asks; lattices, tolerances and directions are chosen to meet it."""
 
     f11_relative: float = setting(
-        "Error of F11 allowed at any angle, relative.", 0.02, unit="1", ge=1e-3, le=0.5
+        "Half width (95 %) of F11 allowed, relative, as root mean square over scattering angle.",
+        0.02,
+        unit="1",
+        ge=1e-3,
+        le=0.5,
     )
     ratio_absolute: float = setting(
-        "Error of the ratios Fij/F11 allowed at any angle, absolute.",
+        "Half width (95 %) of each ratio Fij/F11 allowed, absolute, as root mean square over "
+        "scattering angle.",
         0.01,
         unit="1",
         ge=1e-3,
         le=0.2,
     )
     efficiency_relative: float = setting(
-        "Error of the efficiencies allowed, relative.", 0.005, unit="1", ge=5e-4, le=0.2
+        "Half width (95 %) of extinction and scattering efficiency allowed, relative.",
+        0.005,
+        unit="1",
+        ge=5e-4,
+        le=0.2,
     )
 
 

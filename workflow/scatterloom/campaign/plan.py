@@ -38,8 +38,9 @@ class Job:
         Kind, shape and a digest of everything else; a changed job has another name.
     kind : str
         "anchors" (each case solved from nothing) or "span" (filled in between anchors).
-    shape, index, accuracy, levels, tolerance
-        What all cases of the job share; `levels` are cells across, coarse to fine.
+    shape, index, accuracy, levels, refinements, tolerance
+        What all cases of the job share; `levels` are cells across, coarse to fine, and
+        `refinements` is how often finer ones may follow (never where levels are given).
     cases : tuple of (digest, size parameter)
         The sizes this job solves, ascending.
     needs : tuple of str
@@ -56,6 +57,7 @@ class Job:
     index: complex
     accuracy: Accuracy
     levels: tuple[int, ...]
+    refinements: int
     tolerance: float
     cases: tuple[tuple[str, float], ...]
     needs: tuple[str, ...]
@@ -248,6 +250,7 @@ def _job(
         index=case.index,
         accuracy=case.accuracy,
         levels=segment.levels,
+        refinements=0 if case.overrides.levels else effort.MOST_REFINEMENTS,
         tolerance=tolerance,
         cases=tuple((size.digest, size.x) for size in sizes),
         needs=tuple(dict.fromkeys(name for _, _, name in anchors)),
@@ -266,6 +269,7 @@ def _content(job: Job) -> dict[str, Any]:
         "index": [job.index.real, job.index.imag],
         "accuracy": asdict(job.accuracy),
         "levels": list(job.levels),
+        "refinements": job.refinements,
         "tolerance": job.tolerance,
         "cases": [list(entry) for entry in job.cases],
         "needs": list(job.needs),

@@ -147,12 +147,10 @@ def _flags(
 
 def meets(case: record.CaseRecord, asked: Asked) -> bool:
     """Whether every error bar is as narrow as asked."""
-    _, _, ratio = case.scattering_matrix(np.arange(0.0, 181.0, 2.0))
-    spread = np.sqrt(np.mean(ratio**2, axis=0))
-    if spread[0, 0] > asked.f11_relative:
-        return False
-    spread[0, 0] = 0.0
-    if spread.max() > asked.ratio_absolute:
+    angles = np.arange(0.0, 181.0, 2.0)
+    _, _, half_width = case.scattering_matrix(angles)
+    f11, ratio = error_bars.over_angle(half_width, angles)
+    if f11 > asked.f11_relative or ratio > asked.ratio_absolute:
         return False
     return all(
         case.scalars[name][1] <= asked.efficiency_relative * abs(case.scalars[name][0])
@@ -185,7 +183,7 @@ def combine_levels(
         Lattice spacing of the finest level in units of the equal-volume radius.
     asked : Asked
     identity
-        digest, shape, start, cold_products_estimate, wall_seconds.
+        digest, shape, start, products, cold_products_estimate, wall_seconds.
     """
     variants = _variants(levels, cells, symmetry, size_parameter)
     best = variants[0]
@@ -215,7 +213,6 @@ def combine_levels(
         wave_count=len(levels[-1].transition.labels.kind),
         status=record.SOLVED,
         warning_flags=0,
-        products=float(np.mean([level.solution.products for level in levels])),
         residual=max(level.solution.residual for level in levels),
         operator_error=operator_error,
         memory_bytes=max(level.memory_bytes for level in levels),
