@@ -177,6 +177,10 @@ def test_no_shift_without_contrast_or_with_negative_permittivity():
     # interfaces parallel to the lattice planes are not shifted along the normal
     along, _ = boundary_shift(np.eye(3), 2.25)
     np.testing.assert_allclose(along, 0.0, atol=1e-15)
+    # and most where they are parallel to none of them
+    tilted = np.array([[1.0, 1.0, 0.0], [1.0, 1.0, 1.0]]) / np.sqrt([[2.0], [3.0]])
+    along, _ = boundary_shift(tilted, 2.25)
+    assert 0.0 < abs(along[0]) < abs(along[1])
     area = np.ones_like(fill)
     metal = 0.2 + 3.0j
     np.testing.assert_array_equal(
