@@ -17,6 +17,7 @@ BENCHMARKS = {
     "product": "the lattice product against the textbook way and against its bare transforms",
     "solve": "one oblate spheroid: block solve and in-fill against one plane wave at a time",
     "starts": "products and error of in-filled sizes against the spacing of their anchors",
+    "coverage": "how often the 95 % half widths hold the exact value, random spheres and spheroids",
 }
 DEFAULT_OUTPUT = Path(__file__).parents[2] / "workflow" / "docs" / "benchmarks"
 
