@@ -10,7 +10,6 @@ from numpy.typing import NDArray
 from scatterloom.dipole.polarizability import CellTensors, boundary_shift, cell_tensors, self_term
 from scatterloom.particle.lattice import MEDIUM, Composition, Lattice
 
-MODE = "inverse"
 
 def particle_tensors(lattice: Lattice, indices: Sequence[complex], kd: float) -> CellTensors:
     """Polarizability of the cells of any particle.
@@ -39,54 +38,69 @@ def particle_tensors(lattice: Lattice, indices: Sequence[complex], kd: float) ->
 def mixed_cell_tensors(
     composition: Composition, indices: Sequence[complex], kd: float
 ) -> CellTensors:
+    """Polarizability of cells of several materials, with any number of interfaces in each.
+
+    With the arithmetic mean a and the harmonic mean h of the permittivity, and the dyad
+    N = <n n> of the normal averaged over all interfaces in the cell, the inverse
+    permittivity is N / h + (I - N) / a (Kottke et al. 2008, Phys. Rev. E 77, 036611, with
+    N in place of n n). One interface, or parallel ones such as those of a thin plate, give
+    the two means along the normal and across it; a dyad, unlike a mean normal, does not
+    cancel between faces that look in opposite directions. At an edge or a corner no mean
+    is exact. Of the forms tried there on cubes and hexagonal prisms (normal of the summed
+    area vectors, the same with its share reduced as they cancel, this one in epsilon or
+    in its inverse) this one leaves the same error however the lattice is turned or
+    shifted: that of the edges themselves on lattices along the faces, which cut no cell.
+
+    Each interface is shifted as `boundary_shift` says, with the permittivity inside relative to
+    that outside, since a static field does not change when all permittivities are scaled:
+    the contrast of (e1, e2) is (e1 - e2)/(e1 + 2 e2), and the shift moves e2 to e1.
+
+    Parameters
+    ----------
+    composition : Composition
+    indices : sequence of complex (n_material,)
+        Relative to the medium.
+    kd : float
+        Lattice spacing times wavenumber.
+    """
     eps = np.array([complex(m) ** 2 for m in indices])
     arithmetic = bool(np.any(eps.real < 0.0))
     mean = 1.0 + (eps - 1.0) @ composition.fraction
     inverse = 1.0 + (1.0 / eps - 1.0) @ composition.fraction
     total = np.zeros(mean.size)
-    spread = np.zeros((mean.size, 3, 3))
-    vec = np.zeros((mean.size, 3))
-    for (inside, outside), vector in zip(
-        composition.interfaces, composition.area_vector, strict=True
-    ):
+    dyad = np.zeros((mean.size, 3, 3))
+    pieces = zip(composition.interfaces, composition.area_vector, strict=True)
+    for (inside, outside), vector in () if arithmetic else pieces:
         area = np.linalg.norm(vector, axis=1)
-        cut = np.flatnonzero(area > 0.0)
-        if not cut.size:
-            continue
-        area = area[cut]
-        normal = vector[cut] / area[:, None]
-        inner = eps[inside]
-        outer = 1.0 if outside == MEDIUM else eps[outside]
+        cut = np.flatnonzero(area)
+        area, normal = area[cut], vector[cut] / area[cut, None]
+        inner, outer = eps[inside], 1.0 if outside == MEDIUM else eps[outside]
         along, across = boundary_shift(normal, inner / outer)
         mean[cut] += across * area * (inner - outer)
         inverse[cut] += along * area * (1.0 / inner - 1.0 / outer)
         total[cut] += area
-        spread[cut] += area[:, None, None] * normal[:, :, None] * normal[:, None, :]
-        vec[cut] += vector[cut]
-    cut = np.flatnonzero(total > 0.0)
+        dyad[cut] += area[:, None, None] * normal[:, :, None] * normal[:, None, :]
     share = np.zeros((mean.size, 3))
-    frame = np.broadcast_to(np.eye(3), spread.shape).copy()
-    if not arithmetic:
-        if MODE in ("sum", "weighted"):
-            length = np.linalg.norm(vec, axis=1)
-            nn = vec[:, :, None] * vec[:, None, :] / np.where(length > 1e-12, length, 1)[:, None, None] ** 2
-            if MODE == "weighted":
-                nn *= (length / np.where(total > 0, total, 1))[:, None, None]
-            share[cut], frame[cut] = np.linalg.eigh(nn[cut])
-        else:
-            share[cut], frame[cut] = np.linalg.eigh(spread[cut] / total[cut, None, None])
-    if MODE == "direct":
-        permittivity = share / inverse[:, None] + (1.0 - share) * mean[:, None]
-    else:
-        permittivity = 1.0 / (share * inverse[:, None] + (1.0 - share) / mean[:, None])
+    frame = np.broadcast_to(np.eye(3), dyad.shape).copy()
+    cut = np.flatnonzero(total)
+    share[cut], frame[cut] = np.linalg.eigh(dyad[cut] / total[cut, None, None])
+    # Where there is no surface, and for a share of zero, the mean itself to the last bit.
+    share = np.where(share > 1e-14, share, 0.0)
+    mixed = 1.0 / (share * inverse[:, None] + (1.0 - share) / mean[:, None])
+    permittivity = np.where(share > 0.0, mixed, mean[:, None])
     volume = kd**3
     inverse_chi = 4 * np.pi / (permittivity - 1.0)
     alpha = volume / (inverse_chi - self_term(kd))
     loss = -(inverse_chi.imag / volume) * np.abs(alpha) ** 2
-    return CellTensors(_six(np.sqrt(alpha), frame), _six(loss, frame), arithmetic)
+    return CellTensors(
+        root=_components(np.sqrt(alpha), frame),
+        loss=_components(loss, frame),
+        arithmetic=arithmetic,
+    )
 
 
-def _six(values: NDArray, frame: NDArray[np.float64]) -> NDArray:
-    """Tensors with these eigenvalues (n_cell, 3) and eigenvectors as components xx .. yz."""
+def _components(values: NDArray, frame: NDArray[np.float64]) -> NDArray:
+    """Tensors with these eigenvalues (n_cell, 3) and eigenvectors as xx, yy, zz, xy, xz, yz."""
     full = (frame * values[:, None, :]) @ np.swapaxes(frame, 1, 2)
-    return np.stack([full[:, p, q] for p, q in ((0, 0), (1, 1), (2, 2), (0, 1), (0, 2), (1, 2))], 1)
+    pairs = ((0, 0), (1, 1), (2, 2), (0, 1), (0, 2), (1, 2))
+    return np.stack([full[:, p, q] for p, q in pairs], axis=1)
