@@ -149,9 +149,7 @@ def _cells(edges, origin, box):  # type: ignore[no-untyped-def]
     return fill, vector
 
 
-def ball_overlap(
-    edges: Floats, origin: Floats, box: tuple[int, int, int]
-) -> tuple[Floats, Floats]:
+def ball_overlap(edges: Floats, origin: Floats, box: tuple[int, int, int]) -> tuple[Floats, Floats]:
     """Fill fraction and surface vector of every cell of a box.
 
     Parameters

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -187,7 +188,7 @@ def lattice(
         held = [fill[inside], *(np.minimum(c.fill[inside], fill[inside]) for c in cuts[1:])]
         held.append(np.zeros_like(held[0]))
         composition = Composition(
-            fraction=np.stack([outside - within for outside, within in zip(held, held[1:])]),
+            fraction=np.stack([outside - within for outside, within in pairwise(held)]),
             interfaces=tuple((m, m - 1) for m, c in enumerate(cuts) for _ in c.surfaces),
             area_vector=np.stack([part[inside] for c in cuts for part in c.surfaces]) + 0.0,
         )
@@ -219,7 +220,9 @@ def _place(
     # Rounding must not open a layer of cells for an axis that ends on a face.
     first = np.array([math.floor(x + 1e-9) for x in shift + low])
     last = np.array([math.ceil(x - 1e-9) for x in shift + high])
-    mirrors = [s == 0.0 and shape.is_mirrored(axis) for s, axis in zip(shift, turn, strict=True)]
+    mirrors = [
+        bool(s == 0.0) and shape.is_mirrored(axis) for s, axis in zip(shift, turn, strict=True)
+    ]
     for axis in np.flatnonzero(mirrors):
         last[axis] = max(last[axis], -first[axis])
         first[axis] = -last[axis]

@@ -51,9 +51,7 @@ class Polyhedron:
         return float(np.sum(self.area_vectors * first)) / 3.0
 
 
-def convex_polyhedron(
-    corners: NDArray[np.float64], faces: Sequence[Sequence[int]]
-) -> Polyhedron:
+def convex_polyhedron(corners: NDArray[np.float64], faces: Sequence[Sequence[int]]) -> Polyhedron:
     """Polyhedron of volume 4 pi / 3 in the proportions of the corners given.
 
     Raises

@@ -9,6 +9,7 @@ independent and add in squares.
 from __future__ import annotations
 
 from collections.abc import Sequence
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -47,10 +48,16 @@ GRID_DEG = np.arange(0.0, 180.5, 1.0)
 """Angles on which deviations are compared [deg]."""
 
 
-def cell_model_error(index: complex, cells_across: float) -> float:
-    """Relative half width of efficiencies from the linear part of the boundary error."""
-    eps = complex(index) ** 2
-    return CELL_MODEL * abs((eps - 1.0) / (eps + 2.0)) / cells_across
+def cell_model_error(indices: complex | Sequence[complex], cells_across: float) -> float:
+    """Relative half width of efficiencies from the linear part of the boundary error.
+
+    Of nested materials, given from outside inwards, the interface of the strongest contrast
+    counts.
+    """
+    nested = indices if isinstance(indices, Sequence) else [indices]
+    ratios = [(inner / outer) ** 2 for outer, inner in pairwise((1.0, *nested))]
+    contrast = max(abs((eps - 1.0) / (eps + 2.0)) for eps in ratios)
+    return CELL_MODEL * contrast / cells_across
 
 
 def combined(deviation: NDArray[np.float64], causes: Sequence[str]) -> NDArray[np.float64]:

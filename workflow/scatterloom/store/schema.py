@@ -186,13 +186,15 @@ INDICES = (
         GRID[:2],
         "f8",
         "real part of the refractive index relative to the medium",
+        comment="of a coated particle that of the coating",
     ),
     Variable(
         "refractive_index_k",
         GRID[:2],
         "f8",
         "imaginary part of the refractive index relative to the medium",
-        comment="positive for absorption, with the time factor exp(-i w t)",
+        comment="positive for absorption, with the time factor exp(-i w t); of a coated "
+        "particle that of the coating",
     ),
 )
 
