@@ -82,6 +82,7 @@ def test_dependent_images_add_nothing(system):
     iterate.take(twice, twice @ a.T)
     once = ClassIterate(b)
     once.take(v, v @ a.T)
+    assert len(iterate._images[0]) == len(v)
     np.testing.assert_allclose(iterate.fields, once.fields, atol=1e-12)
     iterate.take(v[:0], v[:0])
     np.testing.assert_allclose(iterate.residual, once.residual, atol=1e-12)

@@ -122,7 +122,8 @@ def solve_case(
     solves = _Solves(task, x, anchors, progress)
     while True:
         levels = [solves.get(n, n_max) for n in cells]
-        own = [solves.by_cells[n] for n in task.cells]
+        # Solved again if the basis became longer on finer lattices.
+        own = [solves.get(n, n_max) for n in task.cells]
         infilled = bool(anchors) and not any(lv.solution.start_dropped for lv in own)
         cold = float(np.mean([lv.solution.products for lv in own]))
         solved = combine_levels(
