@@ -12,7 +12,10 @@ from numpy.typing import NDArray
 from scatterloom.scattering.error_bars import BEST, matrix_half_widths
 from scatterloom.scattering.expansion import synthesize
 
-MISSING, SOLVED, SOLVED_WITH_WARNING, FAILED = 0, 1, 2, 3
+MISSING, SOLVED, SOLVED_WITH_WARNING, FAILED = range(4)
+
+STATUS_MEANINGS = ("missing", "solved", "solved_with_warning", "failed")
+"""Names of the status numbers, in their order."""
 
 FLAGS: dict[str, tuple[int, str]] = {
     "not_converged": (1, "the block solve stopped before its tolerance was met"),
@@ -36,6 +39,11 @@ SCALARS = (
     "asymmetry_parameter",
     "single_scattering_albedo",
 )
+
+
+def has_result(status: Any) -> NDArray[np.bool_]:
+    """Whether cells of a table with these status numbers hold numbers."""
+    return np.isin(status, (SOLVED, SOLVED_WITH_WARNING))
 
 
 @dataclass
