@@ -40,8 +40,14 @@ What the shift of the boundary cells leaves of the error linear in the spacing, 
 even powers cannot see; measured on spheres and spheroids against exact efficiencies.
 """
 
-CELL_MODEL_MATRIX = 0.25
-"""The same for normalized matrix elements, whose errors are smaller, as a share of it."""
+def matrix_model_share(size_parameter: float) -> float:
+    """Share of the cell model's error that normalized matrix elements have.
+
+    They do not depend on the polarizability of a particle much smaller than the wavelength
+    (its matrix is that of a dipole, whatever its strength); the dependence grows as x^2.
+    """
+    return min(1.0, 0.5 * size_parameter**2)
+
 
 GRID_DEG = np.arange(0.0, 180.5, 1.0)
 """Angles on which deviations are compared [deg]."""
@@ -128,7 +134,7 @@ def over_angle(
 def matrix_half_widths(
     expansion: NDArray[np.float64],
     causes: Sequence[str],
-    model_error: float,
+    floor: float,
     angles_deg: NDArray[np.float64],
 ) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
     """Half widths of all elements, and of all elements over F11.
@@ -142,8 +148,8 @@ def matrix_half_widths(
         Best estimate first.
     causes : sequence of str
         Cause of each variant.
-    model_error : float
-        Relative error of efficiencies from the cell model.
+    floor : float
+        Error from the cell model, relative to F11.
     angles_deg : float64 (n_angle,) [deg]
 
     Returns
@@ -164,7 +170,7 @@ def matrix_half_widths(
     values = np.concatenate([elements, ratios], axis=-1)
     spread = combined(_envelope(np.abs(values - values[:1]), reach), causes)
     scale = np.repeat(np.stack([f11[0, :, 0], np.ones(GRID_DEG.size)], axis=1), present.size, 1)
-    width = np.hypot(spread, CELL_MODEL_MATRIX * model_error * scale)
+    width = np.hypot(spread, floor * scale)
     out = np.zeros((len(angles_deg), 2, 16))
     out[..., present] = _at(angles_deg, width).reshape(-1, 2, present.size)
     element, ratio = out.reshape(-1, 2, 4, 4).swapaxes(0, 1)

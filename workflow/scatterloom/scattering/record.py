@@ -9,7 +9,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterloom.scattering.error_bars import BEST, matrix_half_widths
+from scatterloom.scattering.error_bars import BEST, matrix_half_widths, matrix_model_share
 from scatterloom.scattering.expansion import synthesize
 
 MISSING, SOLVED, SOLVED_WITH_WARNING, FAILED = range(4)
@@ -134,9 +134,8 @@ class CaseRecord:
             Of every element over F11; of F11 itself the relative half width.
         """
         matrix = synthesize(self.expansion[0], angles_deg)
-        element, ratio = matrix_half_widths(
-            self.expansion, self.causes, self.model_error, angles_deg
-        )
+        floor = self.model_error * matrix_model_share(self.size_parameter)
+        element, ratio = matrix_half_widths(self.expansion, self.causes, floor, angles_deg)
         return matrix, element, ratio
 
     def to_arrays(self) -> dict[str, np.ndarray]:
