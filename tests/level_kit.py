@@ -86,6 +86,7 @@ def record_of(
         digest="0" * 20,
         shape='{"kind": "sphere"}',
         start="cold",
+        products=4.0,
         cold_products_estimate=4.0,
         wall_seconds=0.5,
     )

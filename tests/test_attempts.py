@@ -1,11 +1,16 @@
 """One case: finer lattices until the accuracy asked is met, or a flag."""
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 
 from lattice_kit import SPHERE
 from oracles import mie
+from scatterloom import attempts
 from scatterloom.attempts import Task, solve_case
+from scatterloom.campaign import effort
+from scatterloom.particle.lattice import lattice
 from scatterloom.particle.shapes import from_spec
 from scatterloom.scattering import record
 from scatterloom.scattering.case import Asked
@@ -54,3 +59,23 @@ def test_what_cannot_be_met_is_flagged_not_hidden():
     case, _ = solve(task(1, Asked(1e-6, 1e-6, 1e-6)))
     assert case.levels[-1] > 10
     assert case.status == record.SOLVED_WITH_WARNING and case.warning_flags & NOT_MET
+
+
+def test_a_longer_basis_on_finer_lattices_is_for_all_lattices(monkeypatch):
+    # The accuracy is missed first, then the truncation of the finer lattices doubted: the
+    # fields handed on must have the longer basis as well.
+    flags = [NOT_MET, record.FLAGS["truncation"][0], 0]
+    original = attempts.combine_levels
+
+    def flagged(*args, **identity):
+        return replace(original(*args, **identity), warning_flags=flags.pop(0))
+
+    monkeypatch.setattr(attempts, "combine_levels", flagged)
+    case, levels = solve(task(1, Asked(1.0, 1.0, 1.0)))
+    assert not flags
+    assert case.levels[-1] > 10
+    assert case.n_max == effort.n_max((1.0, 1.0, 1.0), SIZE, 1.0) + 3
+    assert [level.transition.n_max for level in levels] == [case.n_max] * 3
+    assert [level.cells for level in levels] == [
+        len(lattice(from_spec(SPHERE), n).cell) for n in (6, 8, 10)
+    ]

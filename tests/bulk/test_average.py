@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import math
 
 import numpy as np
@@ -15,14 +16,22 @@ ANGLES = np.array([0.0, 30.0, 90.0, 150.0, 180.0])
 WAVENUMBER = 2 * math.pi / 0.55
 
 
-def mie_optics(radius_um: np.ndarray, index: complex, half_width: float = 0.0) -> Optics:
-    """Optics of spheres in vacuum at 0.55 um, with relative half widths as asked."""
+def mie_optics(
+    radius_um: np.ndarray, index: complex, half_width: float = 0.0, ratio_half_width: float = 0.0
+) -> Optics:
+    """Optics of spheres in vacuum at 0.55 um.
+
+    Half widths of efficiencies and F11 are relative, those of ratios (of elements that
+    occur) absolute; an element that is both off in scale and in its ratio has their sum.
+    """
     spheres = [sphere(index, WAVENUMBER * r) for r in radius_um]
     ext = np.array([s.extinction_efficiency for s in spheres])
     sca = np.array([s.scattering_efficiency for s in spheres])
     g = np.array([s.asymmetry_parameter for s in spheres])
     matrix = np.stack([s.scattering_matrix(ANGLES) for s in spheres])
     ab = ext - sca
+    ratio_error = ratio_half_width * (matrix != 0.0)
+    ratio_error[..., 0, 0] = 0.0
     return Optics(
         radius_um,
         ext,
@@ -34,7 +43,8 @@ def mie_optics(radius_um: np.ndarray, index: complex, half_width: float = 0.0) -
         g,
         half_width * np.ones_like(g),
         matrix,
-        half_width * np.abs(matrix),
+        half_width * np.abs(matrix) + ratio_error * matrix[..., :1, :1],
+        ratio_error,
     )
 
 
@@ -65,9 +75,11 @@ def test_rayleigh_population_in_closed_form() -> None:
     matrix[:, :, 2, 2] = matrix[:, :, 3, 3] = 1.5 * c
     q = 1e4 * radius**4
     none = np.zeros_like(q)
+    exact_matrix = np.zeros_like(matrix)
     optics = Optics(
-        radius, q, 0.01 * q, q, 0.01 * q, none, none, none, none + 0.02, matrix, none_like(matrix)
-    )
+        radius, q, 0.01 * q, q, 0.01 * q, none, none, none, none + 0.02,
+        matrix, exact_matrix, exact_matrix,
+    )  # fmt: skip
     result = population_average([(3.0, optics)], distribution)
     exact = math.pi * 1e4 * distribution.moment(6)
     assert result.extinction_um2 == pytest.approx(exact, rel=3e-5)  # cubic in ln r
@@ -79,10 +91,6 @@ def test_rayleigh_population_in_closed_form() -> None:
     assert result.albedo_error < 1e-12
     assert result.asymmetry_error == pytest.approx(0.02, rel=1e-3)
     assert result.share_above < 1e-12
-
-
-def none_like(array: np.ndarray) -> np.ndarray:
-    return np.zeros_like(array)
 
 
 CASES = [
@@ -149,13 +157,15 @@ def test_mixture_is_the_weighted_sum_of_its_parts() -> None:
 
 
 def test_errors_of_the_table_pass_into_the_average() -> None:
-    """Raising every efficiency and element by its half width stays within the bars."""
+    """Moving every efficiency, F11 and ratio by its half width stays within the bars."""
     distribution = Gamma(0.2, 0.1)
     radius = np.geomspace(0.01, 1.2, 60)
-    base = mie_optics(radius, 1.5 + 0.05j, 0.02)
+    base = mie_optics(radius, 1.5 + 0.05j, 0.02, 0.004)
     result = population_average([(1.0, base)], distribution)
 
-    def moved(sign: np.ndarray) -> Average:
+    def moved(sign: np.ndarray, ratio_sign: np.ndarray) -> Average:
+        up, turn = sign[:, None, None, None], ratio_sign[:, None, None, None]
+        f11 = base.matrix[..., :1, :1]
         shifted = Optics(
             radius,
             base.extinction + sign * base.extinction_error,
@@ -166,21 +176,24 @@ def test_errors_of_the_table_pass_into_the_average() -> None:
             base.absorption_error,
             base.asymmetry - sign * base.asymmetry_error,
             base.asymmetry_error,
-            base.matrix + sign[:, None, None, None] * base.matrix_error,
+            (1.0 + 0.02 * up) * (base.matrix + turn * base.ratio_error * f11),
             base.matrix_error,
+            base.ratio_error,
         )
         return population_average([(1.0, shifted)], distribution)
 
     patterns = [np.ones(60), -np.ones(60), np.where(radius > 0.25, 1.0, -1.0)]
-    for sign in patterns:
-        other = moved(sign)
+    for sign, ratio_sign in itertools.product(patterns, repeat=2):
+        other = moved(sign, ratio_sign)
         assert abs(other.extinction_um2 - result.extinction_um2) < result.extinction_um2_error
         assert abs(other.asymmetry - result.asymmetry) < result.asymmetry_error * 1.01
         assert abs(other.albedo - result.albedo) < result.albedo_error
         assert np.all(np.abs(other.matrix - result.matrix) < 1.03 * result.matrix_error + 1e-12)
         assert np.all(np.abs(other.ratio - result.ratio) < 1.03 * result.ratio_error + 1e-12)
-    # F22 = F11 for spheres of all sizes: only the errors of the two elements remain.
-    np.testing.assert_allclose(result.ratio_error[:, 1, 1], 0.04, rtol=1e-3)
+    # F22 = F11 for spheres of all sizes: a common scale cancels, their own errors do not.
+    np.testing.assert_allclose(result.ratio_error[:, 1, 1], 0.004, rtol=1e-3)
+    # What the errors of both elements alone would allow is far wider.
+    assert result.matrix_error[2, 1, 1] / result.matrix[2, 0, 0] > 0.02
 
 
 def test_too_few_sizes_and_empty_mixtures_are_refused() -> None:

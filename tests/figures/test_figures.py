@@ -9,12 +9,14 @@ import struct
 
 import numpy as np
 import pytest
+from matplotlib.figure import Figure
 
 from oracles.tables import mie_table
 from scatterloom.bulk.build import Population, build
 from scatterloom.bulk.bulkfile import open_bulk, write_bulk
 from scatterloom.bulk.distribution import Lognormal
 from scatterloom.errors import IntegrityError
+from scatterloom.figures.axes import plain_log_ticks
 from scatterloom.figures.curves import matrix_curves
 from scatterloom.figures.effort import product_counts
 from scatterloom.figures.make import make_figures
@@ -57,7 +59,7 @@ def test_every_figure_is_there_with_its_words_and_numbers(drawn) -> None:
         png = (folder / entry["png"]).read_bytes()
         width, height = struct.unpack(">II", png[16:24])
         assert width == 1020  # one column of 86 mm at 300 dpi
-        assert 600 < height < 1500
+        assert 600 < height < 1800  # less than two thirds of a page
         assert (folder / entry["svg"]).read_bytes().startswith(b"<?xml")
         with open(folder / entry["csv"], newline="") as stream:
             header, *rows = list(csv.reader(stream))
@@ -116,6 +118,48 @@ def test_numbers_behind_the_curves_are_those_of_the_table(drawn, table) -> None:
         assert float(row["−F12/F11"]) == pytest.approx(-f[0, 1] / f[0, 0], abs=1e-4)
         half_width = ladder.half_width[-1, at, 0, 0]
         assert float(row["F11 half width"]) == pytest.approx(half_width, rel=1e-4)
+        own = ladder.ratio_half_width[-1, at, 0, 1]
+        assert float(row["−F12/F11 half width"]) == pytest.approx(own, rel=1e-4)
+
+
+def test_half_widths_have_panels_of_their_own(table) -> None:
+    ladder = load_ladder(table, 1, 0)
+    with style():
+        figure = matrix_curves(ladder).figure
+    panels = {axes.get_title(loc="left"): axes for axes in figure.axes}
+    assert len(panels) == 8
+    for title, expected in (
+        ("half width of $F_{11}$ (%)", 100 * ladder.ratio_half_width[-1, :, 0, 0]),
+        (
+            "widest of the ratios",
+            ladder.ratio_half_width[-1][:, [1, 2, 3, 0, 2], [1, 2, 3, 1, 3]].max(axis=1),
+        ),
+    ):
+        drawn = panels[title].lines[3].get_ydata()
+        np.testing.assert_allclose(drawn, expected)
+        assert panels[title].get_yscale() == "log"
+    # Spheres have F22 = F11: rounding must not fill the panel.
+    low, high = panels["$F_{22}/F_{11}$"].get_ylim()
+    assert low < 0.96 and high > 1.04
+
+
+@pytest.mark.parametrize(
+    ("low", "high", "shown"),
+    [
+        (0.06, 0.8, ["0.1", "0.2", "0.5"]),
+        (1.2, 5.7, ["2", "3", "4"]),
+        (2e-4, 5e-3, ["0.0002", "0.0005", "0.001", "0.002", "0.005"]),
+        (0.02, 40.0, ["0.1", "1", "10"]),
+        (1.2, 1.4, ["1.2", "1.4"]),
+    ],
+)
+def test_logarithmic_axes_have_plain_numbers(low: float, high: float, shown: list[str]) -> None:
+    axes = Figure().subplots()
+    axes.set_xscale("log")
+    axes.set_xlim(low, high)
+    plain_log_ticks(axes.xaxis, low, high)
+    assert [label.get_text() for label in axes.get_xticklabels()] == shown
+    assert axes.get_xticklabels(minor=True) == []
 
 
 def test_gaps_are_left_out_and_named(table, tmp_path) -> None:
@@ -209,7 +253,10 @@ def test_equal_cases_of_two_wavelengths_count_once_in_products() -> None:
     shared = table.copy(deep=True)
     shared["size_parameter"].values[1] = shared["size_parameter"].values[0]
     with style():
-        assert "32 solved cases" in product_counts(table, 0).caption
+        picture = product_counts(table, 0)
+        assert "32 solved cases" in picture.caption
+        assert "mean over the lattices" in picture.caption
+        assert picture.figure.axes[0].get_ylabel() == "products per wave, mean over lattices"
         assert "16 solved cases" in product_counts(shared, 0).caption
         # 4 of 16 at 20 products, the others at 4: 128 of 320 are left.
         assert "60 % of the products" in product_counts(shared, 0).caption

@@ -15,7 +15,7 @@ from scatterloom.figures.picture import read_index
 from scatterloom.figures.report import effort_rows, report
 from scatterloom.scattering.audit_table import audit_table
 
-ASKED = {"f11_relative": 0.02, "ratio_absolute": 0.01, "efficiency_relative": 0.005}
+ASKED = {"f11_relative": 0.02, "ratio_absolute": 0.02, "efficiency_relative": 0.02}
 VOID = {"meta", "link", "img", "br", "hr"}
 
 

@@ -10,7 +10,7 @@ import xarray
 import zarr
 
 from oracles.mie import sphere
-from scatterloom.scattering.record import FLAGS
+from scatterloom.scattering.record import FLAGS, SOLVED
 from scatterloom.store import schema
 from scatterloom.store.commit import publish, staging
 from scatterloom.store.writer import ShardedArray
@@ -31,8 +31,8 @@ def mie_table(
     """Table of spheres in vacuum that obeys the schema, exact but for its stated errors.
 
     Values are those of the Mie series; half widths are `relative_error` times the
-    value (times F11 for matrix elements). The solver's diagnostics are made up: anchors at
-    every fourth size cost 20 products, the others 4 against an estimate of 20.
+    value, for matrix elements with 1e-4 of F11 on top. The solver's diagnostics are made
+    up: anchors at every fourth size cost 20 products, the others 4 against an estimate of 20.
     """
     radius = np.geomspace(0.05, 0.5, 24) if radius_um is None else np.asarray(radius_um)
     angles = np.arange(0.0, 181.0, 3.0) if angles_deg is None else np.asarray(angles_deg)
@@ -71,13 +71,14 @@ def mie_table(
                     data[f"{variable.name}_error"][p, w, s] = relative_error * abs(value)
                 matrix = ball.scattering_matrix(angles)
                 data["scattering_matrix"][p, w, s] = matrix
-                data["scattering_matrix_error"][p, w, s] = (
-                    relative_error * np.abs(matrix) + 1e-4 * matrix[:, :1, :1]
-                )
+                f11 = matrix[:, :1, :1]
+                half_width = relative_error * np.abs(matrix) + 1e-4 * f11
+                data["scattering_matrix_error"][p, w, s] = half_width
+                data["scattering_matrix_ratio_error"][p, w, s] = half_width / f11
     anchor = np.arange(radius.size) % 4 == 0
     data["products"][:] = np.where(anchor, 20.0, 4.0)
     data["cold_products_estimate"][:] = 20.0
-    data["status"][:] = schema.SOLVED
+    data["status"][:] = SOLVED
     data["lattice_cells"][:] = 7000
     data["wave_count"][:] = 160
     data["residual"][:] = 1e-5

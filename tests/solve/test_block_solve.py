@@ -97,7 +97,8 @@ def test_products_are_counted_exactly(sphere):
     assert steps[-1] == (found.history[-1], found.residual)
     # eight classes share a product
     assert found.packed_products < 0.3 * found.products * waves
-    assert found.products < 3.0
+    # and directions too weak to matter are left out, about half of them
+    assert found.products < 0.55 * len(found.history)
 
 
 def test_an_exact_start_costs_its_own_check_and_no_more(sphere):

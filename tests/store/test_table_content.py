@@ -12,6 +12,7 @@ from rayleigh_cases import ABOUT, ANGLES_DEG, FLAGS, HALF_AXES, INDEX, axes, cas
 import scatterloom
 from oracles import rayleigh
 from scatterloom.errors import IntegrityError
+from scatterloom.scattering.record import FAILED, MISSING, SOLVED_WITH_WARNING
 from scatterloom.store import schema
 from scatterloom.store.assemble import Cases
 from scatterloom.store.casefile import write_records
@@ -43,10 +44,11 @@ def test_matrices_are_the_closed_form_in_every_cell(table):
 
 
 def test_half_widths_are_those_of_the_records(table):
-    expected = np.stack([r.scattering_matrix(ANGLES_DEG)[1] for r in records()])
-    found = table.scattering_matrix_error.values[:, 0].reshape(expected.shape)
-    assert expected.max() > 1e-3
-    np.testing.assert_array_equal(found, expected.astype(np.float32))
+    for position, name in ((1, "scattering_matrix_error"), (2, "scattering_matrix_ratio_error")):
+        expected = np.stack([r.scattering_matrix(ANGLES_DEG)[position] for r in records()])
+        found = table[name].values[:, 0].reshape(expected.shape)
+        assert expected.max() > 1e-3
+        np.testing.assert_array_equal(found, expected.astype(np.float32))
 
 
 def test_efficiencies_are_the_closed_form_in_every_cell(table):
@@ -99,7 +101,7 @@ def test_values_and_their_half_widths_are_linked_both_ways(table):
         assert set(companions) <= set(table.variables), name
         linked |= {c for c in companions if c.endswith("_error")}
     assert linked == errors
-    assert len(errors) == 6
+    assert len(errors) == 7
     for name in errors:
         assert table[name].attrs["coverage_percent"] == 95
         assert "95 %" in table[name].attrs["long_name"]
@@ -132,8 +134,8 @@ def test_provenance_is_complete(table):
 
 def test_failed_cases_are_never_numbers_and_keep_their_diagnostics(tmp_path):
     written = records()
-    written[1].status, written[1].warning_flags = schema.FAILED, 2
-    written[2].status = schema.WARNED
+    written[1].status, written[1].warning_flags = FAILED, 2
+    written[2].status = SOLVED_WITH_WARNING
     gathered = gather(tmp_path / "table.zarr", axes(), case_files(tmp_path, written), ABOUT, FLAGS)
     assert gathered.cells == {"missing": 0, "solved": 8, "solved_with_warning": 2, "failed": 2}
     ball = scatterloom.open_table(gathered.path).sel(particle="ball").load()
@@ -157,7 +159,7 @@ def test_missing_cases_have_a_status_of_their_own_and_only_if_asked_for(tmp_path
     gathered = gather(target, axes(), Cases(files, partial=True), ABOUT, FLAGS)
     assert gathered.cells["missing"] == 6
     plate = scatterloom.open_table(target).sel(particle="plate")
-    assert (plate.status == schema.MISSING).all()
+    assert (plate.status == MISSING).all()
     assert np.isnan(plate.scattering_matrix).all()
 
 

@@ -45,6 +45,9 @@ class Optics:
         Asymmetry parameter, with `asymmetry_error`.
     matrix, matrix_error : float64 (n_size, n_angle, 4, 4)
         Scattering matrices (mean F11 of 1) and half widths.
+    ratio_error : float64 (n_size, n_angle, 4, 4)
+        Half widths of the elements over F11, narrower than those of both suggest; what
+        stands for F11 itself is not used.
     """
 
     radius_um: FloatArray
@@ -58,6 +61,7 @@ class Optics:
     asymmetry_error: FloatArray
     matrix: FloatArray
     matrix_error: FloatArray
+    ratio_error: FloatArray
 
 
 @dataclass(frozen=True)
@@ -280,7 +284,9 @@ def _ratios(
     """Elements divided by F11, and their half widths.
 
     The ratio r makes the mean of F_ij - r F11 vanish; to first order its error is
-    the error of that mean over F11. Particles outside the table have |F_ij| <= F11,
+    the error of that mean over F11. At a size whose own ratio is q, this term is
+    (q - r) F11, so the errors of q and of F11 count, the latter only as far as the
+    sizes differ. Particles outside the table have |F_ij| <= F11,
     so they move it by (1 + |r|) F11 at most, unless the element vanishes for all.
     """
     f11 = matrix[..., :1, :1]
@@ -291,7 +297,10 @@ def _ratios(
         scattering_coarse,
         0.0,
         lambda o: o.matrix - r * o.matrix[..., :1, :1],
-        lambda o: o.matrix_error + np.abs(r) * o.matrix_error[..., :1, :1],
+        lambda o: (
+            o.matrix[..., :1, :1] * o.ratio_error
+            + np.abs(o.matrix / o.matrix[..., :1, :1] - r) * o.matrix_error[..., :1, :1]
+        ),
     )
     outside = np.max([_largest_near_ends(p.optics.matrix[..., :1, :1]) for p in parts], axis=0)
     occurs = np.any([np.any(p.optics.matrix != 0.0, axis=(0, 1)) for p in parts], axis=0)

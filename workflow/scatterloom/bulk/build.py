@@ -14,7 +14,8 @@ from scatterloom.bulk.average import FEWEST_SIZES, Average, Optics, population_a
 from scatterloom.bulk.distribution import Distribution, from_spec
 from scatterloom.errors import BadInput
 from scatterloom.scattering.elements import circular_depolarization, linear_depolarization
-from scatterloom.store.schema import FAILED, SOLVED, WARNED, Variable
+from scatterloom.scattering.record import FAILED, SOLVED, SOLVED_WITH_WARNING, has_result
+from scatterloom.store.schema import Variable
 
 if TYPE_CHECKING:
     import xarray
@@ -118,7 +119,7 @@ class _Solved:
 def _optics(table: xarray.Dataset, particle: int, wavelength: int) -> _Solved:
     part = table.isel(particle=particle, wavelength=wavelength)
     status = part["status"].values
-    solved = (status == SOLVED) | (status == WARNED)
+    solved = has_result(status)
     part = part.isel(size=np.flatnonzero(solved)).load()
 
     def column(name: str) -> np.ndarray:
@@ -137,12 +138,13 @@ def _optics(table: xarray.Dataset, particle: int, wavelength: int) -> _Solved:
             ("asymmetry_error", "asymmetry_parameter", "_error"),
             ("matrix", "scattering_matrix", ""),
             ("matrix_error", "scattering_matrix", "_error"),
+            ("ratio_error", "scattering_matrix", "_ratio_error"),
         )
     }
     return _Solved(
         Optics(radius_um=column("radius_um"), **fields),
         int((~solved).sum()),
-        int((status == WARNED).sum()),
+        int((status == SOLVED_WITH_WARNING).sum()),
     )
 
 
@@ -172,7 +174,7 @@ def _fill(
     if average.quadrature_error > schema.QUADRATURE_WARNING:
         flags |= schema.FLAGS["coarse_size_grid"]
     out["warning_flags"][cell] = flags
-    out["status"][cell] = WARNED if flags else SOLVED
+    out["status"][cell] = SOLVED_WITH_WARNING if flags else SOLVED
     values = _quantities(average, out["angle"])
     for name, (value, half_width) in values.items():
         out[name][cell] = value

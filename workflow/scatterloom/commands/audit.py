@@ -55,12 +55,11 @@ def summary(result: dict[str, Any]) -> list[str]:
         lines.append(
             f"{check['statement']:<54}{check['flagged']:>8}{check['judged']:>8}  {_worst(check)}"
         )
-    lines.append(f"{'accuracy (95 % half widths)':<30}{'asked':>8}{'median':>10}{'worst':>10}")
+    lines.append(f"{'95 % half widths':<58}{'asked':>8}{'median':>9}{'worst':>9}{'wider':>9}")
     for row in result["accuracy"]:
         median, worst = ("-" if row[k] is None else f"{row[k]:.2g}" for k in ("median", "worst"))
         lines.append(
-            f"{row['name']:<30}{row['asked']:>8.2g}{median:>10}{worst:>10}"
-            f"   above what was asked: {row['above']} of {row['judged']}"
+            f"{row['statement']:<58}{row['asked']:>8.2g}{median:>9}{worst:>9}{row['above']:>9}"
         )
     lines.append("all checks passed" if result["passed"] else _verdict(result))
     return lines
@@ -84,6 +83,7 @@ def _verdict(result: dict[str, Any]) -> str:
     parts = {
         "deviations beyond the error bar": result["flagged"],
         "cases solved with a warning": cells["solved_with_warning"],
+        "others with wider half widths than asked": result["short"],
         "cases failed": cells["failed"],
         "cases missing": cells["missing"],
     }

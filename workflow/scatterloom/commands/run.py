@@ -206,6 +206,8 @@ def _conclude(graph: Graph) -> int:
     checks = sum(1 for check in audit["checks"] if check["flagged"])
     if checks:
         text.append(f"{checks} physical checks flagged")
+    if audit["short"]:
+        text.append(f"{audit['short']} with wider half widths than asked and no other warning")
     print(
         f"scatterloom: of {sum(cells.values())} cells, {', '.join(text)}; see the report",
         file=sys.stderr,

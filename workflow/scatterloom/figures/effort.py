@@ -9,7 +9,7 @@ from matplotlib.figure import Figure
 from matplotlib.ticker import MaxNLocator
 
 from scatterloom.figures.picture import SERIES, Picture
-from scatterloom.store.schema import SOLVED, WARNED
+from scatterloom.scattering.record import has_result
 
 if TYPE_CHECKING:
     import xarray
@@ -37,8 +37,7 @@ def product_counts(table: xarray.Dataset, particle: int) -> Picture:
     """
     part = table.isel(particle=particle)
     name = str(part["particle"].values)
-    status = part["status"].values
-    solved = (status == SOLVED) | (status == WARNED)
+    solved = has_result(part["status"].values)
     # A size parameter met at two wavelengths with one index is one case: draw it once.
     columns = np.stack(
         [
@@ -67,9 +66,9 @@ def product_counts(table: xarray.Dataset, particle: int) -> Picture:
     )
     axes.plot(x, products, linestyle="none", color=c0, marker=m0, markersize=3.0, label="as solved")
     axes.set_ylim(bottom=0.0)
-    axes.yaxis.set_major_locator(MaxNLocator(nbins=7, integer=True))
+    axes.yaxis.set_major_locator(MaxNLocator(nbins=6))
     axes.set_xlabel("size parameter")
-    axes.set_ylabel("products per wave, all lattices")
+    axes.set_ylabel("products per wave, mean over lattices")
     axes.legend(loc="lower center", bbox_to_anchor=(0.5, 1.0), ncols=2)
     saved = 1.0 - float(products @ waves) / float(cold @ waves)
     keep = np.unique(np.linspace(0, x.size - 1, min(x.size, ROWS_SHOWN)).astype(int))
@@ -77,9 +76,9 @@ def product_counts(table: xarray.Dataset, particle: int) -> Picture:
         stem=f"products-{name}",
         title=f"Products per wave: {name}",
         caption=(
-            f"Products of the interaction matrix for each incident wave, summed over lattices, for "
-            f"{x.size} solved cases of {name}: as solved, with starts from neighbouring sizes "
-            "where there were any, and the estimate for a start from zero. "
+            "Products of the interaction matrix for each incident wave, as a mean over the "
+            f"lattices, for {x.size} solved cases of {name}: as solved, with starts from "
+            "neighbouring sizes where there were any, and the estimate for a start from zero. "
             f"Over all of them {100 * saved:.0f} % of the products were saved."
         ),
         alt=(

@@ -7,9 +7,8 @@ import math
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
-from matplotlib.ticker import FixedLocator, NullFormatter, NullLocator, ScalarFormatter
 
-from scatterloom.figures.curves import ANGLE_LABEL, angle_axis
+from scatterloom.figures.axes import ANGLE_LABEL, angle_axis, plain_log_ticks
 from scatterloom.figures.picture import Picture
 from scatterloom.figures.selection import FloatArray, Ladder, spread_sizes, thinned
 
@@ -115,23 +114,11 @@ def _mesh(
         rasterized=True,  # a vector mesh of a full table would take megabytes
     )
     axes.set_yscale("log")
-    _size_ticks(axes, float(x[0]), float(x[-1]))
+    plain_log_ticks(axes.yaxis, float(x[0]), float(x[-1]))
     axes.set_ylabel("size parameter")
     bar = figure.colorbar(mesh, ax=axes, pad=0.02, aspect=18)
     bar.ax.set_title(label, fontsize=6.5, loc="left")
     bar.outline.set_linewidth(0.5)
-
-
-def _size_ticks(axes: Axes, low: float, high: float) -> None:
-    steps = [1.0, 2.0, 5.0] if high / low > 4 else [1.0, 1.5, 2.0, 3.0, 4.0, 5.0, 6.0, 8.0]
-    decades = range(math.floor(math.log10(low)), math.ceil(math.log10(high)) + 1)
-    ticks = [s * 10.0**d for d in decades for s in steps if low <= s * 10.0**d <= high]
-    if len(ticks) < 2:
-        ticks = [float(f"{low:.3g}"), float(f"{high:.3g}")]
-    axes.yaxis.set_major_locator(FixedLocator(ticks))
-    axes.yaxis.set_major_formatter(ScalarFormatter())
-    axes.yaxis.set_minor_locator(NullLocator())
-    axes.yaxis.set_minor_formatter(NullFormatter())
 
 
 def _lines(

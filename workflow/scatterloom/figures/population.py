@@ -9,7 +9,8 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
 from scatterloom.bulk.build import Population
-from scatterloom.figures.curves import ANGLE_LABEL, LABELS, angle_axis, draw_band, series_legend
+from scatterloom.figures.axes import ANGLE_LABEL, angle_axis, plain_log_ticks, ratio_axis
+from scatterloom.figures.curves import LABELS, draw_band, series_legend
 from scatterloom.figures.picture import BAND, Picture
 from scatterloom.figures.selection import thinned
 from scatterloom.scattering.elements import RATIOS
@@ -75,6 +76,7 @@ def population_panel(
             if which.name in panels:
                 draw_band(panels[which.name], angles, value, bound, series)
                 panels[which.name].set_title(LABELS[which.name])
+                ratio_axis(panels[which.name])
         wavelength = float(part["wavelength"].values[w])
         rows += [[wavelength, angles[i], *(c[i] for c in columns)] for i in thinned(angles)]
     polarized.axhline(0.0, color="#555555", linewidth=0.6, zorder=1)
@@ -128,6 +130,7 @@ def _draw_sizes(axes: Axes, population: Population, radius_range_um: tuple[float
     ):
         axes.plot(radius, values / values.max(), color=grey, linestyle=line, label=text)
     axes.set_xscale("log")
+    plain_log_ticks(axes.xaxis, float(radius[0]), float(radius[-1]))
     axes.set_ylim(0.0, 1.35)
     axes.set_title("sizes (peak 1)")
     axes.set_xlabel("radius (µm)")

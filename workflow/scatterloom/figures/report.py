@@ -15,7 +15,7 @@ from jinja2 import Environment, StrictUndefined
 
 from scatterloom.bulk.listing import SHOWN
 from scatterloom.bulk.listing import rows as bulk_rows
-from scatterloom.store.schema import SOLVED, WARNED
+from scatterloom.scattering.record import SOLVED, SOLVED_WITH_WARNING, has_result
 
 if TYPE_CHECKING:
     import xarray
@@ -95,8 +95,7 @@ def effort_rows(table: xarray.Dataset) -> list[dict[str, Any]]:
     out = []
     for p in range(table.sizes["particle"]):
         part = table.isel(particle=p)
-        status = part["status"].values
-        solved = (status == SOLVED) | (status == WARNED)
+        solved = has_result(part["status"].values)
         names = ("size_parameter", "products", "cold_products_estimate", "wave_count")
         # Equal cases at two wavelengths were solved once.
         cases = np.unique(np.stack([part[n].values[solved] for n in names], axis=1), axis=0)
@@ -132,8 +131,8 @@ def _contents(table: xarray.Dataset) -> list[dict[str, str]]:
                 "size_parameter": f"{x.min():.3g} to {x.max():.3g}",
                 "sizes": str(x.size),
                 "solved": str(int((status == SOLVED).sum())),
-                "warned": str(int((status == WARNED).sum())),
-                "other": str(int(((status != SOLVED) & (status != WARNED)).sum())),
+                "warned": str(int((status == SOLVED_WITH_WARNING).sum())),
+                "other": str(int((~has_result(status)).sum())),
             }
         )
     return out

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterloom.store.schema import SOLVED, WARNED
+from scatterloom.scattering.record import has_result
 
 if TYPE_CHECKING:
     import xarray
@@ -31,6 +31,8 @@ class Ladder:
     solved : bool (n_size,)
     matrix, half_width : float64 (n_size, n_angle, 4, 4)
         NaN where not solved.
+    ratio_half_width : float64 (n_size, n_angle, 4, 4)
+        Of the elements over F11; of F11 the relative half width.
     """
 
     particle: str
@@ -42,6 +44,7 @@ class Ladder:
     solved: NDArray[np.bool_]
     matrix: FloatArray
     half_width: FloatArray
+    ratio_half_width: FloatArray
 
     @property
     def stem(self) -> str:
@@ -76,9 +79,10 @@ def load_ladder(table: xarray.Dataset, particle: int, wavelength: int) -> Ladder
         angle_deg=np.asarray(part["angle"].values, dtype=np.float64),
         size_parameter=np.asarray(part["size_parameter"].values, dtype=np.float64),
         radius_um=np.asarray(part["radius_um"].values, dtype=np.float64),
-        solved=(status == SOLVED) | (status == WARNED),
+        solved=has_result(status),
         matrix=np.asarray(part["scattering_matrix"].values, dtype=np.float64),
         half_width=np.asarray(part["scattering_matrix_error"].values, dtype=np.float64),
+        ratio_half_width=np.asarray(part["scattering_matrix_ratio_error"].values, dtype=np.float64),
     )
 
 

@@ -11,18 +11,12 @@ import numpy as np
 
 from scatterloom.errors import IntegrityError
 from scatterloom.scattering.audit import CHECKS, FloatArray, audit_energy, audit_matrix
-from scatterloom.scattering.elements import RATIOS, ratio
-from scatterloom.scattering.record import FAILED, MISSING, SOLVED, SOLVED_WITH_WARNING
+from scatterloom.scattering.error_bars import over_angle
+from scatterloom.scattering.record import SOLVED, STATUS_MEANINGS, has_result
 
 if TYPE_CHECKING:
     import xarray
 
-STATUS = {
-    "missing": MISSING,
-    "solved": SOLVED,
-    "solved_with_warning": SOLVED_WITH_WARNING,
-    "failed": FAILED,
-}
 FORMAT_VERSION = 1
 _EFFICIENCIES = (
     "extinction_efficiency",
@@ -31,9 +25,9 @@ _EFFICIENCIES = (
     "single_scattering_albedo",
 )
 _ACCURACY = {
-    "f11_relative": "largest half width of F11 over all angles, relative",
-    "ratio_absolute": "largest half width of the five ratios over all angles (bound)",
-    "efficiency_relative": "largest half width of extinction and scattering efficiency, relative",
+    "f11_relative": "F11, relative, root mean square over angle",
+    "ratio_absolute": "the worst ratio Fij/F11, root mean square over angle",
+    "efficiency_relative": "the worse of extinction and scattering efficiency, relative",
 }
 
 
@@ -53,7 +47,10 @@ def audit_table(table: xarray.Dataset, asked: dict[str, float]) -> dict[str, Any
         Fit for JSON: counts of cells by status and by warning; for each check the
         number of cases judged, not judged and flagged and the worst deviation in
         units of the error bar; for each kind of accuracy the half widths reached.
-        ``passed`` is whether nothing is missing, failed, warned or flagged.
+        ``short`` counts the cases solved without a warning whose half widths at the
+        table's angles are wider than asked (the solver judged its own angles and
+        warns of all others). ``passed`` is whether nothing is missing, failed, warned,
+        flagged or short.
     """
     shape = tuple(table.sizes[d] for d in ("particle", "wavelength", "size"))
     deviations = {check.name: np.full(shape, np.nan) for check in CHECKS}
@@ -66,8 +63,8 @@ def audit_table(table: xarray.Dataset, asked: dict[str, float]) -> dict[str, Any
             reached[name][p, w] = value
 
     status = table["status"].values
-    solved = (status == STATUS["solved"]) | (status == STATUS["solved_with_warning"])
-    cells = {name: int((status == value).sum()) for name, value in STATUS.items()}
+    solved = has_result(status)
+    cells = {name: int((status == value).sum()) for value, name in enumerate(STATUS_MEANINGS)}
     lossless = (table["refractive_index_k"].values == 0.0)[:, :, None]
     checks = []
     for check in CHECKS:
@@ -76,9 +73,11 @@ def audit_table(table: xarray.Dataset, asked: dict[str, float]) -> dict[str, Any
         result = _judge(table, deviations[check.name], cases, 1.0)
         checks.append({"name": check.name, "statement": check.statement, **result})
     accuracy = []
+    short = np.zeros(shape, dtype=bool)
     for name, words in _ACCURACY.items():
         result = _judge(table, reached[name], solved, asked[name])
         known = reached[name][np.isfinite(reached[name])]
+        short |= (status == SOLVED) & (reached[name] > asked[name])
         accuracy.append(
             {
                 "name": name,
@@ -102,7 +101,8 @@ def audit_table(table: xarray.Dataset, asked: dict[str, float]) -> dict[str, Any
         "checks": checks,
         "accuracy": accuracy,
         "flagged": flagged,
-        "passed": flagged == 0 and cells["solved"] == status.size,
+        "short": int(short.sum()),
+        "passed": flagged == 0 and cells["solved"] == status.size and not short.any(),
     }
 
 
@@ -122,15 +122,14 @@ def _audit_ladder(part: xarray.Dataset) -> dict[str, FloatArray]:
 
 
 def _half_widths(part: xarray.Dataset) -> dict[str, FloatArray]:
-    f = part["scattering_matrix"].values
-    h = part["scattering_matrix_error"].values.astype(np.float64)
-    ratios = np.stack([ratio(f, h, which)[1].max(axis=-1) for which in RATIOS])
+    half_width = part["scattering_matrix_ratio_error"].values.astype(np.float64)
+    f11, ratio = over_angle(half_width, part["angle"].values)
     efficiencies = np.stack(
         [part[f"{name}_error"].values / np.abs(part[name].values) for name in _EFFICIENCIES[:2]]
     )
     return {
-        "f11_relative": (h[..., 0, 0] / f[..., 0, 0]).max(axis=-1),
-        "ratio_absolute": ratios.max(axis=0),
+        "f11_relative": f11,
+        "ratio_absolute": ratio,
         "efficiency_relative": efficiencies.max(axis=0),
     }
 

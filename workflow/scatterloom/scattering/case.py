@@ -86,7 +86,7 @@ def _scalar_values(variant: _Variant) -> dict[str, float]:
 
 
 def _scalars(
-    variants: Sequence[_Variant], model: float, field_error: float
+    variants: Sequence[_Variant], model: float, field_error: float, size_parameter: float
 ) -> dict[str, tuple[float, float]]:
     """Values and half widths.
 
@@ -102,6 +102,8 @@ def _scalars(
         parts = [float(error_bars.combined(deviation, causes))]
         if name.endswith("efficiency"):
             parts.append(model * abs(best[name]))
+        if name == "asymmetry_parameter":
+            parts.append(model * error_bars.matrix_model_share(size_parameter))
         if name == "absorption_efficiency":
             parts.append(field_error * abs(best[name]))
         if name == "single_scattering_albedo":
@@ -197,7 +199,7 @@ def combine_levels(
     field_error = 0.1 * amplification * max(level.solution.residual for level in levels)
     across = 2.0 / spacing
     model = error_bars.cell_model_error((index, *inner), across)
-    scalars = _scalars(variants, model, field_error)
+    scalars = _scalars(variants, model, field_error, size_parameter)
     balance = best.result.extinction_efficiency - (
         best.result.scattering_efficiency + best.absorption
     )

@@ -51,26 +51,24 @@ RATIOS = (
 """The five ratios of a mirror-symmetric ensemble."""
 
 
-def ratio(matrix: Any, half_width: Any, which: Ratio) -> tuple[FloatArray, FloatArray]:
+def ratio(matrix: Any, ratio_half_width: Any, which: Ratio) -> tuple[FloatArray, FloatArray]:
     """Value and half width of one ratio.
 
     Parameters
     ----------
-    matrix, half_width : float64 (..., 4, 4)
-        Scattering matrices and the half widths (95 %) of their elements.
+    matrix : float64 (..., 4, 4)
+        Scattering matrices.
+    ratio_half_width : float64 (..., 4, 4)
+        Half widths (95 %) of their elements over F11, as a record or a table holds them.
     which : Ratio
         The ratio wanted.
 
     Returns
     -------
     value, half_width : float64 (...)
-        The half width is the bound ``(h_ij + |r| h_11) / F11``, which holds however
-        the errors of the two elements are correlated (to first order in h_11/F11).
     """
-    f11 = matrix[..., 0, 0]
-    value = which.sign * matrix[..., which.row, which.col] / f11
-    bound = (half_width[..., which.row, which.col] + np.abs(value) * half_width[..., 0, 0]) / f11
-    return value, bound
+    value = which.sign * matrix[..., which.row, which.col] / matrix[..., 0, 0]
+    return value, ratio_half_width[..., which.row, which.col]
 
 
 def linear_depolarization(f22_f11: Any, half_width: Any) -> tuple[Any, Any]:

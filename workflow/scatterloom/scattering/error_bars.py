@@ -41,8 +41,14 @@ What the shift of the boundary cells leaves of the error linear in the spacing, 
 even powers cannot see; measured on spheres and spheroids against exact efficiencies.
 """
 
-CELL_MODEL_MATRIX = 0.25
-"""The same for normalized matrix elements, whose errors are smaller, as a share of it."""
+def matrix_model_share(size_parameter: float) -> float:
+    """Share of the cell model's error that normalized matrix elements have.
+
+    They do not depend on the polarizability of a particle much smaller than the wavelength
+    (its matrix is that of a dipole, whatever its strength); the dependence grows as x^2.
+    """
+    return min(1.0, 0.5 * size_parameter**2)
+
 
 GRID_DEG = np.arange(0.0, 180.5, 1.0)
 """Angles on which deviations are compared [deg]."""
@@ -84,22 +90,58 @@ def combined(deviation: NDArray[np.float64], causes: Sequence[str]) -> NDArray[n
 
 def _envelope(deviation: NDArray[np.float64], reach: int) -> NDArray[np.float64]:
     """Running maximum over angle (axis 1): a deviation crossing zero is not small by merit."""
-    padding = [(0, 0), (reach, reach), (0, 0), (0, 0)]
-    padded = np.pad(deviation, padding, mode="edge")
-    windows = np.lib.stride_tricks.sliding_window_view(padded, 2 * reach + 1, axis=1)
-    return windows.max(axis=-1)
+    count, width = deviation.shape[1], 2 * reach + 1
+    out = deviation[:, np.clip(np.arange(-reach, count + reach), 0, count - 1)]
+    reached = 1
+    while reached < width:
+        # Two windows side by side, or overlapping, make one.
+        step = min(reached, width - reached)
+        out = np.maximum(out[:, :-step], out[:, step:])
+        reached += step
+    return out
 
 
 def _at(angles_deg: NDArray[np.float64], on_grid: NDArray[np.float64]) -> NDArray[np.float64]:
-    flat = on_grid.reshape(GRID_DEG.size, 16)
-    columns = [np.interp(angles_deg, GRID_DEG, column) for column in flat.T]
-    return np.stack(columns, axis=-1).reshape(len(angles_deg), 4, 4)
+    """Linear interpolation of all columns of (n_grid, n_column) from `GRID_DEG` at once."""
+    place = np.interp(angles_deg, GRID_DEG, np.arange(float(GRID_DEG.size)))
+    low = np.minimum(place.astype(np.intp), GRID_DEG.size - 2)
+    share = (place - low)[:, None]
+    return np.asarray((1.0 - share) * on_grid[low] + share * on_grid[low + 1])
+
+
+def over_angle(
+    ratio_half_width: NDArray[np.float64], angles_deg: NDArray[np.float64]
+) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    """Half widths of matrices in two numbers, as accuracy is asked for.
+
+    Root mean squares over scattering angle, every degree between the ends counting alike:
+    a half width relative to a value that nearly vanishes at one angle says little.
+
+    Parameters
+    ----------
+    ratio_half_width : float64 (..., n_angle, 4, 4)
+        As `matrix_half_widths` returns it.
+    angles_deg : float64 (n_angle,) [deg]
+        Increasing.
+
+    Returns
+    -------
+    f11_relative, ratio_absolute : float64 (...)
+        Of F11, and the largest of all other elements over F11.
+    """
+    weight = np.ones(1)
+    if len(angles_deg) > 1:
+        step = np.pad(np.diff(angles_deg), 1)
+        weight = step[1:] + step[:-1]
+    squares = np.tensordot(ratio_half_width**2, weight / weight.sum(), axes=([-3], [0]))
+    spread = np.sqrt(squares).reshape(*squares.shape[:-2], 16)
+    return spread[..., 0], spread[..., 1:].max(axis=-1)
 
 
 def matrix_half_widths(
     expansion: NDArray[np.float64],
     causes: Sequence[str],
-    model_error: float,
+    floor: float,
     angles_deg: NDArray[np.float64],
 ) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
     """Half widths of all elements, and of all elements over F11.
@@ -113,8 +155,8 @@ def matrix_half_widths(
         Best estimate first.
     causes : sequence of str
         Cause of each variant.
-    model_error : float
-        Relative error of efficiencies from the cell model.
+    floor : float
+        Error from the cell model, relative to F11.
     angles_deg : float64 (n_angle,) [deg]
 
     Returns
@@ -122,19 +164,21 @@ def matrix_half_widths(
     element, ratio : float64 (n_angle, 4, 4)
         The ratio of F11 to itself has the relative half width of F11 in its place.
     """
-    matrices = synthesize(expansion, GRID_DEG)
-    f11 = matrices[..., :1, :1]
-    ratios = matrices / f11
-    ratios[..., 0, 0] = matrices[..., 0, 0] / matrices[0, :, 0, 0]
+    shape = (expansion.shape[0], GRID_DEG.size, 16)
+    matrices = synthesize(expansion, GRID_DEG).reshape(shape)
+    # Elements that symmetry makes zero are exactly zero in every variant.
+    present = np.flatnonzero(np.any(matrices != 0.0, axis=(0, 1)))
+    f11, elements = matrices[..., :1], matrices[..., present]
+    ratios = elements / f11
+    ratios[..., present == 0] = f11 / f11[0]
     # The finest structure of degree l_max is 180/l_max degrees wide.
     degree = max(1, expansion.shape[1] - 1)
     reach = max(1, round(90.0 / degree))
-    floor = CELL_MODEL_MATRIX * model_error
-    out = []
-    for values, scale in ((matrices, f11[0]), (ratios, np.ones_like(f11[0]))):
-        deviation = _envelope(np.abs(values - values[:1]), reach)
-        # Elements that symmetry makes zero are exactly zero in every variant.
-        present = np.any(values != 0.0, axis=(0, 1))
-        width = np.hypot(combined(deviation, causes), floor * scale * present)
-        out.append(_at(angles_deg, width))
-    return out[0], out[1]
+    values = np.concatenate([elements, ratios], axis=-1)
+    spread = combined(_envelope(np.abs(values - values[:1]), reach), causes)
+    scale = np.repeat(np.stack([f11[0, :, 0], np.ones(GRID_DEG.size)], axis=1), present.size, 1)
+    width = np.hypot(spread, floor * scale)
+    out = np.zeros((len(angles_deg), 2, 16))
+    out[..., present] = _at(angles_deg, width).reshape(-1, 2, present.size)
+    element, ratio = out.reshape(-1, 2, 4, 4).swapaxes(0, 1)
+    return element, ratio

@@ -38,6 +38,7 @@ first factor changes helicity by 2 -> 2, the second by -2 -> 2.
 from __future__ import annotations
 
 import math
+from functools import lru_cache
 from typing import Any
 
 import numpy as np
@@ -104,6 +105,18 @@ def wigner_d(m: int, n: int, l_max: int, cos_angle: ArrayLike) -> FloatArray:
         middle = (2 * degree + 1) * (degree * up * x - m * n)
         d[up] = (middle * d[degree] - behind * d[degree - 1]) / ahead
     return d
+
+
+@lru_cache(maxsize=64)
+def _kept_wigner_d(m: int, n: int, l_max: int, cosines: bytes) -> FloatArray:
+    """Wigner functions as (n_angle, l_max + 1), kept for the next case on the same angles.
+
+    `cosines` are the bytes of the float64 cosines. Cases of a ladder come in order of size,
+    so that a few degrees and two angle grids are in use at a time.
+    """
+    table = np.ascontiguousarray(wigner_d(m, n, l_max, np.frombuffer(cosines)).T)
+    table.flags.writeable = False
+    return table
 
 
 def expand(
@@ -178,7 +191,8 @@ def synthesize(coefficients: ArrayLike, angles_deg: ArrayLike) -> FloatArray:
     if c.ndim < 3 or c.shape[-2:] != (4, 4):
         raise ValueError(f"coefficients must have shape (..., l_max + 1, 4, 4), found {c.shape}")
     x = np.cos(np.deg2rad(np.atleast_1d(np.asarray(angles_deg, dtype=np.float64))))
-    d00, d02, d22, d2m2 = (wigner_d(m, n, c.shape[-3] - 1, x).T for m, n in _PAIRS)
+    cosines = x.tobytes()
+    d00, d02, d22, d2m2 = (_kept_wigner_d(m, n, c.shape[-3] - 1, cosines) for m, n in _PAIRS)
 
     f = np.zeros((*c.shape[:-3], x.size, 4, 4))
     f[..., *_SCALAR] = d00 @ c[..., *_SCALAR]

@@ -10,10 +10,13 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterloom.scattering.error_bars import BEST, matrix_half_widths
+from scatterloom.scattering.error_bars import BEST, matrix_half_widths, matrix_model_share
 from scatterloom.scattering.expansion import synthesize
 
-MISSING, SOLVED, SOLVED_WITH_WARNING, FAILED = 0, 1, 2, 3
+MISSING, SOLVED, SOLVED_WITH_WARNING, FAILED = range(4)
+
+STATUS_MEANINGS = ("missing", "solved", "solved_with_warning", "failed")
+"""Names of the status numbers, in their order."""
 
 FLAGS: dict[str, tuple[int, str]] = {
     "not_converged": (1, "the block solve stopped before its tolerance was met"),
@@ -37,6 +40,11 @@ SCALARS = (
     "asymmetry_parameter",
     "single_scattering_albedo",
 )
+
+
+def has_result(status: Any) -> NDArray[np.bool_]:
+    """Whether cells of a table with these status numbers hold numbers."""
+    return np.isin(status, (SOLVED, SOLVED_WITH_WARNING))
 
 
 @dataclass
@@ -135,9 +143,8 @@ class CaseRecord:
             Of every element over F11; of F11 itself the relative half width.
         """
         matrix = synthesize(self.expansion[0], angles_deg)
-        element, ratio = matrix_half_widths(
-            self.expansion, self.causes, self.model_error, angles_deg
-        )
+        floor = self.model_error * matrix_model_share(self.size_parameter)
+        element, ratio = matrix_half_widths(self.expansion, self.causes, floor, angles_deg)
         return matrix, element, ratio
 
     def to_arrays(self) -> dict[str, np.ndarray]:

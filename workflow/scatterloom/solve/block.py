@@ -144,8 +144,12 @@ def solve_block(
             images = _apply(matrix, blocks)
             used += sum(len(block) for block in blocks)
             wanted = [it.propose(threshold()) for it in iterates]
-            missed = _norm([w - image for w, image in zip(wanted, images, strict=True)])
-            start_residual = missed / max(_norm(wanted), 1e-300)
+            shares = [
+                it.shortfall(w, image)
+                for it, w, image in zip(iterates, wanted, images, strict=True)
+            ]
+            missed, whole = np.sqrt(np.sum(np.square(shares), axis=0))
+            start_residual = missed / max(whole, 1e-300)
             if not start_residual <= BAD_START:
                 dropped = True
                 continue

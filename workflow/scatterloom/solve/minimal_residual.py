@@ -58,6 +58,16 @@ class ClassIterate:
         combine = significant_rows(gram(self.incident), threshold)
         return combine.astype(start.dtype) @ start
 
+    def shortfall(self, wanted: NDArray, images: NDArray) -> tuple[float, float]:
+        """Norm of B, in the span of the rows `wanted`, that the rows `images` miss, and of all.
+
+        Each direction counts with the strength it has in B: one that hardly occurs there may
+        be wrong altogether without harm.
+        """
+        strength = np.linalg.norm(self.incident @ wanted.conj().T, axis=0)
+        missed = np.linalg.norm(wanted - images, axis=1)
+        return float(np.linalg.norm(strength * missed)), float(np.linalg.norm(strength))
+
     def take(self, directions: NDArray, images: NDArray) -> None:
         """Minimize the residual over the new directions as well.
 

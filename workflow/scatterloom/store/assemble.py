@@ -11,7 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterloom.errors import IntegrityError
-from scatterloom.scattering.record import CaseRecord
+from scatterloom.scattering.record import FAILED, CaseRecord
 from scatterloom.store import schema
 from scatterloom.store.casefile import read_records
 
@@ -81,7 +81,7 @@ def put_scalars(
         columns[name][cell] = getattr(record, name)
     for name in ("products", "cold_products_estimate", "residual", "wall_seconds"):
         columns[name][cell] = getattr(record, name)
-    if record.status == schema.FAILED:
+    if record.status == FAILED:
         return
     for variable in schema.SCALARS:
         value, half_width = record.scalars[variable.name]
@@ -93,7 +93,7 @@ def matrix_block(
     cells: Iterable[tuple[tuple[int, ...], CaseRecord | None]],
     shape: tuple[int, ...],
     angles_deg: FloatArray,
-) -> tuple[NDArray[np.float64], NDArray[np.float32]]:
+) -> dict[str, NDArray[Any]]:
     """Evaluate the scattering matrices of a block of cells.
 
     Parameters
@@ -106,15 +106,14 @@ def matrix_block(
 
     Returns
     -------
-    matrix : float64 (\\*shape, n_angle, 4, 4)
-    half_width : float32 (\\*shape, n_angle, 4, 4)
-        NaN in the cells of missing and failed cases.
+    dict of str to (\\*shape, n_angle, 4, 4)
+        By name of variable; NaN in the cells of missing and failed cases.
     """
     full = (*shape, len(angles_deg), 4, 4)
-    matrix = np.full(full, np.nan)
-    half_width = np.full(full, np.nan, np.float32)
+    out = {variable.name: empty_block(variable, full) for variable in schema.matrices()}
     for position, record in cells:
-        if record is None or record.status == schema.FAILED:
+        if record is None or record.status == FAILED:
             continue
-        matrix[position], half_width[position], _ = record.scattering_matrix(angles_deg)
-    return matrix, half_width
+        for block, part in zip(out.values(), record.scattering_matrix(angles_deg), strict=True):
+            block[position] = part
+    return out

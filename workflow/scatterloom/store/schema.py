@@ -6,12 +6,17 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 from typing import Any
 
+from scatterloom.scattering.record import (
+    FAILED,
+    MISSING,
+    SOLVED,
+    SOLVED_WITH_WARNING,
+    STATUS_MEANINGS,
+)
+
 GRID = ("particle", "wavelength", "size")
 MATRIX = (*GRID, "angle", "row", "col")
 DIMENSIONS = MATRIX
-
-MISSING, SOLVED, WARNED, FAILED = range(4)
-STATUS_MEANINGS = ("missing", "solved", "solved_with_warning", "failed")
 
 COVERAGE_PERCENT = 95
 COVERAGE = (
@@ -23,6 +28,7 @@ MATRIX_COMMENT = (
     "so a small sphere has a negative element 12 at 90 degrees; orientation average; normalized "
     "so that the mean of element 11 over the sphere is 1"
 )
+HALF_WIDTH = {"coverage_percent": COVERAGE_PERCENT, "kind": "half_width"}
 EFFICIENCY_COMMENT = "cross section divided by that of the sphere of equal volume"
 
 
@@ -42,6 +48,8 @@ class Variable:
         What a reader must know to use the numbers.
     error : bool
         Whether a companion `NAME_error` holds its half width.
+    companions : tuple of str
+        Further variables that say how good the values are.
     content : str
         Kind of content in the words of ACDD 1.3: "modelResult", "coordinate" or
         "qualityInformation"; found from the name and dimensions if "".
@@ -57,6 +65,7 @@ class Variable:
     standard_name: str | None = None
     comment: str | None = None
     error: bool = False
+    companions: tuple[str, ...] = ()
     content: str = ""
     extra: dict[str, Any] = field(default_factory=dict)
 
@@ -80,7 +89,8 @@ class Variable:
         if self.comment:
             attributes["comment"] = self.comment
         if self.error:
-            attributes["ancillary_variables"] = f"{self.name}_error status"
+            linked = (f"{self.name}_error", *self.companions, "status")
+            attributes["ancillary_variables"] = " ".join(linked)
         if self.dims[:3] == GRID:
             attributes["coordinates"] = " ".join(AUXILIARY)
         return attributes | self.extra
@@ -178,6 +188,19 @@ SCATTERING_MATRIX = Variable(
     "scattering (Mueller) matrix, orientation average",
     comment=MATRIX_COMMENT,
     error=True,
+    companions=("scattering_matrix_ratio_error",),
+)
+
+RATIO_ERROR = Variable(
+    "scattering_matrix_ratio_error",
+    MATRIX,
+    "f4",
+    f"{COVERAGE_PERCENT} % half width of scattering_matrix divided by its element 11",
+    comment="The values Fij/F11 are not stored: divide scattering_matrix by its element 11. Errors "
+    "of an element and of element 11 go together, so these half widths are smaller than what "
+    "scattering_matrix_error suggests. Element 11 over itself is exactly 1; in its place stands "
+    f"the relative half width of element 11. A half width is the {COVERAGE}",
+    extra=HALF_WIDTH,
 )
 
 INDICES = (
@@ -207,7 +230,7 @@ DIAGNOSTICS = (
         units="",
         extra={
             "standard_name": "status_flag",
-            "flag_values": [MISSING, SOLVED, WARNED, FAILED],
+            "flag_values": [MISSING, SOLVED, SOLVED_WITH_WARNING, FAILED],
             "flag_meanings": " ".join(STATUS_MEANINGS),
         },
     ),
@@ -247,8 +270,13 @@ def error_variable(variable: Variable) -> Variable:
         f"{COVERAGE_PERCENT} % half width of {variable.long_name}",
         variable.units,
         comment=COVERAGE,
-        extra={"coverage_percent": COVERAGE_PERCENT, "kind": "half_width"},
+        extra=HALF_WIDTH,
     )
+
+
+def matrices() -> tuple[Variable, ...]:
+    """Scattering matrix and its half widths, in the order of `CaseRecord.scattering_matrix`."""
+    return SCATTERING_MATRIX, error_variable(SCATTERING_MATRIX), RATIO_ERROR
 
 
 def variables(
@@ -262,7 +290,8 @@ def variables(
         Bit and meaning of the warnings by name, written as CF flags.
     """
     listed: list[Variable] = [*COORDINATES]
-    for variable in (SCATTERING_MATRIX, *SCALARS):
+    listed += matrices()
+    for variable in SCALARS:
         listed += [variable, error_variable(variable)]
     listed += [*INDICES, *DIAGNOSTICS]
     if warning_flags:

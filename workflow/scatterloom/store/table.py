@@ -11,7 +11,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from scatterloom.errors import IntegrityError
-from scatterloom.store import schema
+from scatterloom.scattering.record import STATUS_MEANINGS
 from scatterloom.store.assemble import Cases
 from scatterloom.store.atomic import sweep_abandoned
 from scatterloom.store.commit import commit_record, publish, staging, verify_folder
@@ -68,8 +68,8 @@ def gather(
         replaced = not _holds(path, digest)
         if replaced:
             publish(folder, path, KIND, digest, now())
-    counts = np.bincount(status.ravel(), minlength=len(schema.STATUS_MEANINGS))
-    cells = dict(zip(schema.STATUS_MEANINGS, counts.tolist(), strict=True))
+    counts = np.bincount(status.ravel(), minlength=len(STATUS_MEANINGS))
+    cells = dict(zip(STATUS_MEANINGS, counts.tolist(), strict=True))
     return Gathered(path, digest, replaced, cells)
 
 

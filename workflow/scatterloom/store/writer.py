@@ -156,7 +156,6 @@ def write_hierarchy(
             columns[name] = empty_block(variable, shape)
 
     matrix = arrays["scattering_matrix"]
-    half_width = arrays["scattering_matrix_error"]
     for region in regions(matrix.shape, matrix.unit):
         grid = region[:3]
         cells = []
@@ -166,10 +165,10 @@ def write_hierarchy(
             if record is not None:
                 put_scalars(columns, cell, record)
             cells.append((offset, record))
-        values, errors = matrix_block(cells, axes.where[grid].shape, axes.angles_deg)
+        blocks = matrix_block(cells, axes.where[grid].shape, axes.angles_deg)
         angles, rows, cols = region[3:]
-        matrix.write(region, values[:, :, :, angles, rows, cols])
-        half_width.write(region, errors[:, :, :, angles, rows, cols])
+        for name, block in blocks.items():
+            arrays[name].write(region, block[:, :, :, angles, rows, cols])
 
     for name, content in columns.items():
         arrays[name].write_all(content)
