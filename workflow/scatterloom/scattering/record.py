@@ -158,12 +158,14 @@ class CaseRecord:
                 "variants", "causes", "model_error", "levels",
             )
         }  # fmt: skip
-        return {
+        arrays = {
             "header": np.array(json.dumps(header, sort_keys=True)),
             "index": np.array(self.index, dtype=np.complex128),
-            "inner_indices": np.array(self.inner_indices, dtype=np.complex128),
             "expansion": self.expansion,
         }
+        if self.inner_indices:
+            arrays["inner_indices"] = np.array(self.inner_indices, dtype=np.complex128)
+        return arrays
 
     @classmethod
     def from_arrays(cls, arrays: dict[str, Any]) -> CaseRecord:
@@ -181,7 +183,7 @@ class CaseRecord:
         header["scalars"] = {k: (v[0], v[1]) for k, v in header["scalars"].items()}
         return cls(
             index=complex(arrays["index"]),
-            inner_indices=tuple(complex(m) for m in arrays["inner_indices"]),
+            inner_indices=tuple(complex(m) for m in arrays.get("inner_indices", ())),
             expansion=np.asarray(arrays["expansion"]),
             **header,
         )
