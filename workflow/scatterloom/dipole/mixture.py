@@ -91,7 +91,7 @@ def mixed_cell_tensors(
     volume = kd**3
     inverse_chi = 4 * np.pi / (permittivity - 1.0)
     alpha = volume / (inverse_chi - self_term(kd))
-    loss = -(inverse_chi.imag / volume) * np.abs(alpha) ** 2
+    loss = -(inverse_chi.imag / volume) * np.abs(alpha)  # P = alpha^1/2 x
     return CellTensors(
         root=_components(np.sqrt(alpha), frame),
         loss=_components(loss, frame),
