@@ -7,8 +7,9 @@ from collections.abc import Sequence
 import numpy as np
 from numpy.typing import NDArray
 
+from scatterloom.dipole.exchange import exchanges
 from scatterloom.dipole.polarizability import CellTensors, boundary_shift, cell_tensors, self_term
-from scatterloom.particle.lattice import MEDIUM, Composition, Lattice
+from scatterloom.particle.lattice import MEDIUM, Lattice
 
 
 def particle_tensors(lattice: Lattice, indices: Sequence[complex], kd: float) -> CellTensors:
@@ -32,12 +33,10 @@ def particle_tensors(lattice: Lattice, indices: Sequence[complex], kd: float) ->
         raise ValueError(f"{len(indices)} refractive indices for {materials} materials")
     if lattice.composition is None:
         return cell_tensors(lattice.fill, lattice.normal, indices[0], kd, lattice.area)
-    return mixed_cell_tensors(lattice.composition, indices, kd)
+    return mixed_cell_tensors(lattice, indices, kd)
 
 
-def mixed_cell_tensors(
-    composition: Composition, indices: Sequence[complex], kd: float
-) -> CellTensors:
+def mixed_cell_tensors(lattice: Lattice, indices: Sequence[complex], kd: float) -> CellTensors:
     """Polarizability of cells of several materials, with any number of interfaces in each.
 
     With the arithmetic mean a and the harmonic mean h of the permittivity, and the dyad
@@ -53,23 +52,26 @@ def mixed_cell_tensors(
 
     Each interface is shifted as `boundary_shift` says, with the permittivity inside relative to
     that outside, since a static field does not change when all permittivities are scaled:
-    the contrast of (e1, e2) is (e1 - e2)/(e1 + 2 e2), and the shift moves e2 to e1.
+    the contrast of (e1, e2) is (e1 - e2)/(e1 + 2 e2), and the shift moves e2 to e1. Where the
+    lattice knows the first moments of its cells, material moves between neighbours as
+    `scatterloom.dipole.exchange` says.
 
     Parameters
     ----------
-    composition : Composition
+    lattice : Lattice
+        One that has a composition.
     indices : sequence of complex (n_material,)
-        Relative to the medium.
+        Relative to the medium, from outside inwards.
     kd : float
         Lattice spacing times wavenumber.
     """
     eps = np.array([complex(m) ** 2 for m in indices])
     arithmetic = bool(np.any(eps.real < 0.0))
-    mean = 1.0 + (eps - 1.0) @ composition.fraction
-    inverse = 1.0 + (1.0 / eps - 1.0) @ composition.fraction
+    mean = 1.0 + (eps - 1.0) @ lattice.fraction
+    inverse = 1.0 + (1.0 / eps - 1.0) @ lattice.fraction
     total = np.zeros(mean.size)
     dyad = np.zeros((mean.size, 3, 3))
-    pieces = zip(composition.interfaces, composition.area_vector, strict=True)
+    pieces = zip(lattice.interfaces, lattice.area_vector, strict=True)
     for (inside, outside), vector in () if arithmetic else pieces:
         area = np.linalg.norm(vector, axis=1)
         cut = np.flatnonzero(area)
@@ -80,6 +82,14 @@ def mixed_cell_tensors(
         inverse[cut] += along * area * (1.0 / inner - 1.0 / outer)
         total[cut] += area
         dyad[cut] += area[:, None, None] * normal[:, :, None] * normal[:, None, :]
+    for step in () if arithmetic else exchanges(lattice):
+        inner, outer = eps[step.inside], 1.0 if step.outside == MEDIUM else eps[step.outside]
+        for cells, amount in ((step.giver, -step.amount), (step.taker, step.amount)):
+            # A cell may take from several neighbours.
+            np.add.at(mean, cells, amount * (inner - outer))
+            np.add.at(inverse, cells, amount * (1.0 / inner - 1.0 / outer))
+        np.add.at(total, step.taker, np.abs(step.amount))
+        np.add.at(dyad, step.taker, np.abs(step.amount)[:, None, None] * step.dyad)
     share = np.zeros((mean.size, 3))
     frame = np.broadcast_to(np.eye(3), dyad.shape).copy()
     cut = np.flatnonzero(total)

@@ -54,11 +54,16 @@ class Cut:
         Volume fraction inside the body.
     surfaces : list of float64 box + (3,)
         For each smooth piece of the surface, its area vector (outward mean normal times
-        area) inside every cell, in units of a cell's face; 0 in full and empty cells.
+        area) inside every cell, in units of a cell's face. A face of a polyhedron that lies on
+        faces of cells belongs to the full cells on its inner side.
+    moment : float64 box + (3,) or None
+        Integral over the body's part of each cell of the position from the cell's centre,
+        in cells; known for polyhedra only.
     """
 
     fill: Floats
     surfaces: list[Floats]
+    moment: Floats | None = None
 
 
 def cut(shape: Shape, scale: float, placement: Placement) -> Cut:
@@ -90,7 +95,6 @@ def _ellipsoid(half_axes: Floats, placement: Placement) -> Cut:
 
 def _polyhedron(body: Polyhedron, placement: Placement) -> Cut:
     normals, _ = body.planes
-    fill, facet = polyhedron_overlap(body, placement.origin, placement.box)
+    fill, facet, moment = polyhedron_overlap(body, placement.origin, placement.box)
     fill[fill >= FULL] = 1.0
-    facet[:, fill == 1.0] = 0.0
-    return Cut(fill, [a[..., None] * n for a, n in zip(facet, normals, strict=True)])
+    return Cut(fill, [a[..., None] * n for a, n in zip(facet, normals, strict=True)], moment)

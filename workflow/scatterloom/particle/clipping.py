@@ -16,7 +16,8 @@ from scatterloom.particle.polyhedron import Polyhedron
 Floats = NDArray[np.float64]
 
 _ON_PLANE = 1e-11
-"""A face this near [cells] to a face of the cell counts as lying on it, and cuts no cell."""
+"""A face this near [cells] to a face of the cell counts as lying on it: it cuts no cell, and
+its area belongs to the cell on its inner side."""
 
 
 @njit(cache=True)
@@ -69,14 +70,53 @@ def _area(polygon, count, normal):  # type: ignore[no-untyped-def]
 
 
 @njit(cache=True)
+def _square(polygon, count, axis, area):  # type: ignore[no-untyped-def]
+    """Integral of the squared coordinate over a polygon of this area.
+
+    By triangles from the first corner, whose share of the area follows from the whole.
+    """
+    total, weight = 0.0, 0.0
+    a = polygon[0, axis]
+    for i in range(1, count - 1):
+        part = 0.0
+        for p in range(3):
+            q, r = (p + 1) % 3, (p + 2) % 3
+            part += (
+                (polygon[i, q] - polygon[0, q]) * (polygon[i + 1, r] - polygon[0, r])
+                - (polygon[i, r] - polygon[0, r]) * (polygon[i + 1, q] - polygon[0, q])
+            ) ** 2
+        part = np.sqrt(part)
+        b, c = polygon[i, axis], polygon[i + 1, axis]
+        total += part * (a * a + b * b + c * c + a * b + b * c + c * a) / 6.0
+        weight += part
+    return total * area / weight if weight > 0.0 else 0.0
+
+
+@njit(cache=True)
+def _within(ring, count, centre, side, polygon, spare):  # type: ignore[no-untyped-def]
+    """Part of a face within a cell, seen from its centre, in `polygon`; number of corners."""
+    for corner in range(count):
+        for c in range(3):
+            polygon[corner, c] = ring[corner, c] - centre[c]
+    for axis in range(3):
+        for sign in (-1.0, 1.0):
+            side[:] = 0.0
+            side[axis] = sign
+            count = _clip(polygon, count, side, 0.5 + _ON_PLANE, spare)
+    return count
+
+
+@njit(cache=True)
 def _cells(normals, distances, rings, sizes, origin, box):  # type: ignore[no-untyped-def]
     n_face = normals.shape[0]
     fill = np.zeros((box[0], box[1], box[2]))
     facet = np.zeros((n_face, box[0], box[1], box[2]))
+    moment = np.zeros((box[0], box[1], box[2], 3))
     room = rings.shape[1] + n_face + 8
     polygon = np.empty((room, 3))
     spare = np.empty((room, 3))
     active = np.empty(n_face, dtype=np.int64)
+    touching = np.empty(n_face, dtype=np.int64)
     centre = np.empty(3)
     side = np.zeros(3)
     for i in range(box[0]):
@@ -85,7 +125,7 @@ def _cells(normals, distances, rings, sizes, origin, box):  # type: ignore[no-un
                 centre[0] = i + 0.5 - origin[0]
                 centre[1] = j + 0.5 - origin[1]
                 centre[2] = k + 0.5 - origin[2]
-                count = 0
+                count, lying = 0, 0
                 empty = False
                 for f in range(n_face):
                     n = normals[f]
@@ -97,8 +137,15 @@ def _cells(normals, distances, rings, sizes, origin, box):  # type: ignore[no-un
                     if inside < reach - _ON_PLANE:
                         active[count] = f
                         count += 1
+                    elif inside <= reach + _ON_PLANE:
+                        touching[lying] = f
+                        lying += 1
                 if empty:
                     continue
+                for a in range(lying):
+                    f = touching[a]
+                    number = _within(rings[f], sizes[f], centre, side, polygon, spare)
+                    facet[f, i, j, k] = _area(polygon, number, normals[f])
                 if count == 0:
                     fill[i, j, k] = 1.0
                     continue
@@ -117,28 +164,25 @@ def _cells(normals, distances, rings, sizes, origin, box):  # type: ignore[no-un
                             f = active[a]
                             distance = distances[f] - np.dot(normals[f], centre)
                             number = _clip(polygon, number, normals[f], distance, spare)
-                        volume += 0.5 * _area(polygon, number, side) / 3.0
+                        area = _area(polygon, number, side)
+                        volume += 0.5 * area / 3.0
+                        moment[i, j, k, axis] += sign * area / 8.0
                 for a in range(count):
                     f = active[a]
-                    number = sizes[f]
-                    for corner in range(number):
-                        for c in range(3):
-                            polygon[corner, c] = rings[f, corner, c] - centre[c]
-                    for axis in range(3):
-                        for sign in (-1.0, 1.0):
-                            side[:] = 0.0
-                            side[axis] = sign
-                            number = _clip(polygon, number, side, 0.5, spare)
+                    number = _within(rings[f], sizes[f], centre, side, polygon, spare)
                     area = _area(polygon, number, normals[f])
                     facet[f, i, j, k] = area
+                    for axis in range(3):
+                        square = _square(polygon, number, axis, area)
+                        moment[i, j, k, axis] += 0.5 * normals[f, axis] * square
                     volume += (distances[f] - np.dot(normals[f], centre)) * area / 3.0
                 fill[i, j, k] = volume
-    return fill, facet
+    return fill, facet, moment
 
 
 def polyhedron_overlap(
     body: Polyhedron, origin: Floats, box: tuple[int, int, int]
-) -> tuple[Floats, Floats]:
+) -> tuple[Floats, Floats, Floats]:
     """Fill fraction of every cell of a box, and the area of every face inside it.
 
     Parameters
@@ -154,7 +198,9 @@ def polyhedron_overlap(
     fill : float64 box
         In [0, 1]; 1 in cells that the surface does not enter.
     facet : float64 (n_face,) + box
-        In units of a cell's face; a face that lies on faces of cells cuts none of them.
+        In units of a cell's face; a face that lies on faces of cells belongs to those inside.
+    moment : float64 box + (3,)
+        Integral over the body's part of the cell of the position from the cell's centre.
     """
     normals, distances = body.planes
     longest = max(len(face) for face in body.faces)
@@ -162,7 +208,7 @@ def polyhedron_overlap(
     for ring, face in zip(rings, body.faces, strict=True):
         ring[: len(face)] = body.corners[list(face)]
     sizes = np.array([len(face) for face in body.faces])
-    fill, facet = _cells(
+    fill, facet, moment = _cells(
         normals, distances, rings, sizes, np.asarray(origin, dtype=np.float64), np.array(box)
     )
-    return np.clip(fill, 0.0, 1.0), np.maximum(facet, 0.0)
+    return np.clip(fill, 0.0, 1.0), np.maximum(facet, 0.0), moment

@@ -36,11 +36,15 @@ class Composition:
         Materials on either side of each smooth piece of surface, -1 for the medium.
     area_vector : float64 (n_interface, n_cell, 3)
         Outward mean normal times area of each piece in every cell, in units of a face.
+    moment : float64 (n_material, n_cell, 3) or None
+        Integral of the position from the cell's centre over the part of the cell inside the
+        outer interface of each material [cells]; None where it is not made use of.
     """
 
     fraction: Floats
     interfaces: tuple[tuple[int, int], ...]
     area_vector: Floats
+    moment: Floats | None = None
 
 
 # Compared and hashed by identity: it holds arrays.
@@ -187,10 +191,12 @@ def lattice(
         # Nested bodies: each material is what one body holds beyond the next.
         held = [fill[inside], *(np.minimum(c.fill[inside], fill[inside]) for c in cuts[1:])]
         held.append(np.zeros_like(held[0]))
+        moments = [c.moment[inside] for c in cuts if c.moment is not None]
         composition = Composition(
             fraction=np.stack([outside - within for outside, within in pairwise(held)]),
             interfaces=tuple((m, m - 1) for m, c in enumerate(cuts) for _ in c.surfaces),
             area_vector=np.stack([part[inside] for c in cuts for part in c.surfaces]) + 0.0,
+            moment=None if not moments else np.stack(moments),
         )
     nx, ny, nz = place.box
     ox, oy, oz = (float(o) for o in place.origin)
