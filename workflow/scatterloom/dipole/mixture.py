@@ -40,7 +40,8 @@ def mixed_cell_tensors(lattice: Lattice, indices: Sequence[complex], kd: float) 
     """Polarizability of cells of several materials, with any number of interfaces in each.
 
     With the arithmetic mean a and the harmonic mean h of the permittivity, and the dyad
-    N = <n n> of the normal averaged over all interfaces in the cell, the inverse
+    N = <n n> of the normal averaged over all interfaces in the cell (weighted by area and
+    contrast), the inverse
     permittivity is N / h + (I - N) / a (Kottke et al. 2008, Phys. Rev. E 77, 036611, with
     N in place of n n). One interface, or parallel ones such as those of a thin plate, give
     the two means along the normal and across it; a dyad, unlike a mean normal, does not
@@ -80,16 +81,18 @@ def mixed_cell_tensors(lattice: Lattice, indices: Sequence[complex], kd: float) 
         along, across = boundary_shift(normal, inner / outer)
         mean[cut] += across * area * (inner - outer)
         inverse[cut] += along * area * (1.0 / inner - 1.0 / outer)
-        total[cut] += area
-        dyad[cut] += area[:, None, None] * normal[:, :, None] * normal[:, None, :]
+        weight = _contrast(inner, outer) * area
+        total[cut] += weight
+        dyad[cut] += weight[:, None, None] * normal[:, :, None] * normal[:, None, :]
     for step in () if arithmetic else exchanges(lattice):
         inner, outer = eps[step.inside], 1.0 if step.outside == MEDIUM else eps[step.outside]
         for cells, amount in ((step.giver, -step.amount), (step.taker, step.amount)):
             # A cell may take from several neighbours.
             np.add.at(mean, cells, amount * (inner - outer))
             np.add.at(inverse, cells, amount * (1.0 / inner - 1.0 / outer))
-        np.add.at(total, step.taker, np.abs(step.amount))
-        np.add.at(dyad, step.taker, np.abs(step.amount)[:, None, None] * step.dyad)
+        weight = _contrast(inner, outer) * np.abs(step.amount)
+        np.add.at(total, step.taker, weight)
+        np.add.at(dyad, step.taker, weight[:, None, None] * step.dyad)
     share = np.zeros((mean.size, 3))
     frame = np.broadcast_to(np.eye(3), dyad.shape).copy()
     cut = np.flatnonzero(total)
@@ -107,6 +110,11 @@ def mixed_cell_tensors(lattice: Lattice, indices: Sequence[complex], kd: float) 
         loss=_components(loss, frame),
         arithmetic=arithmetic,
     )
+
+
+def _contrast(inner: complex, outer: complex) -> float:
+    """Weight of an interface in the mean dyad: one without contrast is none."""
+    return abs((inner - outer) / (inner + outer))
 
 
 def _components(values: NDArray, frame: NDArray[np.float64]) -> NDArray:
