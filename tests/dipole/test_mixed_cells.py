@@ -139,40 +139,44 @@ def test_shift_of_an_inner_interface_is_relative_to_the_coating():
     np.testing.assert_allclose(found, expected, rtol=1e-10, atol=1e-12)
 
 
-def second_moments(shape):
-    """Integrals of x^2, y^2, z^2 over a brick or a hexagonal prism (5/24 R^2 for a hexagon)."""
-    half = shape.half_extents
-    if shape.kind == "cuboid":
-        return shape.volume * half**2 / 3
-    return shape.volume * np.array([5 / 24 * half[0] ** 2, 5 / 24 * half[0] ** 2, half[2] ** 2 / 3])
-
-
-@pytest.mark.parametrize("spec", [BRICK, COLUMN], ids=lambda s: s["kind"])
-@pytest.mark.parametrize("turn", [None, TURN], ids=["aligned", "turned"])
+@pytest.mark.parametrize("edges", [[1, 1, 1], [1, 0.77, 0.53], [1, 1.6, 2.7]], ids=str)
 @pytest.mark.parametrize("cells", [12, 17, 24])
-def test_exchange_leaves_sums_over_cells_an_error_of_third_order(spec, turn, cells):
-    """Sums of quadratic functions over the cells against their integrals over the polyhedron.
+def test_exchange_leaves_sums_over_cells_an_error_of_third_order(edges, cells):
+    """Sums of quadratic functions over the cells against their integrals over a cuboid.
 
-    With the second-order term taken away 2 to 3.5 times n^-3 of the largest one is left
-    (measured, n = 9 to 48); the fill fractions alone leave 1.5 n^-2.
+    With the second-order term taken away 2 to 6 times n^-3 of the largest one is left
+    (measured, n = 9 to 48); the fill fractions alone leave more than 1 n^-2.
     """
-    shape = from_spec(spec)
-    grid = lattice(shape, cells, turn)
-    exact = np.diag(second_moments(shape))
-    if turn is not None:
-        exact = turn @ exact @ turn.T
+    shape = from_spec({"kind": "cuboid", "edges": edges})
+    grid = lattice(shape, cells)
+    exact = shape.volume * shape.half_extents**2 / 3
     moved = grid.fill.copy()
     for step in exchanges(grid):
         np.add.at(moved, step.giver, -step.amount)
         np.add.at(moved, step.taker, step.amount)
     assert moved.sum() == pytest.approx(grid.fill.sum(), rel=1e-12)
-    centre = grid.centre()
     errors = [
-        np.abs(np.einsum("n,ni,nj->ij", fill, centre, centre) * grid.spacing**3 - exact).max()
+        np.abs(fill @ grid.centre() ** 2 * grid.spacing**3 - exact).max() / exact.max()
         for fill in (grid.fill, moved)
     ]
-    assert errors[1] < 4.0 * cells**-3 * exact.max()
-    assert errors[1] < 0.25 * errors[0]
+    assert errors[1] < 7.0 * cells**-3
+    assert errors[1] < 0.3 * errors[0]
+
+
+def test_exchange_only_along_the_lattice():
+    column = lattice(from_spec(COLUMN), 10)
+    oblique = np.any(
+        np.abs(column.area_vector).max(axis=2) < 0.99 * np.linalg.norm(column.area_vector, axis=2),
+        axis=0,
+    )
+    assert oblique.any()
+    steps = list(exchanges(column))
+    assert sum(step.giver.size for step in steps) > 50
+    for step in steps:
+        assert not oblique[step.giver].any()
+        # on flat faces at most an eighth of a cell is passed on inwards, 1/24 outwards
+        assert np.all((step.amount <= 0.125) & (step.amount > -0.05))
+    assert all(step.giver.size == 0 for step in exchanges(lattice(from_spec(BRICK), 9, TURN)))
 
 
 def test_no_exchange_for_ellipsoids():

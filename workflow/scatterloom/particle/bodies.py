@@ -39,9 +39,10 @@ class Placement:
 
     @property
     def centred(self) -> bool:
-        """Whether lattice and particle have common axes and the box a common centre."""
+        """Whether the axes agree and the particle's centre is a corner in the box's middle."""
         turned = not np.array_equal(self.rotation, np.eye(3))
-        return not turned and bool(np.all(2.0 * self.origin == self.box))
+        even = all(n % 2 == 0 for n in self.box)
+        return even and not turned and bool(np.all(2.0 * self.origin == self.box))
 
 
 @dataclass(frozen=True, eq=False)

@@ -20,7 +20,7 @@ def euler_angles(rotation: NDArray[np.float64]) -> tuple[float, float, float]:
     beta = float(np.arctan2(np.hypot(r[2, 0], r[2, 1]), r[2, 2]))
     if np.hypot(r[2, 0], r[2, 1]) < 1e-12:
         # Only the sum (or difference) of the other two counts.
-        alpha = float(np.arctan2(r[1, 0], r[1, 1]))
+        alpha = float(np.arctan2(-r[0, 1], r[1, 1]))
         return alpha, beta, 0.0
     alpha = float(np.arctan2(r[1, 2], r[0, 2]))
     return alpha, beta, float(np.arctan2(r[2, 1], -r[2, 0]))
