@@ -89,16 +89,6 @@ def mirror_planes(spec: Mapping[str, Any]) -> int:
     return 2 if spec["kind"] == "prism" and spec["sides"] % 2 else 3
 
 
-def half_axes(spec: Mapping[str, Any]) -> tuple[float, float, float]:
-    """Return the half extents along x, y and z in units of the equal-volume radius."""
-    return extents(spec).half
-
-
-def circumscribed_radius(spec: Mapping[str, Any]) -> float:
-    """Return the radius of the circumscribed sphere in units of the equal-volume radius."""
-    return extents(spec).circumscribed_radius
-
-
 def canonical(spec: Mapping[str, Any]) -> dict[str, Any]:
     """Return the simplest specification of the same body, so that equal bodies merge.
 
