@@ -3,6 +3,7 @@
 import json
 import math
 
+import numpy as np
 import pytest
 
 from campaign.bad_configs import GOOD, edited
@@ -88,6 +89,7 @@ def test_coated_particle(grid_of):
     assert case.index == case.indices[0]
     assert case.shape == {"kind": "sphere", "core_radius_fraction": 0.6}
     assert grid.refractive_index_n[1, 0] == 1.224 and grid.refractive_index_k[1, 0] == 0.0024
+    assert grid.core_refractive_index[1, 0] == 1.2 and np.isnan(grid.core_refractive_index[0, 0])
     # the other particle and its cases are what they were
     assert digests(plain) & digests(grid) == {plain.cases[i].digest for i in plain.where[0].ravel()}
     # sizes are those of the whole particle

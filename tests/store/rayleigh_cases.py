@@ -81,6 +81,7 @@ def axes(sizes=(0.01, 0.02, 0.03), wavelength_um=(0.5, 1.0)) -> Axes:
         size_parameter=x,
         radius_um=x * wavelengths[:, None] / (2 * np.pi),
         refractive_index=np.full((2, len(wavelengths)), INDEX),
+        core_refractive_index=np.full((2, len(wavelengths)), complex(np.nan, np.nan)),
         where=where,
         digests=tuple(digest(name, s) for name in HALF_AXES for s in sizes),
     )

@@ -39,6 +39,8 @@ class Grid:
         Radius of the equal-volume sphere [um]; the same for all particles.
     refractive_index_n, refractive_index_k : float64 (n_particle, n_wavelength)
         Refractive index relative to the medium; of a coated particle that of the coating.
+    core_refractive_index : complex128 (n_particle, n_wavelength)
+        That of the core of a coated particle; NaN in both parts where there is no coating.
     job_seconds : float
         Predicted time at which cases are batched to jobs.
     anchor_spacing : float or None
@@ -54,6 +56,7 @@ class Grid:
     radius_um: NDArray[np.float64]
     refractive_index_n: NDArray[np.float64]
     refractive_index_k: NDArray[np.float64]
+    core_refractive_index: NDArray[np.complex128]
     job_seconds: float
     anchor_spacing: float | None
 
@@ -71,6 +74,7 @@ def expand(campaign: Campaign) -> Grid:
     levels = model.solver.levels
     overrides = Overrides(tuple(levels) if levels else None, model.solver.tolerance)
     outer = np.empty((len(model.particles), n_wavelength), dtype=np.complex128)
+    core = np.full_like(outer, complex(np.nan, np.nan))
     cases: list[Case] = []
     known: dict[tuple[str, tuple[complex, ...], float], int] = {}
     where = np.empty((len(model.particles), n_wavelength, n_size), dtype=np.int64)
@@ -83,6 +87,8 @@ def expand(campaign: Campaign) -> Grid:
             )
             shape, indices = _body(particle, indices)
             outer[p, w] = indices[0]
+            if len(indices) > 1:
+                core[p, w] = indices[1]
             shape_key = canonical_json(shape)
             for s, x in enumerate(values[w]):
                 position = known.setdefault((shape_key, indices, x), len(cases))
@@ -99,6 +105,7 @@ def expand(campaign: Campaign) -> Grid:
         radius_um=radius_um,
         refractive_index_n=np.ascontiguousarray(outer.real),
         refractive_index_k=np.ascontiguousarray(outer.imag),
+        core_refractive_index=core,
         job_seconds=model.solver.job_seconds,
         anchor_spacing=model.solver.anchor_spacing,
     )

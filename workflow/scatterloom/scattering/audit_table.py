@@ -8,6 +8,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from scatterloom.errors import IntegrityError
 from scatterloom.scattering.audit import CHECKS, FloatArray, audit_energy, audit_matrix
@@ -65,7 +66,7 @@ def audit_table(table: xarray.Dataset, asked: dict[str, float]) -> dict[str, Any
     status = table["status"].values
     solved = has_result(status)
     cells = {name: int((status == value).sum()) for value, name in enumerate(STATUS_MEANINGS)}
-    lossless = (table["refractive_index_k"].values == 0.0)[:, :, None]
+    lossless = ~_absorbing(table)[:, :, None]
     checks = []
     for check in CHECKS:
         # The check of lossless particles has nothing to judge in absorbing ones.
@@ -106,6 +107,13 @@ def audit_table(table: xarray.Dataset, asked: dict[str, float]) -> dict[str, Any
     }
 
 
+def _absorbing(part: xarray.Dataset) -> NDArray[np.bool_]:
+    """Whether any material of a particle absorbs; a core that is not there is NaN."""
+    return np.asarray(
+        (part["refractive_index_k"].values > 0.0) | (part["core_refractive_index_k"].values > 0.0)
+    )
+
+
 def _audit_ladder(part: xarray.Dataset) -> dict[str, FloatArray]:
     """Deviations of all sizes of one particle at one wavelength."""
     matrix = audit_matrix(
@@ -115,7 +123,7 @@ def _audit_ladder(part: xarray.Dataset) -> dict[str, FloatArray]:
         part["asymmetry_parameter"].values,
         part["asymmetry_parameter_error"].values,
     )
-    absorbing = np.full(part.sizes["size"], float(part["refractive_index_k"]) > 0.0)
+    absorbing = np.full(part.sizes["size"], _absorbing(part))
     values = {name: part[name].values for name in _EFFICIENCIES}
     half_widths = {name: part[f"{name}_error"].values for name in _EFFICIENCIES}
     return matrix | audit_energy(values, half_widths, absorbing)

@@ -219,6 +219,20 @@ INDICES = (
         comment="positive for absorption, with the time factor exp(-i w t); of a coated "
         "particle that of the coating",
     ),
+    Variable(
+        "core_refractive_index_n",
+        GRID[:2],
+        "f8",
+        "real part of the refractive index of the core relative to the medium",
+        comment="missing where the particle has no coating",
+    ),
+    Variable(
+        "core_refractive_index_k",
+        GRID[:2],
+        "f8",
+        "imaginary part of the refractive index of the core relative to the medium",
+        comment="missing where the particle has no coating",
+    ),
 )
 
 DIAGNOSTICS = (
