@@ -52,7 +52,12 @@ def record(particle: str, size_parameter: float, status: int = 1, **changes) -> 
         "memory_bytes": 1e6,
         "start": "cold",
         "scalars": {name: (value, 1e-3 * abs(value)) for name, value in values.items()},
-        "checks": {},
+        "checks": {
+            "discretization": 0.003,
+            "solver": 0.0002,
+            "truncation": 0.0001,
+            "extrapolation_disagreement": 0.1,
+        },
         "expansion": np.stack([coefficients, 1.01 * coefficients]),
         "variants": ("best", "one percent off"),
         "causes": ("best", "remainder"),

@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from scatterloom.errors import IntegrityError
 from scatterloom.scattering.audit import CHECKS, FloatArray, audit_energy, audit_matrix
-from scatterloom.scattering.error_bars import over_angle
+from scatterloom.scattering.error_bars import BUDGET, over_angle
 from scatterloom.scattering.record import SOLVED, STATUS_MEANINGS, has_result
 
 if TYPE_CHECKING:
@@ -101,6 +101,7 @@ def audit_table(table: xarray.Dataset, asked: dict[str, float]) -> dict[str, Any
         "unit": "deviations are in units of the error bar; above 1 is flagged",
         "checks": checks,
         "accuracy": accuracy,
+        "budget": _budget(table, solved),
         "flagged": flagged,
         "short": int(short.sum()),
         "passed": flagged == 0 and cells["solved"] == status.size and not short.any(),
@@ -140,6 +141,31 @@ def _half_widths(part: xarray.Dataset) -> dict[str, FloatArray]:
         "ratio_absolute": ratio,
         "efficiency_relative": efficiencies.max(axis=0),
     }
+
+
+_BUDGET = {
+    **{f"f11_error_{part}": f"half width of F11 due to {part}" for part in BUDGET},
+    "extrapolation_disagreement": "rival extrapolations differ, over the step",
+}
+
+
+def _budget(table: xarray.Dataset, solved: np.ndarray) -> list[dict[str, Any]]:
+    """Parts of the error of F11 and the health of the extrapolation over the lattices."""
+    rows = []
+    for name, words in _BUDGET.items():
+        values = table[name].values
+        judged = _judge(table, values, solved, math.inf)
+        known = values[np.isfinite(values)]
+        rows.append(
+            {
+                "name": name,
+                "statement": words,
+                "median": _number(float(np.median(known))) if known.size else None,
+                "worst": judged["worst"],
+                "worst_case": judged["worst_case"],
+            }
+        )
+    return rows
 
 
 def _judge(

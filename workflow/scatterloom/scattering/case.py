@@ -208,6 +208,9 @@ def combine_levels(
         for v in variants
         if v.cause == TRUNCATION
     ]
+    expansion = _expansions(variants)
+    causes = tuple(v.cause for v in variants)
+    floor = model * error_bars.matrix_model_share(size_parameter)
     out = record.CaseRecord(
         index=index,
         inner_indices=tuple(inner),
@@ -227,10 +230,11 @@ def combine_levels(
             "integrated_scattering_efficiency": best.result.integrated_scattering_efficiency,
             "truncation_share": max(shares, default=1.0),
             "lattice_asymmetry": levels[-1].asymmetry,
+            **error_bars.f11_budget(expansion, causes, floor),
         },
-        expansion=_expansions(variants),
+        expansion=expansion,
         variants=tuple(v.name for v in variants),
-        causes=tuple(v.cause for v in variants),
+        causes=causes,
         model_error=model,
         **identity,
     )
