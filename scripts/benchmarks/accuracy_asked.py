@@ -5,6 +5,7 @@ from __future__ import annotations
 import sys
 import time
 from collections.abc import Mapping
+from functools import partial
 from typing import Any
 
 import numpy as np
@@ -12,6 +13,7 @@ import numpy as np
 from benchmarks.cases import ASKED, cold_record
 from benchmarks.drawn import SPHERE, SPHEROID, Drawn, Limits, Reference, draw, reference
 from benchmarks.output import Result
+from benchmarks.parallel import each
 from scatterloom.scattering.case import Asked
 from scatterloom.scattering.record import FLAGS, CaseRecord
 
@@ -51,21 +53,28 @@ def within(errors: Mapping[str, float], asked: Asked) -> bool:
     )
 
 
+def _judged(case: Drawn, asked: Asked) -> tuple[bool, dict[str, float]] | None:
+    """Whether a case is flagged, and its true errors; None where there is no reference."""
+    exact = reference(case, 1)
+    if exact is None:
+        return None
+    record = cold_record(case.spec, case.indices, case.size_parameter, 1, asked)
+    bit, _ = FLAGS["accuracy_not_met"]
+    return bool(record.warning_flags & bit), true_errors(record, exact)
+
+
 def _row(
     name: str, asked: Asked, cases: list[Drawn], costly: int, threads: int
 ) -> tuple[dict[str, Any], list[dict[str, Any]]]:
     met, flagged_met, flagged_missed, missed, unknown = 0, 0, 0, 0, 0
     worst = {"f11": 0.0, "ratio": 0.0, "worst ratio": 0.0, "efficiency": 0.0}
     failures = []
-    bit, _ = FLAGS["accuracy_not_met"]
-    for number, case in enumerate(cases):
-        exact = reference(case, threads)
-        if exact is None:
+    for case, found in zip(cases, each(partial(_judged, asked=asked), cases, threads), strict=True):
+        if found is None:
             unknown += 1
             continue
-        record = cold_record(case.spec, case.indices, case.size_parameter, threads, asked)
-        errors = true_errors(record, exact)
-        flagged, good = bool(record.warning_flags & bit), within(errors, asked)
+        flagged, errors = found
+        good = within(errors, asked)
         met += good and not flagged
         flagged_met += good and flagged
         flagged_missed += flagged and not good
@@ -86,8 +95,6 @@ def _row(
                     "efficiency_percent": 100.0 * errors["efficiency"],
                 }
             )
-        if sys.stderr.isatty():
-            print(f"\r{name} {number + 1} of {len(cases)}", end="", file=sys.stderr)
     return {
         "accuracy": name,
         "cases": len(cases) - unknown,

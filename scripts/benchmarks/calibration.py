@@ -26,6 +26,7 @@ from benchmarks.drawn import (
     reference,
 )
 from benchmarks.output import Result
+from benchmarks.parallel import each
 from benchmarks.scoring import ANGLES_DEG, Scored, by_quantity, by_regime, error_pairs
 from scatterloom.scattering.record import SCALARS, CaseRecord
 
@@ -59,21 +60,18 @@ def solved(case: Drawn, threads: int) -> tuple[CaseRecord, Reference] | None:
     return turned_record(case.spec, case.indices, x, rotation, threads), exact
 
 
+def _scored(case: Drawn) -> Scored | None:
+    found = solved(case, 1)
+    return None if found is None else Scored(case, error_pairs(case, *found))
+
+
 def run(threads: int) -> Result:
-    """Solve the cases and count."""
+    """Solve the cases, one a thread, and count."""
     begun = time.perf_counter()
     cases, costly = drawn()
-    halves: tuple[list[Scored], list[Scored]] = ([], [])
-    unknown = 0
-    for number, case in enumerate(cases):
-        found = solved(case, threads)
-        if found is None:
-            unknown += 1
-        else:
-            halves[number % 2].append(Scored(case, error_pairs(case, *found)))
-        if sys.stderr.isatty():
-            print(f"\r{number + 1} of {len(cases)}", end="", file=sys.stderr)
-    calibrated, scored = halves
+    results = each(_scored, cases, threads)
+    unknown = results.count(None)
+    calibrated, scored = ([s for s in results[half::2] if s is not None] for half in (0, 1))
     print(f"{time.perf_counter() - begun:.0f} s", file=sys.stderr)
     quantities, regimes = by_quantity(scored), by_regime(scored)
     own = by_quantity(calibrated)[-1]
