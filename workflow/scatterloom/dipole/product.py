@@ -34,6 +34,9 @@ from scatterloom.particle.lattice import Lattice
 _LANES = ((4, 1), (8, 2), (16, 5))
 """Lanes of a group, and the waves whose three components they take."""
 
+_BLOCK = 8
+"""Cells taken at a time: a cache line of each wave."""
+
 
 @njit(cache=True)
 def _mix_classes(buffer, n_class, group, lanes, like):  # type: ignore[no-untyped-def]
@@ -56,22 +59,28 @@ def _spread(grid, work, waves, wave, count, root, target, signs, plus, first, la
     each = width // 3
     like = root
     group = 2 * width * like.itemsize
-    part = work[: n_class * 2 * width].reshape(n_class, 2, width)
+    part = work[: _BLOCK * n_class * 2 * width].reshape(_BLOCK, n_class, 2, width)
     part[:] = 0
-    base, buffer = np.intp(grid.ctypes.data), np.intp(work.ctypes.data)
-    for o in range(first, last):
-        tensor = np.intp(root.ctypes.data) + 12 * like.itemsize * o
+    base, plus_at = np.intp(grid.ctypes.data), np.intp(plus.ctypes.data)
+    for start in range(first, last, _BLOCK):
+        stop = min(start + _BLOCK, last)
         for c in range(n_class):
             for q in range(3):
                 for b in range(count):
-                    part[c, 0, q * each + b] = waves[c, wave + b, q, o, 0]
-                    part[c, 1, q * each + b] = waves[c, wave + b, q, o, 1]
-            sign = np.intp(plus.ctypes.data)
-            tensor_times(buffer + c * group, tensor, sign, 0, group // 2, lanes, like)
-        _mix_classes(buffer, n_class, group, lanes, like)
-        for s in range(n_class):
-            factor = np.intp(signs.ctypes.data) + s * width * like.itemsize
-            scale(buffer + s * group, factor, base + target[s, o] * group, lanes, like)
+                    lane = q * each + b
+                    for o in range(start, stop):
+                        part[o - start, c, 0, lane] = waves[c, wave + b, q, o, 0]
+                        part[o - start, c, 1, lane] = waves[c, wave + b, q, o, 1]
+        buffer = np.intp(work.ctypes.data)
+        for o in range(start, stop):
+            tensor = np.intp(root.ctypes.data) + 12 * like.itemsize * o
+            for c in range(n_class):
+                tensor_times(buffer + c * group, tensor, plus_at, 0, group // 2, lanes, like)
+            _mix_classes(buffer, n_class, group, lanes, like)
+            for s in range(n_class):
+                factor = np.intp(signs.ctypes.data) + s * width * like.itemsize
+                scale(buffer + s * group, factor, base + target[s, o] * group, lanes, like)
+            buffer += n_class * group
 
 
 @njit(cache=True, nogil=True)
@@ -81,22 +90,27 @@ def _collect(grid, work, waves, out, wave, count, root, target, signs, plus, fir
     each = width // 3
     like = root
     group = 2 * width * like.itemsize
-    part = work[: n_class * 2 * width].reshape(n_class, 2, width)
-    base, buffer = np.intp(grid.ctypes.data), np.intp(work.ctypes.data)
-    for o in range(first, last):
-        tensor = np.intp(root.ctypes.data) + 12 * like.itemsize * o
-        for s in range(n_class):
-            factor = np.intp(signs.ctypes.data) + s * width * like.itemsize
-            scale(base + target[s, o] * group, factor, buffer + s * group, lanes, like)
-        _mix_classes(buffer, n_class, group, lanes, like)
+    part = work[: _BLOCK * n_class * 2 * width].reshape(_BLOCK, n_class, 2, width)
+    base, plus_at = np.intp(grid.ctypes.data), np.intp(plus.ctypes.data)
+    for start in range(first, last, _BLOCK):
+        stop = min(start + _BLOCK, last)
+        buffer = np.intp(work.ctypes.data)
+        for o in range(start, stop):
+            tensor = np.intp(root.ctypes.data) + 12 * like.itemsize * o
+            for s in range(n_class):
+                factor = np.intp(signs.ctypes.data) + s * width * like.itemsize
+                scale(base + target[s, o] * group, factor, buffer + s * group, lanes, like)
+            _mix_classes(buffer, n_class, group, lanes, like)
+            for c in range(n_class):
+                tensor_times(buffer + c * group, tensor, plus_at, 0, group // 2, lanes, like)
+            buffer += n_class * group
         for c in range(n_class):
-            sign = np.intp(plus.ctypes.data)
-            tensor_times(buffer + c * group, tensor, sign, 0, group // 2, lanes, like)
             for q in range(3):
                 for b in range(count):
-                    w = wave + b
-                    out[c, w, q, o, 0] = waves[c, w, q, o, 0] - part[c, 0, q * each + b]
-                    out[c, w, q, o, 1] = waves[c, w, q, o, 1] - part[c, 1, q * each + b]
+                    w, lane = wave + b, q * each + b
+                    for o in range(start, stop):
+                        out[c, w, q, o, 0] = waves[c, w, q, o, 0] - part[o - start, c, 0, lane]
+                        out[c, w, q, o, 1] = waves[c, w, q, o, 1] - part[o - start, c, 1, lane]
 
 
 def _aligned(count: int, dtype: np.dtype) -> NDArray:
@@ -207,8 +221,8 @@ class LatticeMatrix:
 
     def _groups(self) -> tuple[int, int]:
         """Groups of the box with its padded x axis, and of the work space of one thread."""
-        line = 2 * self.half[2] + 4 * max(self.half)
-        return 2 * self.half[0] * self._strides[0], 2 * self.half[1] * self._strides[1] + line + 8
+        columns = 2 * self.half[1] * self._strides[1] + 2 * self.half[2] + 4 * max(self.half)
+        return 2 * self.half[0] * self._strides[0], max(columns, _BLOCK * self.n_class)
 
     def __call__(self, waves: NDArray, out: NDArray | None = None) -> NDArray:
         """Return A applied to every wave; `waves` is left untouched.
