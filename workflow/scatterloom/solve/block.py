@@ -14,6 +14,9 @@ from scatterloom.solve.minimal_residual import ClassIterate
 BAD_START = 0.3
 """A start whose images miss the incident block by more than this is dropped."""
 
+_RESCALE = 4
+"""Steps after which the scale of the amplitudes is computed anew."""
+
 _ROUNDING = 8.0
 """Error of the amplitudes by rounding alone, in units of the precision (measured: 1 to 4)."""
 
@@ -131,6 +134,8 @@ def solve_block(
     amplitudes: list[NDArray] = []
     remainders: list[NDArray] = []
     error = np.inf
+    fresh = True
+    total = _norm(incident)
 
     def threshold() -> float:
         return 0.5 * tolerance * scale / np.sqrt(n_wave)
@@ -161,19 +166,29 @@ def solve_block(
             used += sum(len(block) for block in blocks)
         for iterate, block, image in zip(iterates, blocks, images, strict=True):
             iterate.take(block, image)
-        parts = [iterate.amplitudes() for iterate in iterates]
-        remainders = [part[1] for part in parts]
-        amplitudes = [part[0] + part[1] for part in parts]
-        scale = _norm(amplitudes)
-        error = _norm(remainders) / scale
+        remainders = [iterate.residual_products()[1] for iterate in iterates]
+        missing = _norm(remainders)
+        # Amplitudes change little after the first step: their scale is looked at again when
+        # it decides, and now and then.
+        if len(history) % _RESCALE == 0 or missing <= 1.5 * tolerance * scale:
+            amplitudes = _corrected(iterates)
+            scale = _norm(amplitudes)
+            fresh = True
+        else:
+            fresh = False
+        error = missing / scale
         history.append(error)
-        residual = _total_residual(iterates)
+        residual = _total_residual(iterates, total)
         if progress is not None:
             progress(error, residual)
         if error <= tolerance:
             break
         if len(history) > 8 and error > 0.9 * history[-5]:
             break
+    if not fresh:
+        amplitudes = _corrected(iterates)
+        error = _norm(remainders) / _norm(amplitudes)
+        history[-1] = error
     # The residual is updated, not recomputed, so the remainder does not see rounding.
     error = max(error, _ROUNDING * float(np.finfo(matrix.dtype).eps))
     return BlockSolution(
@@ -182,7 +197,7 @@ def solve_block(
         # One free correction: A is close to one on what little is left.
         fields=[iterate.fields + iterate.residual for iterate in iterates],
         error=float(error),
-        residual=_total_residual(iterates),
+        residual=_total_residual(iterates, total),
         products=used / n_wave,
         packed_products=matrix.products - packed_before,
         converged=bool(error <= tolerance),
@@ -192,6 +207,11 @@ def solve_block(
     )
 
 
-def _total_residual(iterates: Sequence[ClassIterate]) -> float:
-    missed = _norm([iterate.residual for iterate in iterates])
-    return missed / max(_norm([iterate.incident for iterate in iterates]), 1e-300)
+def _corrected(iterates: Sequence[ClassIterate]) -> list[NDArray]:
+    """Amplitudes of all classes with their remainders added."""
+    return [stationary + rest for stationary, rest in (it.amplitudes() for it in iterates)]
+
+
+def _total_residual(iterates: Sequence[ClassIterate], total: float) -> float:
+    squares = sum(float(np.trace(it.residual_products()[0]).real) for it in iterates)
+    return float(np.sqrt(max(squares, 0.0))) / max(total, 1e-300)

@@ -22,6 +22,27 @@ def gram(block: NDArray) -> NDArray[np.complex128]:
     return (block @ block.conj().T).astype(np.complex128)
 
 
+def both_products(
+    block: NDArray,
+) -> tuple[NDArray[np.complex128], NDArray[np.complex128]]:
+    """Products of the rows of a block with each other, with and without conjugation.
+
+    Both follow from one real symmetric product of the real and imaginary parts, at the price
+    of one of them.
+
+    Returns
+    -------
+    hermitian, symmetric : complex128 (n, n)
+        ``block @ block^H`` and ``block @ block^T``.
+    """
+    n = len(block)
+    parts = np.concatenate([block.real, block.imag])
+    square = (parts @ parts.T).astype(np.float64)
+    real, imaginary, mixed = square[:n, :n], square[n:, n:], square[n:, :n]
+    hermitian = (real + imaginary) + 1j * (mixed - mixed.T)
+    return hermitian, (real - imaginary) + 1j * (mixed + mixed.T)
+
+
 def significant_rows(gram_matrix: NDArray, threshold: float) -> NDArray[np.complex128]:
     """Combinations P (k, n) such that ``P @ block`` has orthonormal rows.
 
@@ -47,15 +68,22 @@ class ClassIterate:
         self.residual = incident.copy()
         self._directions: list[NDArray] = []
         self._images: list[NDArray] = []
+        self._products: tuple[NDArray, NDArray] | None = None
+
+    def residual_products(self) -> tuple[NDArray[np.complex128], NDArray[np.complex128]]:
+        """``R R^H``, whose trace is the squared norm, and ``R R^T``, the error to come."""
+        if self._products is None:
+            self._products = both_products(self.residual)
+        return self._products
 
     def propose(self, threshold: float) -> NDArray:
         """Significant directions of the residual, orthonormal rows, (k, n_row), k >= 0."""
-        combine = significant_rows(gram(self.residual), threshold)
+        combine = significant_rows(self.residual_products()[0], threshold)
         return combine.astype(self.residual.dtype) @ self.residual
 
     def propose_start(self, start: NDArray, threshold: float) -> NDArray:
-        """Rows of a start combined as the significant directions of B are."""
-        combine = significant_rows(gram(self.incident), threshold)
+        """Rows of a start combined as the significant directions of B are (before any step)."""
+        combine = significant_rows(self.residual_products()[0], threshold)
         return combine.astype(start.dtype) @ start
 
     def shortfall(self, wanted: NDArray, images: NDArray) -> tuple[float, float]:
@@ -93,6 +121,7 @@ class ClassIterate:
         self.fields += coefficients @ v
         self._directions.append(v)
         self._images.append(y)
+        self._products = None
 
     def amplitudes(self) -> tuple[NDArray, NDArray]:
         """Stationary amplitudes and the leading term of their error.
@@ -108,8 +137,7 @@ class ClassIterate:
         mixed = (self.incident @ self.fields.T + self.fields @ self.residual.T).astype(
             np.complex128
         )
-        remainder = (self.residual @ self.residual.T).astype(np.complex128)
-        return 0.5 * (mixed + mixed.T), 0.5 * (remainder + remainder.T)
+        return 0.5 * (mixed + mixed.T), self.residual_products()[1]
 
     def relative_residual(self) -> float:
         """Norm of the residual block over the norm of the incident block."""
