@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from scatterloom.dipole.polarizability import cell_tensors
 from scatterloom.dipole.product import LatticeMatrix
+from scatterloom.dipole.sectors import Sectors, exchange_of_cells
 from scatterloom.particle.lattice import Lattice
 from scatterloom.solve.block import BlockSolution, solve_block
 from scatterloom.solve.start import StoredFields
@@ -89,19 +90,24 @@ def solve_level(
     kd = size_parameter * lattice.spacing
     tensors = cell_tensors(lattice.fill, lattice.normal, index, kd, lattice.area)
     matrix = LatticeMatrix(lattice, tensors, kd, dtype, threads)
-    incident = incident_block(lattice, matrix, size_parameter, wave_basis(n_max))
+    sectors = Sectors(matrix, exchange_of_cells(lattice))
+    incident = incident_block(lattice, matrix, size_parameter, wave_basis(n_max), sectors)
     first = None if start is None else start(incident.norms)
-    solution = solve_block(matrix, incident.rows, tolerance, first, progress=progress)
-    raw = from_amplitudes(n_max, incident.members, solution.amplitudes)
+    solution = solve_block(
+        matrix, incident.rows, tolerance, first, progress=progress, sectors=sectors
+    )
+    raw = from_amplitudes(n_max, *incident.of_all_waves(solution.amplitudes))
     transition = project(raw, lattice.symmetry)
     stationary = [s - r for s, r in zip(solution.amplitudes, solution.remainder, strict=True)]
-    uncorrected = project(from_amplitudes(n_max, incident.members, stationary), lattice.symmetry)
+    uncorrected = project(
+        from_amplitudes(n_max, *incident.of_all_waves(stationary)), lattice.symmetry
+    )
     lost = np.linalg.norm(raw.matrix - transition.matrix) / np.linalg.norm(raw.matrix)
     return LevelResult(
         transition=transition,
         uncorrected=uncorrected,
         asymmetry=float(lost),
-        absorption_efficiency=_absorption(matrix, solution.fields, size_parameter),
+        absorption_efficiency=_absorption(sectors, solution.fields, size_parameter),
         solution=solution,
         fields=StoredFields(
             size_parameter,
@@ -116,21 +122,24 @@ def solve_level(
     )
 
 
-def _absorption(matrix: LatticeMatrix, fields: list[NDArray], size_parameter: float) -> float:
+def _absorption(sectors: Sectors, fields: list[NDArray], size_parameter: float) -> float:
     """Absorption efficiency from the loss in the cells.
 
     One plane wave: C_abs = 4 pi sum x^H L x (Bohren & Huffman 1983, section 3.2, applied to
     dipoles); the mean over all plane waves is 2 pi times the sum over normalized waves.
     """
-    loss = matrix.loss
+    loss = sectors.matrix.loss
     total = 0.0
-    for rows in fields:
-        x, y, z = (rows.reshape(len(rows), 3, matrix.n_cell)[:, q] for q in range(3))
+    for sector, part in zip(sectors.all, fields, strict=True):
+        rows = sectors.whole(sector, part).reshape(len(part), 3, sectors.matrix.n_cell)
+        x, y, z = (rows[:, q] for q in range(3))
         diagonal = [np.sum(np.abs(u) ** 2, axis=0, dtype=np.float64) for u in (x, y, z)]
         mixed = [
             np.sum((u.conj() * v).real, axis=0, dtype=np.float64)
             for u, v in ((x, y), (x, z), (y, z))
         ]
-        total += sum(float(loss[q] @ diagonal[q]) for q in range(3))
-        total += 2.0 * sum(float(loss[3 + q] @ mixed[q]) for q in range(3))
+        power = sum(float(loss[q] @ diagonal[q]) for q in range(3))
+        power += 2.0 * sum(float(loss[3 + q] @ mixed[q]) for q in range(3))
+        # The image of a sector absorbs as much.
+        total += sector.copies * power
     return 8.0 * np.pi**2 * total / (np.pi * size_parameter**2)

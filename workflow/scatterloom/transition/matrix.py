@@ -71,7 +71,7 @@ def from_amplitudes(
 @lru_cache(maxsize=16)
 def _two_entries(n_max: int) -> tuple[NDArray[np.int64], NDArray[np.complex128]]:
     """Columns and values of the two entries in each row of `complex_from_real`, (2, n_wave)."""
-    change, labels = complex_from_real(n_max)
+    change = complex_from_real(n_max)[0]
     found = np.abs(change) > 0.0
     first = found.argmax(axis=1)
     last = found.shape[1] - 1 - found[:, ::-1].argmax(axis=1)
