@@ -118,21 +118,17 @@ def _dft(values: list[_Vector]) -> list[_Vector]:
         a, b = values
         return [a + b, a - b]
     if n in (4, 8):
-        even, odd = _dft(values[::2]), _dft(values[1::2])
+        first, second = _dft(values[::2]), _dft(values[1::2])
         if n == 4:
-            odd = [odd[0], odd[1].over_i()]
+            second[1] = second[1].over_i()
         else:
             half = sqrt(0.5)
-            one, three = odd[1], odd[3]
-            odd = [
-                odd[0],
-                (one + one.over_i()).scaled(half),
-                odd[2].over_i(),
-                (three.over_i() - three).scaled(half),
-            ]
-        return [e + o for e, o in zip(even, odd, strict=True)] + [
-            e - o for e, o in zip(even, odd, strict=True)
-        ]
+            _, one, two, three = second
+            second[1] = (one + one.over_i()).scaled(half)
+            second[2] = two.over_i()
+            second[3] = (three.over_i() - three).scaled(half)
+        pairs = list(zip(first, second, strict=True))
+        return [a + b for a, b in pairs] + [a - b for a, b in pairs]
     # Odd lengths: sums and differences of mirrored pairs.
     half = n // 2
     plus = [values[j] + values[n - j] for j in range(1, half + 1)]
@@ -142,12 +138,12 @@ def _dft(values: list[_Vector]) -> list[_Vector]:
         total = total + p
     out = [total] * n
     for k in range(1, half + 1):
-        even, odd = values[0], None
-        for j in range(1, half + 1):
-            angle = 2.0 * pi * ((j * k) % n) / n
-            even = even + plus[j - 1].scaled(cos(angle))
-            term = minus[j - 1].scaled(sin(angle))
-            odd = term if odd is None else odd + term
+        angles = [2.0 * pi * (j * k % n) / n for j in range(1, half + 1)]
+        even, odd = values[0], minus[0].scaled(sin(angles[0]))
+        for p, angle in zip(plus, angles, strict=True):
+            even = even + p.scaled(cos(angle))
+        for m, angle in zip(minus[1:], angles[1:], strict=True):
+            odd = odd + m.scaled(sin(angle))
         out[k], out[n - k] = even + odd, even - odd
     return out
 

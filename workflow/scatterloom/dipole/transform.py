@@ -149,9 +149,9 @@ def _last_pass(radix, count, s, s_next, ss, t, t_next, ts, table, re, im, lanes,
 
 
 @njit(cache=True)
-def _transform(
+def _transform(  # type: ignore[no-untyped-def]
     source, source_step, one, other, target, target_step, radices, table, n, re, im, lanes, like
-):  # type: ignore[no-untyped-def]
+):
     """Transform n groups, through two buffers; all but the first pass read consecutive groups."""
     group = 2 * len(lanes) * like.itemsize
     length, run = n, 1
@@ -218,9 +218,9 @@ def _backward(source, step, n, half, work, target, target_step, radices, table, 
 
 
 @njit(cache=True, nogil=True)
-def transform_columns(
+def transform_columns(  # type: ignore[no-untyped-def]
     grid, work, used, box, half, strides, radices, table, inverse, first, last, lanes
-):  # type: ignore[no-untyped-def]
+):
     """Transform the x columns number `first` to `last` - 1 of the box, in place.
 
     Columns that are not used hold zeros: they need no transform, and back none of their values.
@@ -242,10 +242,10 @@ def transform_columns(
 
 
 @njit(cache=True, nogil=True)
-def convolve_planes(
+def convolve_planes(  # type: ignore[no-untyped-def]
     grid, work, kernel, signs, box, half, strides, radices_y, table_y, radices_z, table_z,
     first, last, lanes,
-):  # type: ignore[no-untyped-def]  # fmt: skip
+):  # fmt: skip
     """Transform the x planes number `first` to `last` - 1, multiply by the kernel, and back.
 
     `kernel` holds real and imaginary parts of the six components for one octant, `signs`

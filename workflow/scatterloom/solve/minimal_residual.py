@@ -17,6 +17,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 
+_INDEPENDENT = 1e-3
+"""Least share of a row, squared, not in the span of the others, for a Cholesky factor to do."""
+
+
 def gram(block: NDArray) -> NDArray[np.complex128]:
     """Hermitian Gram matrix of the rows of a block."""
     return (block @ block.conj().T).astype(np.complex128)
@@ -51,6 +55,20 @@ def significant_rows(gram_matrix: NDArray, threshold: float) -> NDArray[np.compl
     value, vector = np.linalg.eigh(gram_matrix)
     keep = value > max(threshold, 0.0)
     return (vector[:, keep] / np.sqrt(value[keep])).conj().T
+
+
+def _orthonormal(gram_matrix: NDArray) -> NDArray[np.complex128]:
+    """Combinations that make all rows orthonormal; rows that depend on others are left out."""
+    largest = float(np.trace(gram_matrix).real)
+    try:
+        factor = np.linalg.cholesky(gram_matrix)
+    except np.linalg.LinAlgError:
+        pass
+    else:
+        if np.diagonal(factor).real.min() ** 2 > _INDEPENDENT * largest:
+            return np.linalg.inv(factor)
+    # Images that depend on the others to single precision add nothing but noise.
+    return significant_rows(gram_matrix, 1e-9 * largest)
 
 
 class ClassIterate:
@@ -111,10 +129,7 @@ class ClassIterate:
             overlap = y @ old_y.conj().T
             y = y - overlap @ old_y
             v = v - overlap @ old_v
-        squares = gram(y)
-        # Images that depend on the others to single precision add nothing but noise.
-        largest = float(np.trace(squares).real)
-        combine = significant_rows(squares, 1e-9 * largest).astype(y.dtype)
+        combine = _orthonormal(gram(y)).astype(y.dtype)
         v, y = combine @ v, combine @ y
         coefficients = self.residual @ y.conj().T
         self.residual -= coefficients @ y

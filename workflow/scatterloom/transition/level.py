@@ -6,6 +6,7 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
+from numba import njit
 from numpy.typing import NDArray
 
 from scatterloom.dipole.polarizability import cell_tensors
@@ -122,6 +123,23 @@ def solve_level(
     )
 
 
+@njit(cache=True)
+def _power(rows, loss):  # type: ignore[no-untyped-def]
+    """Sum of x^H L x over cells and waves, L real and symmetric."""
+    total = 0.0
+    for w in range(rows.shape[0]):
+        for o in range(rows.shape[2]):
+            x, y, z = rows[w, 0, o], rows[w, 1, o], rows[w, 2, o]
+            power = loss[0, o] * (x.real * x.real + x.imag * x.imag)
+            power += loss[1, o] * (y.real * y.real + y.imag * y.imag)
+            power += loss[2, o] * (z.real * z.real + z.imag * z.imag)
+            power += 2.0 * loss[3, o] * (x.real * y.real + x.imag * y.imag)
+            power += 2.0 * loss[4, o] * (x.real * z.real + x.imag * z.imag)
+            power += 2.0 * loss[5, o] * (y.real * z.real + y.imag * z.imag)
+            total += power
+    return total
+
+
 def _absorption(sectors: Sectors, fields: list[NDArray], size_parameter: float) -> float:
     """Absorption efficiency from the loss in the cells.
 
@@ -132,14 +150,7 @@ def _absorption(sectors: Sectors, fields: list[NDArray], size_parameter: float) 
     total = 0.0
     for sector, part in zip(sectors.all, fields, strict=True):
         rows = sectors.whole(sector, part).reshape(len(part), 3, sectors.matrix.n_cell)
-        x, y, z = (rows[:, q] for q in range(3))
-        diagonal = [np.sum(np.abs(u) ** 2, axis=0, dtype=np.float64) for u in (x, y, z)]
-        mixed = [
-            np.sum((u.conj() * v).real, axis=0, dtype=np.float64)
-            for u, v in ((x, y), (x, z), (y, z))
-        ]
-        power = sum(float(loss[q] @ diagonal[q]) for q in range(3))
-        power += 2.0 * sum(float(loss[3 + q] @ mixed[q]) for q in range(3))
+        power = _power(rows, loss)
         # The image of a sector absorbs as much.
         total += sector.copies * power
     return 8.0 * np.pi**2 * total / (np.pi * size_parameter**2)
