@@ -31,7 +31,7 @@ from scatterloom.dipole.transform import (
 )
 from scatterloom.particle.lattice import Lattice
 
-_LANES = ((4, 1), (8, 2), (16, 5))
+_LANES = ((8, 2), (16, 5))
 """Lanes of a group, and the waves whose three components they take."""
 
 _BLOCK = 8
