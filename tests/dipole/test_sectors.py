@@ -6,7 +6,9 @@ import numpy as np
 import pytest
 
 from lattice_kit import OBLATE, PROLATE, SPHERE, TRIAXIAL, of_shape, packed_matrix, random_lattice
-from scatterloom.dipole.sectors import Sectors, exchange_of_cells
+from scatterloom.dipole.polarizability import cell_tensors
+from scatterloom.dipole.sectors import Sectors
+from scatterloom.dipole.sectors import exchange_of_cells as exchange_given_tensors
 from scatterloom.solve.block import solve_block
 from scatterloom.transition.matrix import from_amplitudes
 from scatterloom.waves.basis import wave_basis
@@ -15,6 +17,12 @@ from scatterloom.waves.incident import incident_block
 
 INDEX, SIZE, N_MAX = 1.6 + 0.05j, 1.5, 5
 RNG = np.random.default_rng(5)
+
+
+def exchange_of_cells(cells):
+    kd = SIZE * cells.spacing
+    tensors = cell_tensors(cells.fill, cells.normal, INDEX, kd, cells.area)
+    return exchange_given_tensors(cells, tensors)
 
 
 def random_rows(rows, columns):

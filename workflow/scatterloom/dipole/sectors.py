@@ -22,14 +22,18 @@ import numpy as np
 from numba import njit
 from numpy.typing import NDArray
 
+from scatterloom.dipole.polarizability import CellTensors
 from scatterloom.dipole.product import LatticeMatrix
 from scatterloom.particle.lattice import Lattice
 
 _SAME = 1e-9
-"""Largest difference of fills, normals and areas between a cell and its image."""
+"""Largest difference of a cell's tensors from those of its image, over the largest tensor."""
+
+_SWAPPED = [1, 0, 2, 3, 5, 4]
+"""Components xx, yy, zz, xy, xz, yz of a tensor with x and y exchanged."""
 
 
-def exchange_of_cells(lattice: Lattice) -> NDArray[np.int64] | None:
+def exchange_of_cells(lattice: Lattice, tensors: CellTensors) -> NDArray[np.int64] | None:
     """For each cell the one with x and y exchanged, or None if the particle is not its image."""
     if not (lattice.mirrors[0] and lattice.mirrors[1]) or lattice.box[0] != lattice.box[1]:
         return None
@@ -38,13 +42,13 @@ def exchange_of_cells(lattice: Lattice) -> NDArray[np.int64] | None:
     key = cell @ strides  # ascending: cells are in C order
     image = np.searchsorted(key, cell[:, [1, 0, 2]] @ strides)
     image = np.minimum(image, len(cell) - 1)
-    same = (
-        np.array_equal(cell[image], cell[:, [1, 0, 2]])
-        and np.allclose(lattice.fill[image], lattice.fill, rtol=0.0, atol=_SAME)
-        and np.allclose(lattice.area[image], lattice.area, rtol=0.0, atol=_SAME)
-        and np.allclose(lattice.normal[image], lattice.normal[:, [1, 0, 2]], rtol=0.0, atol=_SAME)
-    )
-    return image if same else None
+    if not np.array_equal(cell[image], cell[:, [1, 0, 2]]):
+        return None
+    for tensor in (tensors.root, tensors.loss):
+        difference = np.abs(tensor[image] - tensor[:, _SWAPPED]).max()
+        if not difference <= _SAME * np.abs(tensor).max():
+            return None
+    return image
 
 
 @dataclass(frozen=True)

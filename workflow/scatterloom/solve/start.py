@@ -100,8 +100,9 @@ def interpolated_start(
 ) -> Callable[[list[NDArray[np.float64]]], list[NDArray] | None]:
     """A start for `size_parameter` from fields solved at other sizes on the same lattice.
 
-    Neighbours may be truncated at different degrees; waves that some of them lack start
-    from zero (the basis lists waves by ascending degree, so shared waves come first).
+    Neighbours may be truncated at different degrees; a wave is interpolated
+    between those that have it and starts from zero if none has (the basis lists waves by
+    ascending degree, so shared waves come first).
 
     Returns
     -------
@@ -114,18 +115,22 @@ def interpolated_start(
     """
     if not neighbours:
         raise ValueError("a start needs at least one solved neighbour")
-    nodes = [n.size_parameter for n in neighbours]
 
     def start(norms: list[NDArray[np.float64]]) -> list[NDArray]:
         out = []
         for c, norm in enumerate(norms):
-            shared = min(len(norm), *(len(n.rows[c]) for n in neighbours))
-            solved = np.stack([n.rows[c][:shared] for n in neighbours], axis=1)
-            products = (solved @ solved.conj().transpose(0, 2, 1)).astype(np.complex128)
-            weights = rational_weights(nodes, size_parameter, products)
-            weights = weights * norm[:shared, None]
-            rows = np.zeros((len(norm), solved.shape[2]), dtype=solved.dtype)
-            rows[:shared] = (weights[:, None, :].astype(solved.dtype) @ solved)[:, 0]
+            kept = neighbours[0].rows[c]
+            rows = np.zeros((len(norm), kept.shape[1]), kept.dtype)
+            first = 0
+            for last in sorted({min(len(norm), len(n.rows[c])) for n in neighbours}):
+                having = [n for n in neighbours if len(n.rows[c]) >= last]
+                solved = np.stack([n.rows[c][first:last] for n in having], axis=1)
+                products = (solved @ solved.conj().transpose(0, 2, 1)).astype(np.complex128)
+                nodes = [n.size_parameter for n in having]
+                weights = rational_weights(nodes, size_parameter, products)
+                weights = weights * norm[first:last, None]
+                rows[first:last] = (weights[:, None, :].astype(kept.dtype) @ solved)[:, 0]
+                first = last
             out.append(rows)
         return out
 
