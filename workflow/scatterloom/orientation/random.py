@@ -58,8 +58,9 @@ def _scattered_in_beam_frame(
     for n in range(1, n_max + 1):
         for kind in (0, 1):
             part = scattered[rows[kind][n]]  # (m', node, hand)
-            back = rotations[n].conj().transpose(0, 2, 1) @ part.transpose(1, 0, 2)
-            out[kind, n, n_max - n : n_max + n + 1] = back.transpose(1, 0, 2)
+            out[kind, n, n_max - n : n_max + n + 1] = np.einsum(
+                "jab,ajh->bjh", rotations[n].conj(), part
+            )
     return out[0], out[1]
 
 
