@@ -1,7 +1,7 @@
-"""Block minimal residuals with rank-reduced residuals, for one parity class.
+"""Block minimal residuals with rank-reduced residuals, for one sector.
 
 Vectors are rows and carry their physical norm. For the incident block B (n_wave rows)
-the class holds the iterate X, its residual ``R = B - A X``, directions V and orthonormal
+a sector holds the iterate X, its residual ``R = B - A X``, directions V and orthonormal
 images ``Y = A M V`` with small matrices M. Two invariants hold throughout, to rounding:
 ``R = B - A X``, and R is orthogonal to every Y kept.
 
@@ -71,7 +71,7 @@ def _orthonormal(gram_matrix: NDArray) -> NDArray[np.complex128]:
 
 
 class ClassIterate:
-    """Iterate of one parity class: X, R and the search directions so far.
+    """Iterate of one sector: X, R and the search directions so far.
 
     Parameters
     ----------

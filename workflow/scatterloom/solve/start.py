@@ -24,8 +24,8 @@ class StoredFields:
     Attributes
     ----------
     size_parameter : float
-    rows : list of complex (n_wave_of_class, 3 n_cell)
-        For each parity class; waves in the order of the basis.
+    rows : list of complex (n_wave_of_sector, n_row_of_sector)
+        For each sector of the lattice; waves in the order of the basis.
     """
 
     size_parameter: float
@@ -106,7 +106,7 @@ def interpolated_start(
 
     Returns
     -------
-    callable(norms) -> list of complex (n_wave_of_class, 3 n_cell)
+    callable(norms) -> list of complex (n_wave_of_sector, n_row_of_sector)
 
     Raises
     ------
