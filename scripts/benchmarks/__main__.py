@@ -15,9 +15,10 @@ from benchmarks.output import write_result
 
 BENCHMARKS = {
     "transforms": "Fourier transforms of two libraries on the boxes of the lattice product",
-    "product": "the lattice product against the textbook way and against its bare transforms",
+    "product": "the lattice product against the textbook way and a library's transforms",
     "solve": "one oblate spheroid: block solve and in-fill against one plane wave at a time",
     "starts": "products and error of in-filled sizes against the spacing of their anchors",
+    "single": "products of one plane wave at a time by the field the iteration starts from",
     "convergence": "error against the number of cells, by the kind of cells at surfaces",
     "calibration": "whether the 95 % half widths tell the truth, random cases of five kinds",
     "accuracy_asked": "whether the accuracy asked is met, or its lack flagged; held-out cases",
