@@ -12,7 +12,7 @@ from oracles.tables import mie_table
 from scatterloom.bulk import schema
 from scatterloom.bulk.build import Population, build
 from scatterloom.bulk.bulkfile import open_bulk, write_bulk
-from scatterloom.bulk.distribution import Gamma, Lognormal
+from scatterloom.campaign.distribution import Gamma, Lognormal
 from scatterloom.errors import BadInput, IntegrityError
 
 HAZE = Population("haze", {"clear": 3.0, "dark": 1.0}, Lognormal(0.12, math.log(1.25)))

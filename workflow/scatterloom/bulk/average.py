@@ -22,7 +22,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterloom.bulk.distribution import Distribution
+from scatterloom.campaign.distribution import Distribution
 from scatterloom.bulk.weights import coarse_nodes, size_weights
 
 FloatArray = NDArray[np.float64]

@@ -11,7 +11,7 @@ import numpy as np
 
 from scatterloom.bulk import schema
 from scatterloom.bulk.average import FEWEST_SIZES, Average, Optics, population_average
-from scatterloom.bulk.distribution import Distribution, from_spec
+from scatterloom.campaign.distribution import Distribution, from_spec
 from scatterloom.errors import BadInput
 from scatterloom.scattering.elements import circular_depolarization, linear_depolarization
 from scatterloom.scattering.record import FAILED, SOLVED, SOLVED_WITH_WARNING, has_result

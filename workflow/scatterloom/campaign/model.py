@@ -18,6 +18,7 @@ from scatterloom.campaign.shapes import Shape
 Wavelength = Annotated[float, setting("One wavelength.", unit="um", ge=1e-3, le=1e6)]
 _N: dict[str, Any] = {"unit": "1", "ge": 0.01, "le": 10.0}
 _K: dict[str, Any] = {"unit": "1", "ge": 0.0, "le": 10.0}
+_DENSITY = "1 g/cm3 is 1000 kg/m3"
 _ABSORBS = "absorption is a positive k: the index is n + ik"
 
 
@@ -58,6 +59,9 @@ class Material(Section):
     spectrum: list[SpectrumPoint] | None = setting(
         "The same as `table`, written out here.", None, min_length=1
     )
+    density_g_cm3: float | None = setting(
+        "Density, for results per mass.", None, unit="g cm-3", ge=0.001, le=30.0, advice=_DENSITY
+    )
 
     @model_validator(mode="after")
     def _check(self) -> Material:
@@ -87,6 +91,14 @@ class Particle(Section):
         "One of the keys under `materials`.", form="the name of a material under 'materials'"
     )
     shape: Shape = setting("Shape of the particle.")
+    density_g_cm3: float | None = setting(
+        "Density of the particle, for results per mass; that of its material if missing.",
+        None,
+        unit="g cm-3",
+        ge=0.001,
+        le=30.0,
+        advice=_DENSITY,
+    )
 
 
 class Sizes(Section):
@@ -191,6 +203,25 @@ class Solver(Section):
         return value
 
 
+class Exchange(Section):
+    """What the files for radiative transfer hold."""
+
+    streams: int = setting(
+        "Number of streams, an even number: the delta-M scaled series has as many terms.",
+        16,
+        unit="1",
+        ge=2,
+        le=1000,
+    )
+
+    @field_validator("streams")
+    @classmethod
+    def _check_streams(cls, value: int) -> int:
+        if value % 2:
+            raise wrong(f"{value} is odd", "give an even number of streams")
+        return value
+
+
 class Provenance(Section):
     """Who made the table and how it may be used; copied into its attributes (ACDD 1.3)."""
 
@@ -228,7 +259,13 @@ class CampaignModel(Section):
     accuracy: AccuracyGoal = setting("Accuracy asked; the defaults suit most uses.", AccuracyGoal())
     populations: list[Population] = setting("Mixtures for the bulk table.", [], max_length=1000)
     solver: Solver = setting("Expert overrides.", Solver())
+    exchange: Exchange = setting("Files for radiative transfer.", Exchange())
     provenance: Provenance = setting("Origin and licence of the table.", Provenance())
+
+    def densities(self) -> dict[str, float | None]:
+        """Return the density [g cm-3] of every particle by name, None where not stated."""
+        stated = {name: material.density_g_cm3 for name, material in self.materials.items()}
+        return {p.name: p.density_g_cm3 or stated.get(p.material) for p in self.particles}
 
     @field_validator("wavelengths_um")
     @classmethod

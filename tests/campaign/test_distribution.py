@@ -3,33 +3,49 @@
 from __future__ import annotations
 
 import math
+from itertools import pairwise
 
 import numpy as np
 import pytest
 from scipy.integrate import quad
 from scipy.stats import gamma as scipy_gamma
-from scipy.stats import lognorm
+from scipy.stats import gengamma, lognorm
 
-from scatterloom.bulk.distribution import Gamma, Lognormal, from_spec
+from scatterloom.campaign.composed import Reweighted, Sum, Tabulated, by
+from scatterloom.campaign.distribution import Gamma, Lognormal, ModifiedGamma, PowerLaw
 from scatterloom.bulk.weights import coarse_nodes, size_weights
 
-DISTRIBUTIONS = [Lognormal(0.15, math.log(1.6)), Gamma(0.4, 0.12), Lognormal(1.0, 0.05)]
+ROWS = np.geomspace(0.05, 2.0, 9)
+FINE, COARSE = Lognormal(0.1, math.log(1.5)), Gamma(0.8, 0.1)
+DISTRIBUTIONS = [
+    Lognormal(0.15, math.log(1.6)),
+    Gamma(0.4, 0.12),
+    Lognormal(1.0, 0.05),
+    ModifiedGamma(0.3, 2.0, 0.8),
+    PowerLaw(4.0, 0.05, 2.0),
+    PowerLaw(3.0, 0.1, 0.5),  # the order 2 meets the logarithm
+    Sum.of([FINE, COARSE], [0.3, 0.7], 3),
+    Reweighted(Lognormal(0.5, 0.3), 3),
+    Reweighted(PowerLaw(1.0, 0.1, 3.0), 2),
+    Tabulated(ROWS, np.array([0.0, 1.0, 3.0, 2.0, 0.0, 0.0, 1.0, 0.5, 0.0])),
+]
 
 
 @pytest.mark.parametrize("distribution", DISTRIBUTIONS, ids=repr)
 def test_moments_and_shares_against_direct_integration(distribution) -> None:
-    peak = math.log(distribution.effective_radius_um)
-    low, high = peak - 14 * distribution.log_width - 3, peak + 14 * distribution.log_width
+    low, high = (math.log(r) for r in distribution.span_um)
+    if not distribution.breaks_um:
+        low, high = low - 8 * distribution.log_width, high + 6 * distribution.log_width
+    stops = [math.log(r) for r in distribution.breaks_um]
 
     def integral(order: float, start: float, stop: float) -> float:
         def integrand(u: float) -> float:
             return float(distribution.density(math.exp(u))) * math.exp(order * u)
 
-        middle = min(max(peak, start), stop)
-        return (
-            quad(integrand, start, middle, epsabs=0, epsrel=1e-11, limit=300)[0]
-            + quad(integrand, middle, stop, epsabs=0, epsrel=1e-11, limit=300)[0]
-        )
+        edges = [start, *(s for s in stops if start < s < stop), stop]
+        edges = np.unique(np.concatenate([np.linspace(a, b, 12) for a, b in pairwise(edges)]))
+        parts = [quad(integrand, a, b, epsabs=1e-14, epsrel=1e-11)[0] for a, b in pairwise(edges)]
+        return math.fsum(parts)
 
     for order in (0, 1, 2, 3):
         whole = integral(order, low, high)
@@ -56,35 +72,60 @@ def test_densities_are_those_of_scipy() -> None:
     np.testing.assert_allclose(DISTRIBUTIONS[1].density(r), expected, rtol=1e-12)
 
 
-def test_both_descriptions_of_a_lognormal_agree() -> None:
-    first = from_spec({"kind": "lognormal", "radius_um": 0.15, "geometric_sd": 1.6})
-    second = from_spec(
-        {
-            "kind": "lognormal",
-            "radius_um": None,
-            "effective_radius_um": first.effective_radius_um,
-            "effective_variance": first.effective_variance,
-        }
-    )
-    assert isinstance(second, Lognormal)
-    assert second.median_um == pytest.approx(0.15, rel=1e-12)
-    assert second.log_sd == pytest.approx(math.log(1.6), rel=1e-12)
+def test_modified_gamma_is_that_of_scipy_and_has_its_mode() -> None:
+    d = ModifiedGamma(0.3, 2.0, 0.8)
+    r = np.geomspace(0.02, 5.0, 25)
+    expected = r * gengamma.pdf(r, 3.0 / 0.8, 0.8, scale=0.3 * (0.8 / 2.0) ** (1 / 0.8))
+    np.testing.assert_allclose(d.density(r), expected, rtol=1e-10)
+    near = np.array([0.299, 0.3, 0.301])
+    assert np.argmax(d.density(near) / near) == 1
+    # A gamma distribution is the case gamma = 1: alpha = (1 - 3b)/b, mode a (1 - 3b).
+    a, b = 0.4, 0.12
+    same = ModifiedGamma(a * (1 - 3 * b), (1 - 3 * b) / b, 1.0)
+    np.testing.assert_allclose(same.density(r), Gamma(a, b).density(r), rtol=1e-10)
 
 
-@pytest.mark.parametrize(
-    "spec",
-    [
-        {"kind": "power", "radius_um": 1.0},
-        {"kind": "lognormal", "radius_um": 1.0},
-        {"kind": "lognormal", "radius_um": 1.0, "geometric_sd": 1.0},
-        {"kind": "gamma", "effective_radius_um": 1.0, "effective_variance": 0.5},
-        {"kind": "gamma", "effective_radius_um": -1.0, "effective_variance": 0.1},
-        {"radius_um": 1.0, "geometric_sd": 2.0},
-    ],
-)
-def test_wrong_descriptions_are_refused(spec) -> None:
-    with pytest.raises(ValueError, match=r"population|effective"):
-        from_spec(spec)
+def test_weighting_follows_hatch_and_choate() -> None:
+    """The number median of a lognormal volume distribution is r_v exp(-3 s^2)."""
+    volume, number = Lognormal(0.5, 0.4), Lognormal(0.5 * math.exp(-3 * 0.16), 0.4)
+    r = np.geomspace(0.05, 2.0, 20)
+    weighted = by(volume, "volume")
+    np.testing.assert_allclose(weighted.density(r), number.density(r), rtol=1e-12)
+    for order in (0, 2, 3):
+        assert weighted.moment(order) == pytest.approx(number.moment(order), rel=1e-12)
+        below = weighted.share_below(0.3, order)
+        assert below == pytest.approx(number.share_below(0.3, order), rel=1e-12)
+    assert by(number, "number") is number
+
+
+def test_shares_of_modes_by_volume() -> None:
+    both = Sum.of([FINE, COARSE], [0.3, 0.7], 3)
+    fine, coarse = both.shares
+    assert fine + coarse == pytest.approx(1.0, abs=1e-14)
+    volume = fine * FINE.moment(3), coarse * COARSE.moment(3)
+    assert volume[0] / sum(volume) == pytest.approx(0.3, rel=1e-12)
+
+
+def test_a_finely_tabulated_lognormal_is_that_lognormal() -> None:
+    exact = Lognormal(0.2, 0.4)
+    r = np.geomspace(0.01, 4.0, 400)
+    table = Tabulated(r, 7.0 * exact.density(r))
+    for order in (1, 2, 3):
+        assert table.moment(order) == pytest.approx(exact.moment(order), rel=3e-4)
+    assert table.effective_variance == pytest.approx(exact.effective_variance, rel=1e-3)
+
+
+def test_a_diverging_number_of_particles_is_refused() -> None:
+    with pytest.raises(ValueError, match="diverges"):
+        by(ModifiedGamma(0.3, 1.5, 1.0), "volume").moment(2)
+
+
+def test_weights_stop_at_jumps() -> None:
+    """A power law that ends within the table's steps is integrated to rounding."""
+    d = PowerLaw(4.0, 0.11, 0.77)
+    radius = np.geomspace(0.05, 3.0, 14)
+    weights = size_weights(radius, d.density, d.log_width, power=2, breaks_um=d.breaks_um)
+    assert weights.sum() == pytest.approx(d.moment(2), rel=1e-10)
 
 
 @pytest.mark.parametrize("log_sd", [0.02, 0.2, 0.7])
