@@ -11,9 +11,9 @@ from scipy.integrate import quad
 from scipy.stats import gamma as scipy_gamma
 from scipy.stats import gengamma, lognorm
 
+from scatterloom.bulk.weights import coarse_nodes, size_weights
 from scatterloom.campaign.composed import Reweighted, Sum, Tabulated, by
 from scatterloom.campaign.distribution import Gamma, Lognormal, ModifiedGamma, PowerLaw
-from scatterloom.bulk.weights import coarse_nodes, size_weights
 
 ROWS = np.geomspace(0.05, 2.0, 9)
 FINE, COARSE = Lognormal(0.1, math.log(1.5)), Gamma(0.8, 0.1)
@@ -173,3 +173,5 @@ def test_weights_with_few_sizes_and_wrong_ones() -> None:
 def test_coarse_nodes_keep_both_ends() -> None:
     assert coarse_nodes(7).tolist() == [0, 2, 4, 6]
     assert coarse_nodes(6).tolist() == [0, 2, 4, 5]
+    assert coarse_nodes(7, 1).tolist() == [0, 1, 3, 5, 6]
+    assert coarse_nodes(6, 1).tolist() == [0, 1, 3, 5]

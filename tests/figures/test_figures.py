@@ -12,8 +12,9 @@ import pytest
 from matplotlib.figure import Figure
 
 from oracles.tables import mie_table
-from scatterloom.bulk.build import Population, build
+from scatterloom.bulk.build import build
 from scatterloom.bulk.bulkfile import open_bulk, write_bulk
+from scatterloom.bulk.population import Population
 from scatterloom.campaign.distribution import Lognormal
 from scatterloom.errors import IntegrityError
 from scatterloom.figures.axes import plain_log_ticks

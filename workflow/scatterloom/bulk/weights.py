@@ -77,6 +77,6 @@ def size_weights(
     return weights
 
 
-def coarse_nodes(count: int) -> NDArray[np.intp]:
-    """Every other node of a grid, both ends kept, for an estimate of the quadrature error."""
-    return np.unique(np.append(np.arange(0, count, 2), count - 1))
+def coarse_nodes(count: int, half: int = 0) -> NDArray[np.intp]:
+    """The even (half 0) or odd (half 1) nodes of a grid, both ends kept."""
+    return np.unique(np.concatenate([[0], np.arange(half, count, 2), [count - 1]]))

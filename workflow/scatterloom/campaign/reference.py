@@ -89,9 +89,9 @@ def _sections(path: str, node: Node) -> Iterator[tuple[str, Node]]:
         for tag, option in options.items():
             yield f"{path} ({key}: {tag})", option
             for name, raw in option["properties"].items():
-                inner = follow(raw)
-                if inner.get("type") == "array":
-                    yield from _sections(f"{path}.{name}", inner)
+                listed = follow(raw)
+                if listed.get("type") == "array":
+                    yield from _sections(f"{path}.{name}", listed)
         return
     for option in options.values() if options else [node]:
         if option.get("type") == "array":

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from scatterloom.bulk.build import Population
+from scatterloom.bulk.population import Population
 from scatterloom.figures.curves import matrix_curves
 from scatterloom.figures.effort import product_counts
 from scatterloom.figures.maps import size_angle_map
