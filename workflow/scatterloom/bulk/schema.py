@@ -30,10 +30,10 @@ QUADRATURE_WARNING = 0.01
 
 ERROR_MODEL = (
     "Half widths are sums of bounds: errors of the table taken as fully correlated over sizes, "
-    "particles and matrix elements (they add linearly and do not average out), the larger change of "
-    "the result when every other size is left out, and the estimated effect of the particles outside "
-    "the table's sizes, which the values themselves leave out. Products, quotients and comparisons "
-    "of two wavelengths add relative half widths linearly."
+    "particles and matrix elements (they add linearly and do not average out), the larger change "
+    "of the result when every other size is left out, and the estimated effect of the particles "
+    "outside the table's sizes, which the values themselves leave out. Products, quotients and "
+    "comparisons of two wavelengths add relative half widths linearly."
 )
 
 
