@@ -40,6 +40,7 @@ What the shift of the boundary cells leaves of the error linear in the spacing, 
 even powers cannot see; measured on spheres and spheroids against exact efficiencies.
 """
 
+
 def matrix_model_share(size_parameter: float) -> float:
     """Share of the cell model's error that normalized matrix elements have.
 
