@@ -38,18 +38,19 @@ def table():
 
 
 def truth(index: complex, wavelength_um: float, distribution) -> np.ndarray:
-    """Population matrix by direct integration, not from the table."""
+    """Matrix times mean scattering efficiency by direct integration, not from the table."""
     node, weight = np.polynomial.legendre.leggauss(90)
     low, high = math.log(0.06), math.log(1.0)
     u = low + 0.5 * (high - low) * (1 + node)
     r = np.exp(u)
     balls = [sphere(index, 2 * math.pi * x / wavelength_um) for x in r]
-    w = weight * distribution.density(r) * r**2 * [b.scattering_efficiency for b in balls]
-    return np.tensordot(w / w.sum(), [b.scattering_matrix(ANGLES) for b in balls], axes=1)
+    area = weight * distribution.density(r) * r**2
+    w = area / area.sum() * [b.scattering_efficiency for b in balls]
+    return np.tensordot(w, [b.scattering_matrix(ANGLES) for b in balls], axes=1)
 
 
 def measure(parts, wavelengths=(0.532, 1.064), noise=(0.03, 0.01), seed=3, bright=True):
-    """Synthetic measurement; F11 of each wavelength on a scale of its own."""
+    """Synthetic measurement of (share of area, index, sizes); F11 on a scale of its own."""
     random = np.random.default_rng(seed)
     wave, angle = [], []
     values: dict[str, list] = {name: [] for name in RATIOS}
@@ -99,14 +100,21 @@ def test_a_known_population_is_recovered_and_its_material_told(table) -> None:
 
 
 def test_two_particles_at_once(table) -> None:
-    parts = [(0.5, INDICES["silt"], TRUTH), (0.5, INDICES["water"], TRUTH)]
+    parts = [(0.4, INDICES["silt"], TRUTH), (0.6, INDICES["water"], Lognormal(0.2, 0.25))]
     data = measure(parts, noise=(0.02, 0.004))
     verdict = judge(table, data, list(INDICES), samples=30)
     assert verdict.best is verdict.together
+    assert verdict.best.problem.particles == ("water", "silt")
+    assert verdict.best.shares == pytest.approx([0.6, 0.4], abs=0.05)
     low, high = verdict.interval("shares")
-    assert (low > 0.15).all() and (high < 0.85).all()
-    # Shares were set by scattering; by area they differ by the efficiencies.
-    assert verdict.best.shares.sum() == pytest.approx(1.0, abs=1e-12)
+    assert ((high - low) < 0.2).all() and (low < verdict.best.shares).all()
+    assert 0.7 < verdict.best.chi_square / verdict.best.count < 1.1
+    radius = verdict.best.problem.radius_um
+    mean = (
+        verdict.best.area @ (node_steps(radius) * radius) / (verdict.best.area @ node_steps(radius))
+    )
+    expected = [Lognormal(0.2, 0.25).effective_radius_um, 0.35]
+    assert mean == pytest.approx(expected, rel=0.12)
 
 
 def test_ratios_alone_can_be_fitted(table) -> None:

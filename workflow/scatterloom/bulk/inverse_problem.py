@@ -1,7 +1,7 @@
 """What a measurement asks of a table: matrices for every unit of every unknown.
 
 The unknown is the projected area per unit of ln r of each particle, piecewise linear in
-ln r between nodes; the table's matrices times scattering efficiency are taken linear in
+ln r between nodes; the table's matrices times scattering efficiency are taken cubic in
 ln r between its sizes, and the product of both is integrated exactly.
 """
 
@@ -17,6 +17,7 @@ from scipy.interpolate import CubicSpline
 
 from scatterloom.bulk.compare import check_angles, linear, match_wavelength
 from scatterloom.bulk.measurement import Measurement
+from scatterloom.bulk.weights import size_weights
 from scatterloom.errors import BadInput
 from scatterloom.scattering.record import has_result
 
@@ -126,35 +127,28 @@ def pose(table: xarray.Dataset, measurement: Measurement, particles: Sequence[st
 
 def _block(part: xarray.Dataset, nodes: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
     """Matrices times scattering efficiency, integrated over the hat function of each node."""
-    u, at = np.log(np.asarray(part["radius_um"].values)), np.log(nodes)
+    radius = np.asarray(part["radius_um"].values, dtype=np.float64)
     q = np.asarray(part["scattering_efficiency"].values)[:, None, None, None]
     f = np.asarray(part["scattering_matrix"].values)
     width = np.asarray(part["scattering_matrix_error"].values, dtype=np.float64)
     ratio = np.asarray(part["scattering_matrix_ratio_error"].values, dtype=np.float64)
-    # Where both grids are fine, a sum over the joint grid integrates the product of two
-    # piecewise linear functions by Simpson's rule exactly.
-    joint = np.unique(np.concatenate([u[(u > at[0]) & (u < at[-1])], at]))
-    mid = 0.5 * (joint[1:] + joint[:-1])
-    points = np.concatenate([joint, mid])
-    order = np.argsort(points)
-    points = points[order]
-    step = np.diff(joint) / 6.0
-    mass = np.concatenate([np.zeros(joint.size), 4.0 * step])
-    mass[: joint.size - 1] += step
-    mass[1 : joint.size] += step
-    mass = mass[order]
-    hats = np.stack([np.interp(points, at, row) for row in np.eye(at.size)])
-    place = np.interp(points, u, np.arange(float(u.size)))
-    low = np.minimum(place.astype(np.intp), u.size - 2)
-    share = place - low
-    between = np.zeros((points.size, u.size))
-    between[np.arange(points.size), low] += 1.0 - share
-    between[np.arange(points.size), low + 1] += share
-    weight = (hats * mass) @ between
+    u = np.log(nodes)
+
+    def hat(position: int) -> FloatArray:
+        row = np.eye(u.size)[position]
+        return size_weights(
+            radius,
+            lambda r: np.interp(np.log(r), u, row),
+            float(u[1] - u[0]),
+            breaks_um=tuple(nodes),
+        )
+
+    weight = np.stack([hat(position) for position in range(u.size)])
+    size = np.abs(weight)
     return (
         np.tensordot(weight, q * f, axes=1),
-        np.tensordot(weight, q * width, axes=1),
-        np.tensordot(weight, q * ratio * f[..., :1, :1], axes=1),
+        np.tensordot(size, q * width, axes=1),
+        np.tensordot(size, q * ratio * f[..., :1, :1], axes=1),
     )
 
 

@@ -28,6 +28,7 @@ FloatArray = NDArray[np.float64]
 
 _STRENGTHS = np.logspace(2.0, -10.0, 49)
 _PASSES = 8
+_DECADES = 3.0
 
 
 @dataclass(frozen=True)
@@ -61,8 +62,7 @@ class Fit:
     def shares(self) -> FloatArray:
         """Share of each particle in the projected area."""
         each = self.area @ node_steps(self.problem.radius_um)
-        shares: FloatArray = np.divide(each, each.sum())
-        return shares
+        return np.array(each / each.sum(), dtype=np.float64, copy=False)
 
     @property
     def effective_radius_um(self) -> float:
@@ -115,7 +115,7 @@ def _smoothing(problem: Problem) -> FloatArray:
             rows[i, i - 1] = 1.0
         if i < n - 1:
             rows[i, i + 1] = 1.0
-    return np.kron(np.eye(len(problem.particles)), rows)
+    return np.asarray(np.kron(np.eye(len(problem.particles)), rows), dtype=np.float64)
 
 
 @dataclass(frozen=True)
@@ -248,8 +248,8 @@ def _strength(problem: Problem, rows: _Rows, total: FloatArray) -> float:
 def bootstrap(best: Fit, samples: int, seed: int = 0) -> list[Fit]:
     """Fits to data drawn about the best fit with the errors measured (parametric bootstrap).
 
-    The strength of the smoothing is kept, so what smoothing itself does to the truth is not
-    in the spread.
+    The strength of the smoothing is drawn anew too, between the one chosen and a thousandth
+    of it: with the noise alone, the spread would leave out what smoothing does to the truth.
 
     Parameters
     ----------
@@ -279,7 +279,8 @@ def bootstrap(best: Fit, samples: int, seed: int = 0) -> list[Fit]:
             for values, kernel in zip(exact, problem.kernels, strict=True)
         ]
         rows = _rows(problem, x, best.scales, drawn)
-        found = _solve(problem, rows, best.strength, total)
+        strength = best.strength * 10.0 ** random.uniform(-_DECADES, 0.0)
+        found = _solve(problem, rows, strength, total)
         amplitude = float(found @ total)
         if amplitude > 0.0:
             area = (found / amplitude).reshape(best.area.shape)

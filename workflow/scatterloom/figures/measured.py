@@ -218,8 +218,8 @@ def fitted_sizes(stem: str, verdict: Verdict) -> Picture:
         title=f"Fitted sizes: {stem}",
         caption=(
             f"Projected area per unit of ln r of the non-negative, smoothed fit: {said}. Bands: "
-            "from 2.5 to 97.5 % of a bootstrap over the errors measured; what the smoothing does "
-            "is not in them."
+            "from 2.5 to 97.5 % of a bootstrap over the errors measured and the strength of the "
+            "smoothing."
         ),
         alt=f"Fitted size distribution of {', '.join(names)} against radius: {said}.",
         figure=figure,

@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
+import math
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
-from matplotlib.axes import Axes
 from matplotlib.figure import Figure
-from matplotlib.ticker import FuncFormatter, MultipleLocator
+from matplotlib.ticker import FuncFormatter
 
 from scatterloom.figures.axes import ANGLE_LABEL, angle_axis, plain_log_ticks, ratio_axis
 from scatterloom.figures.curves import LABELS, draw_band, series_legend
@@ -19,6 +19,8 @@ if TYPE_CHECKING:
     import xarray
 
 MOST_POPULATIONS = len(SERIES)
+_ASIDE = ((8, 6), (8, -6), (-8, 6), (-8, -6), (0, 10))
+"""Where labels stand beside their points, apart for every series [points]."""
 
 
 def _known(bulk: xarray.Dataset, wavelength: int) -> list[int]:
@@ -113,7 +115,7 @@ def polar_intensity(bulk: xarray.Dataset, wavelength: int) -> Picture:
     angles = np.asarray(part["angle"].values, dtype=np.float64)
     f11 = part["scattering_matrix"].values[:, :, 0, 0]
     logs = np.log10(f11[shown])
-    low, high = np.floor(logs.min()), np.ceil(logs.max())
+    low, high = float(logs.min()) - 0.4, float(logs.max()) + 0.1
     figure = Figure(figsize=(3.4, 3.3))
     axes: Any = figure.add_subplot(projection="polar")
     for series, i in enumerate(shown):
@@ -132,10 +134,8 @@ def polar_intensity(bulk: xarray.Dataset, wavelength: int) -> Picture:
             markeredgewidth=0.8,
         )
     axes.set_ylim(0.0, high - low)
-    axes.yaxis.set_major_locator(MultipleLocator(1.0))
-    axes.yaxis.set_major_formatter(
-        FuncFormatter(lambda value, _: f"$10^{{{round(value + low)}}}$" if value > 0 else "")
-    )
+    decades = range(math.ceil(low), math.floor(high) + 1)
+    axes.set_yticks([d - low for d in decades], [f"$10^{{{d}}}$" for d in decades])
     axes.set_rlabel_position(112.0)
     axes.set_thetagrids(np.arange(0, 360, 30))
     axes.xaxis.set_major_formatter(
@@ -201,7 +201,16 @@ def lidar_scatter(bulk: xarray.Dataset) -> Picture:
             capsize=1.5,
         )
         for w in at:
-            _label(axes, f"{waves[w]:g}", float(x[""][i, w]), float(y[""][i, w]))
+            axes.annotate(
+                f"{waves[w]:g}",
+                (x[""][i, w], y[""][i, w]),
+                xytext=_ASIDE[series],
+                textcoords="offset points",
+                ha="center",
+                va="center",
+                fontsize=5.5,
+                color=colour,
+            )
             cells = (x[""][i, w], x["_error"][i, w], y[""][i, w], y["_error"][i, w])
             rows.append([names[series], waves[w], *cells])
     axes.set_xlabel("lidar ratio (sr)")
@@ -235,7 +244,3 @@ def lidar_scatter(bulk: xarray.Dataset) -> Picture:
         ],
         rows=rows,
     )
-
-
-def _label(axes: Axes, text: str, x: float, y: float) -> None:
-    axes.annotate(text, (x, y), xytext=(4, 4), textcoords="offset points", fontsize=5.5)
