@@ -31,7 +31,8 @@ def of_shape(spec, cells_across: int, mirrors=(True, True, True)) -> Lattice:
 def random_lattice(box, mirrors=(False, False, False), seed: int = 1) -> Lattice:
     """About two thirds of the cells of a box, arbitrary fill and normals, given mirror planes.
 
-    No surface area, so that the permittivity of the cells is the plain tensor mean. Axes without a mirror plane may have any number of cells.
+    No surface area, so that the permittivity of the cells is the plain tensor mean. Axes
+    without a mirror plane may have any number of cells.
     """
     rng = np.random.default_rng(seed)
     fill = rng.uniform(0.05, 1.0, box) * (rng.uniform(size=box) < 0.65)

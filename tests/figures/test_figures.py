@@ -137,7 +137,7 @@ def test_half_widths_have_panels_of_their_own(table) -> None:
     for title, expected in (
         ("half width of $F_{11}$ (%)", 100 * ladder.ratio_half_width[-1, :, 0, 0]),
         (
-            "widest of the ratios",
+            "half width, widest ratio",
             ladder.ratio_half_width[-1][:, [1, 2, 3, 0, 2], [1, 2, 3, 1, 3]].max(axis=1),
         ),
     ):

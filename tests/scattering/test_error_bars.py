@@ -93,6 +93,15 @@ def test_the_model_error_widens_every_bar():
         assert np.all(b[:, 0, 0] > a[:, 0, 0])
 
 
+def test_the_model_error_of_elements_is_a_share_of_f11():
+    element, ratio = matrix_half_widths(EXPANSIONS[:1], [BEST], 0.05, GRID_DEG)
+    f11 = synthesize(EXPANSIONS[0], GRID_DEG)[:, 0, 0]
+    for i in range(4):
+        np.testing.assert_allclose(element[:, i, i], ratio[0, 0, 0] * f11, rtol=1e-12)
+        np.testing.assert_allclose(ratio[:, i, i], ratio[0, 0, 0], rtol=1e-12)
+    assert ratio[0, 0, 0] > 0
+
+
 def test_model_error_falls_with_the_cells_and_vanishes_without_contrast():
     assert cell_model_error(1.5, 24) == pytest.approx(cell_model_error(1.5, 12) / 2)
     assert 0 < cell_model_error(1.1, 12) < cell_model_error(1.5, 12) < cell_model_error(2.0, 12)

@@ -132,3 +132,21 @@ def test_recursive_and_true_residual_agree_in_single_precision():
         scale = np.linalg.norm(block)
         assert np.linalg.norm(true - iterate.residual) < 1e-6 * scale
         assert np.linalg.norm(true) < 1e-2 * scale
+
+
+def test_a_start_is_judged_by_the_strength_of_its_directions(system):
+    # One strong and one weak direction: the one wrong altogether counts with its share of B.
+    _, b = system
+    basis = np.linalg.qr(b[:2].T)[0].T
+    block = np.array([[3.0], [0.1]]) * basis
+    iterate = ClassIterate(block)
+    wanted = iterate.propose(1e-12)
+    strong = np.argmax(np.linalg.norm(block @ wanted.conj().T, axis=0))
+    images = wanted.copy()
+    assert iterate.shortfall(wanted, images)[0] == pytest.approx(0.0, abs=1e-12)
+    images[1 - strong] = 0.0
+    missed, whole = iterate.shortfall(wanted, images)
+    assert whole == pytest.approx(np.linalg.norm(block), rel=1e-12)
+    assert missed == pytest.approx(0.1, rel=1e-10)
+    images[1 - strong], images[strong] = wanted[1 - strong], 0.0
+    assert iterate.shortfall(wanted, images)[0] == pytest.approx(3.0, rel=1e-10)

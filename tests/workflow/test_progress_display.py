@@ -18,9 +18,9 @@ ALL = Progress(12, 12, 3, 3, (), (), 80.0)
 def test_one_line_says_everything():
     assert line(HALF, "filling in", 61.0) == (
         "filling in, 6 of 12 cases, size parameter 2.75, residual 3.0e-04, "
-        "42 products a wave, time left 1 min 01 s"
+        "42 products per wave in all, time left 1 min 01 s"
     )
-    assert line(ALL, "drawing", None) == "drawing, 12 of 12 cases, 80 products a wave"
+    assert line(ALL, "drawing", None) == "drawing, 12 of 12 cases, 80 products per wave in all"
 
 
 @pytest.mark.parametrize(

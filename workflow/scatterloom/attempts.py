@@ -50,11 +50,25 @@ class Task:
     tolerance: float
     asked: Asked
     threads: int
+    inner_indices: tuple[complex, ...] = ()
 
     @property
-    def half_axes(self) -> tuple[float, float, float]:
-        a, b, c = (float(axis) for axis in self.shape.half_axes)
-        return a, b, c
+    def indices(self) -> tuple[complex, ...]:
+        """Indices of all materials, from outside inwards."""
+        return (self.index, *self.inner_indices)
+
+    @property
+    def lengths(self) -> tuple[float, ...]:
+        """Half extents of the nested bodies: what should lie alike on all lattices."""
+        return tuple(
+            float(scale * half) for scale in self.shape.scales for half in self.shape.half_extents
+        )
+
+    @property
+    def radii(self) -> tuple[float, ...]:
+        """Half extents and circumscribed radius: what sets the truncation."""
+        half = (float(length) for length in self.shape.half_extents)
+        return (*half, self.shape.circumscribed_radius)
 
 
 class _Solves:
@@ -86,7 +100,7 @@ class _Solves:
         tolerance = task.tolerance * (_INFILL_TOLERANCE if neighbours else 1.0)
         return solve_level(
             lattice(task.shape, cells),
-            task.index,
+            task.indices,
             self._x,
             n_max,
             tolerance,
@@ -124,7 +138,7 @@ def solve_case(
         On the lattices of the task, for starts of other sizes.
     """
     begun = time.perf_counter()
-    n_max = effort.n_max(task.half_axes, x, task.asked.f11_relative)
+    n_max = effort.n_max(task.radii, x, task.asked.f11_relative)
     bits = {name: bit for name, (bit, _) in record.FLAGS.items()}
     cells, longer, finer = task.cells, _LONGER_BASES, task.refinements
     solves = _Solves(task, x, anchors, progress)
@@ -138,7 +152,7 @@ def solve_case(
             levels,
             cells,
             task.shape.symmetry,
-            task.index,
+            task.indices,
             x,
             lattice(task.shape, cells[-1]).spacing,
             task.asked,
@@ -153,12 +167,12 @@ def solve_case(
             n_max, longer = n_max + 3, longer - 1
             solves.by_cells.clear()
         elif solved.warning_flags & bits["accuracy_not_met"] and finer:
-            cells, finer = effort.finer_levels(task.half_axes, cells), finer - 1
+            cells, finer = effort.finer_levels(task.lengths, cells), finer - 1
         else:
             break
     if not solved.operator_error < _GIVE_UP:
         flags = solved.warning_flags | bits["not_converged"]
-        return failed_record(digest, task.shape_json, task.index, x, cells, flags), own
+        return failed_record(digest, task.shape_json, task.indices, x, cells, flags), own
     return solved, own
 
 

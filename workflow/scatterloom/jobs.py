@@ -109,6 +109,7 @@ class _Job:
                 accuracy["efficiency_relative"],
             ),
             threads=threads,
+            inner_indices=tuple(complex(*m) for m in spec.get("inner_indices", ())),
         )
         self.cases: list[tuple[str, float]] = [(d, float(x)) for d, x in spec["cases"]]
         self.report = _Reporter(folder, self.task, len(self.cases))

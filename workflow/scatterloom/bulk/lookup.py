@@ -119,6 +119,7 @@ class Table:
         self.angle_deg = np.asarray(self.dataset["angle"].values, dtype=np.float64)
         n, k = (np.asarray(self.dataset[f"refractive_index_{p}"].values) for p in "nk")
         self._index = n + 1j * k
+        self._core = _cores(self.dataset)
         self._shapes = _shapes(self.dataset.attrs, self.particles)
         # The same at every wavelength and size: 2 pi r n_medium / wavelength.
         x, r = (np.asarray(self.dataset[v].values)[0, 0] for v in ("size_parameter", "radius_um"))
@@ -161,12 +162,13 @@ class Table:
             raise BadInput("give exactly one of radius_um and size_parameter")
         if radius_um is not None and wavelength_um is None:
             raise BadInput("a radius_um needs a wavelength_um")
+        core = self._core_at(particle, wavelength_um)
         m = index if index is not None else self._index_at(particle, wavelength_um)
         if radius_um is not None and wavelength_um is not None:
             x = 2.0 * np.pi * radius_um * self._medium / wavelength_um
         else:
             x = float(size_parameter or 0.0)
-        return self._interpolate(particle, x, complex(m))
+        return self._interpolate(particle, x, complex(m), core)
 
     def _index_at(self, particle: str, wavelength_um: float | None) -> complex:
         own, waves = self._index[self.particles.index(particle)], self.wavelength_um
@@ -184,8 +186,21 @@ class Table:
         u, at = np.log(waves), np.log(wavelength_um)
         return complex(np.interp(at, u, own.real), np.interp(at, u, own.imag))
 
-    def _ladders(self, particle: str) -> list[_Ladder]:
-        """Every ladder of the particle's shape, equal indices put together."""
+    def _core_at(self, particle: str, wavelength_um: float | None) -> str:
+        """Core index of a coated particle as text; there is no interpolation in it."""
+        own = self._core[self.particles.index(particle)]
+        if len(set(own)) == 1:
+            return own[0]
+        at = [] if wavelength_um is None else np.flatnonzero(self.wavelength_um == wavelength_um)
+        if len(at) == 0:
+            raise BadInput(
+                f"the index of the core of {particle} changes with wavelength: give one of the "
+                "table's wavelength_um"
+            )
+        return own[int(at[0])]
+
+    def _ladders(self, particle: str, core: str = "") -> list[_Ladder]:
+        """Every ladder of the particle's shape and core, equal indices put together."""
         shape = self._shapes[particle]
         status = has_result(self.dataset["status"].values)
         x = np.asarray(self.dataset["size_parameter"].values)
@@ -194,7 +209,7 @@ class Table:
             if self._shapes[name] != shape:
                 continue
             for w, s in itertools.product(range(x.shape[0]), range(x.shape[1])):
-                if status[p, w, s]:
+                if status[p, w, s] and self._core[p][w] == core:
                     cells.setdefault(complex(self._index[p, w]), []).append((p, w, s))
         ladders = []
         for m, found in cells.items():
@@ -205,8 +220,8 @@ class Table:
             ladders.append(_Ladder(m, sizes[first], at[first]))
         return ladders
 
-    def _interpolate(self, particle: str, x: float, m: complex) -> Optics:
-        ladders = self._ladders(particle)
+    def _interpolate(self, particle: str, x: float, m: complex, core: str) -> Optics:
+        ladders = self._ladders(particle, core)
         reach = [
             k
             for k in ladders
@@ -333,5 +348,19 @@ def _shapes(attributes: Mapping[str, Any], particles: Sequence[str]) -> dict[str
     config = YAML(typ="safe", pure=True).load(str(attributes.get("config", ""))) or {}
     for entry in config.get("particles", ()):
         if entry["name"] in shapes:
-            shapes[entry["name"]] = json.dumps(entry["shape"], sort_keys=True)
+            coating = dict(entry.get("coating") or {})
+            coating.pop("material", None)  # its index is in the table
+            shapes[entry["name"]] = json.dumps([entry["shape"], coating], sort_keys=True)
     return shapes
+
+
+def _cores(dataset: xarray.Dataset) -> list[list[str]]:
+    """Index of the core by particle and wavelength as text to compare, empty without a core."""
+    shape = (dataset.sizes["particle"], dataset.sizes["wavelength"])
+    if "core_refractive_index_n" not in dataset:
+        return [[""] * shape[1] for _ in range(shape[0])]
+    n, k = (np.asarray(dataset[f"core_refractive_index_{part}"].values) for part in "nk")
+    return [
+        [f"{n[p, w]:.12g} {k[p, w]:.12g}" if np.isfinite(n[p, w]) else "" for w in range(shape[1])]
+        for p in range(shape[0])
+    ]

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 
 from scatterloom.campaign import effort
 from scatterloom.campaign.expand import Grid
-from scatterloom.campaign.geometry import half_axes
+from scatterloom.campaign.geometry import extents, mirror_planes
 from scatterloom.campaign.plan import Job
 
 _COMPLEX64_BYTES = 8
@@ -52,16 +52,18 @@ def job_bytes(job: Job) -> int:
 
     Counted are, on the finest lattice and in single precision: the incident block, the
     fields and residuals, search directions and their images (about two of each for every
-    wave), one octant of cells standing for all; the kernel and the padded grids of one
-    product; and for a span the fields of the anchors on all lattices.
+    wave), one octant of cells standing for all (more with fewer mirror planes); the kernel
+    and the padded grids of one product; and for a span the fields of the anchors on all
+    lattices.
     """
-    axes = half_axes(job.shape)
-    order = effort.n_max(axes, max(x for _, x in job.cases), job.accuracy.f11_relative)
+    reach = extents(job.shape)
+    axes = reach.half
+    order = effort.n_max(reach.radii, max(x for _, x in job.cases), job.accuracy.f11_relative)
     waves = 2 * order * (order + 2)
     finest = max(job.levels)
     spacing = 2.0 * max(axes) / finest
     filled = 4.0 * math.pi / 3.0 / spacing**3
-    fields = 3.0 * filled / 8.0 * waves
+    fields = 3.0 * filled / 2 ** mirror_planes(job.shape) * waves
     box = math.prod(2.0 * axis / spacing + 1.0 for axis in axes)
     blocks = 7.0
     if job.kind == "span":

@@ -74,7 +74,7 @@ def line(progress: Progress, phase: str, left: float | None) -> str:
         if leading.residual is not None:
             parts.append(f"residual {leading.residual:.1e}")
     if progress.products:
-        parts.append(f"{progress.products:.0f} products a wave")
+        parts.append(f"{progress.products:.0f} products per wave in all")
     if progress.cases_done < progress.cases:
         parts.append(f"time left {spoken(left)}")
     if progress.failed:
@@ -158,7 +158,7 @@ class Display:
                 "", f"{job.kind} {job.cases_done} of {job.cases_total} cases, {size}{residual}"
             )
         if progress.products:
-            table.add_row("products", f"{progress.products:.0f} a wave")
+            table.add_row("products", f"{progress.products:.0f} per wave in all")
         if progress.failed:
             table.add_row("failed", f"{len(progress.failed)} jobs")
         table.add_row("time left", spoken(left))

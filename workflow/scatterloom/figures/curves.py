@@ -91,7 +91,7 @@ def matrix_curves(ladder: Ladder) -> Picture:
         panel.set_yscale("log")
     panels[0].set_title("$F_{11}$, mean 1")
     width_f11.set_title("half width of $F_{11}$ (%)")
-    width_ratios.set_title("widest of the ratios")
+    width_ratios.set_title("half width, widest ratio")
     angles = ladder.angle_deg
     rows: list[list[float]] = []
     keep = thinned(angles)
