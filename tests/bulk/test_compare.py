@@ -152,6 +152,20 @@ def test_small_particles_say_nothing_of_size_and_little_of_material() -> None:
     assert any("hardly depend on size" in w for w in verdict.warnings)
 
 
+def test_data_that_nothing_fits_do_not_end_in_nothing(table) -> None:
+    """A single resonant sphere: no smooth distribution of the other material comes near."""
+    f = sphere(1.53 + 0.003j, 5.0).scattering_matrix(ANGLES)
+    data = Measurement(
+        "one.csv",
+        np.full(ANGLES.size, 0.532),
+        ANGLES,
+        {"F11": f[:, 0, 0], "F12/F11": f[:, 0, 1] / f[:, 0, 0]},
+        {"F11": 0.001 * f[:, 0, 0], "F12/F11": np.full(ANGLES.size, 0.001)},
+    )
+    found = fit(pose(table, data, ["water"]))
+    assert found.chi_square > 10 * found.count and found.area.sum() > 0
+
+
 def test_particles_that_do_not_fit_are_named(table) -> None:
     wrong = measure([(1.0, 1.8 + 0.3j, TRUTH)], noise=(0.005, 0.002))
     verdict = judge(table, wrong, list(INDICES), samples=10)

@@ -198,3 +198,18 @@ def test_blending_reproduces_planes_and_knows_its_hull() -> None:
     assert blend(points, np.array([1.6, 0.0])) is None
     assert blend(points[:2], np.array([1.4, 1e-3])) is None
     assert blend(points[:1], np.array([1.4, 1e-3])) is None
+
+
+def test_particles_with_other_cores_are_kept_apart() -> None:
+    dataset = spheres()
+    for part, core in (("n", [1.5, np.nan, np.nan, np.nan]), ("k", [0.0, np.nan, np.nan, np.nan])):
+        values = np.repeat(np.array(core)[:, None], 2, axis=1)
+        dataset[f"core_refractive_index_{part}"] = (("particle", "wavelength"), values)
+    table = Table(dataset)
+    with pytest.raises(BadInput, match="lies outside those"):
+        table.at("a", size_parameter=2.0, index=1.42 + 0.01j)  # no other has its core
+    assert table.at("a", size_parameter=2.0).index == 1.40 + 0.01j
+    dataset["core_refractive_index_n"].values[0] = [1.5, 1.6]
+    with pytest.raises(BadInput, match="index of the core of a changes"):
+        Table(dataset).at("a", size_parameter=2.0)
+    Table(dataset).at("a", size_parameter=2.0, wavelength_um=0.55)

@@ -238,3 +238,18 @@ def test_every_value_is_tested_or_of_spheres_trivial() -> None:
         "linear_depolarization_ratio",
         "circular_depolarization_ratio",
     }
+
+
+def test_density_of_a_coated_particle_is_that_of_its_volumes(tmp_path) -> None:
+    text = CAMPAIGN.split("populations:")[0].replace(
+        "{name: drop, material: water, shape: {kind: sphere}}",
+        "{name: drop, material: silt, shape: {kind: sphere},"
+        " coating: {material: water, core_volume_fraction: 0.25}}",
+    )
+    (tmp_path / "c.yaml").write_text(text)
+    assert load(tmp_path / "c.yaml").model.densities() == {"drop": None, "grain": 2.5}
+    text = text.replace("k: 0.003}", "k: 0.003, density_g_cm3: 2.6}")
+    (tmp_path / "c.yaml").write_text(text)
+    assert load(tmp_path / "c.yaml").model.densities()["drop"] == pytest.approx(
+        0.25 * 2.6 + 0.75 * 1.0, rel=1e-12
+    )

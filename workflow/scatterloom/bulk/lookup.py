@@ -191,8 +191,8 @@ class Table:
         own = self._core[self.particles.index(particle)]
         if len(set(own)) == 1:
             return own[0]
-        at = [] if wavelength_um is None else np.flatnonzero(self.wavelength_um == wavelength_um)
-        if len(at) == 0:
+        at = np.flatnonzero(self.wavelength_um == (wavelength_um or 0.0))
+        if at.size == 0:
             raise BadInput(
                 f"the index of the core of {particle} changes with wavelength: give one of the "
                 "table's wavelength_um"

@@ -4,7 +4,8 @@ The unknown is the projected area per unit of ln r of each particle, piecewise l
 ln r. It enters the matrix linearly, so for given weights the fit is a non-negative least
 squares problem (Lawson & Hanson 1974), smoothed by squared second differences (Tikhonov);
 the strength of the smoothing is the largest that keeps chi-square at the number of data
-(discrepancy principle, Morozov 1966), or within 5 % of its least value if that is larger.
+(discrepancy principle, Morozov 1966), or within 5 % and two standard deviations of its
+least value if that is larger.
 Ratios are made linear as F_ij - r F11 = 0; their weights, and the scale of F11 at each
 wavelength, follow from the fit before, until nothing changes.
 """
@@ -234,7 +235,9 @@ def _start(problem: Problem, total: FloatArray) -> tuple[FloatArray, list[float]
 def _strength(problem: Problem, rows: _Rows, total: FloatArray) -> float:
     """Largest smoothing that the data allow."""
     least = _chi_square(rows, _solve(problem, rows, 0.0, total))
-    target = max(float(rows.data.size), 1.05 * least)
+    # Of data that nothing fits, smoothing may add no more than chance would.
+    count = float(rows.data.size)
+    target = max(count, min(1.05 * least, least + 2.0 * math.sqrt(2.0 * count)))
     low, high = 0, _STRENGTHS.size - 1  # descending strengths: chi-square falls along them
     while low < high:
         middle = (low + high) // 2
