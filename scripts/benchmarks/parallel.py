@@ -8,10 +8,16 @@ from collections.abc import Callable, Sequence
 from concurrent.futures import ProcessPoolExecutor
 from typing import TypeVar
 
+import numpy as np
+import scipy.linalg
 from threadpoolctl import threadpool_limits
 
 Item = TypeVar("Item")
 Found = TypeVar("Found")
+
+
+LOADED = (np.__name__, scipy.linalg.__name__)
+"""Libraries that must be loaded in a process before their threads can be limited."""
 
 
 def _one_thread() -> None:
