@@ -15,12 +15,12 @@ from functools import cached_property
 from pathlib import Path
 from typing import Any
 
-import scatterloom
 from scatterloom import campaign as campaigns
 from scatterloom.campaign.effort import NUMERICS_REVISION
 from scatterloom.campaign.expand import Grid, expand
 from scatterloom.campaign.plan import Job, plan
 from scatterloom.errors import IntegrityError
+from scatterloom.outline import outline_of, table_digest
 from scatterloom.store.atomic import sweep_abandoned, write_if_changed
 from scatterloom.store.commit import commit_record, verify_folder
 from scatterloom.store.layout import Layout, results_root
@@ -62,7 +62,11 @@ class Graph:
         EnvironmentProblem
             If there is no folder for the results.
         """
-        campaign = campaigns.load(Path(config))
+        return cls.plan(campaigns.load(Path(config)), results)
+
+    @classmethod
+    def plan(cls, campaign: campaigns.Campaign, results: Path | str | None = None) -> Graph:
+        """Expand and plan a campaign that is read already."""
         grid = expand(campaign)
         layout = Layout(results_root(results) / campaign.name)
         return cls(campaign, layout, grid, {job.name: job for job in plan(grid)})
@@ -79,9 +83,7 @@ class Graph:
     @cached_property
     def table_digest(self) -> str:
         """Digest of everything, besides the cases, that the table depends on."""
-        return canonical_digest(
-            [self.campaign.merged_yaml(), scatterloom.__version__, NUMERICS_REVISION]
-        )
+        return table_digest(self.campaign)
 
     @property
     def has_populations(self) -> bool:
@@ -115,6 +117,7 @@ class Graph:
         for path in layout.jobs.glob("*.json"):
             if path.stem not in self.jobs:
                 path.unlink(missing_ok=True)
+        outline_of(self).write()
         if not receipt_holds(layout):
             layout.receipt.unlink(missing_ok=True)
 

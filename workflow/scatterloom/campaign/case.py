@@ -5,7 +5,7 @@ from __future__ import annotations
 import hashlib
 import json
 from collections.abc import Mapping
-from dataclasses import asdict, dataclass
+from dataclasses import dataclass
 from functools import cached_property
 from typing import Any
 
@@ -66,8 +66,8 @@ class Case:
                 "shape": dict(self.shape),
                 "index": [self.index.real, self.index.imag],
                 "size_parameter": self.size_parameter,
-                "accuracy": asdict(self.accuracy),
-                "overrides": asdict(self.overrides),
+                "accuracy": vars(self.accuracy),  # asdict takes ten times as long
+                "overrides": vars(self.overrides),
                 "numerics_revision": effort.NUMERICS_REVISION,
             }
         )

@@ -6,12 +6,10 @@ import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-from scatterloom.campaign import effort
 from scatterloom.campaign.expand import Grid
 from scatterloom.campaign.geometry import half_axes
+from scatterloom.campaign.memory import case_bytes
 from scatterloom.campaign.plan import Job
-
-_COMPLEX64_BYTES = 8
 
 
 @dataclass(frozen=True)
@@ -48,22 +46,11 @@ def outlook(grid: Grid, jobs: Sequence[Job]) -> Outlook:
 
 
 def job_bytes(job: Job) -> int:
-    """Return the predicted memory of a job [bytes], beside that of the program itself.
-
-    Counted are, on the finest lattice and in single precision: the incident block, the
-    fields and residuals, search directions and their images (about two of each for every
-    wave), one octant of cells standing for all; the kernel and the padded grids of one
-    product; and for a span the fields of the anchors on all lattices.
-    """
-    axes = half_axes(job.shape)
-    order = effort.n_max(axes, max(x for _, x in job.cases), job.accuracy.f11_relative)
-    waves = 2 * order * (order + 2)
-    finest = max(job.levels)
-    spacing = 2.0 * max(axes) / finest
-    filled = 4.0 * math.pi / 3.0 / spacing**3
-    fields = 3.0 * filled / 8.0 * waves
-    box = math.prod(2.0 * axis / spacing + 1.0 for axis in axes)
-    blocks = 7.0
-    if job.kind == "span":
-        blocks += len(job.anchors) * sum((n / finest) ** 3 for n in job.levels)
-    return round((blocks * fields + 6.0 * box + 8 * 3 * 2.0 * box) * _COMPLEX64_BYTES)
+    """Return the predicted peak memory of a job, that of its largest case [bytes]."""
+    return case_bytes(
+        half_axes(job.shape),
+        max(x for _, x in job.cases),
+        job.levels,
+        job.accuracy.f11_relative,
+        len(job.anchors),
+    )

@@ -23,6 +23,10 @@ from scatterloom.errors import BadInput
 MOST_JOBS = 10_000
 """The workflow engine takes 9 s for a graph of this many jobs, and linearly more beyond."""
 
+SHORTEST_JOB_S = 20.0
+SHARES = 200
+"""Jobs are no longer than one of so many parts of the whole campaign, solved cold."""
+
 ANCHORS_EACH_SIDE = 2
 
 T = TypeVar("T")
@@ -92,8 +96,9 @@ class _Segment:
 def plan(grid: Grid) -> list[Job]:
     """Return the jobs that solve every case of the grid once, anchors before their spans.
 
-    Cases are batched to jobs of about `grid.job_seconds`, and to longer ones if there would
-    be more than `MOST_JOBS` otherwise.
+    Cases are batched to jobs of at most about `grid.job_seconds`; to shorter ones in a small
+    campaign, so that it can use many cores; to longer ones if there would be more than
+    `MOST_JOBS` otherwise.
 
     Raises
     ------
@@ -101,8 +106,9 @@ def plan(grid: Grid) -> list[Job]:
         If even the longest jobs are too many.
     """
     segments = [segment for ladder in _ladders(grid) for segment in _segments(ladder, grid)]
-    seconds = grid.job_seconds
     longest = math.fsum(size.cold for segment in segments for size in segment.sizes)
+    # A small campaign is shared out too, down to jobs whose start-up still does not matter.
+    seconds = min(grid.job_seconds, max(SHORTEST_JOB_S, longest / SHARES))
     while _count(segments, seconds) > MOST_JOBS:
         if seconds > longest:
             raise BadInput(

@@ -86,6 +86,7 @@ def solve_block(
     start: Sequence[NDArray] | None = None,
     max_steps: int = 60,
     progress: Callable[[float, float], None] | None = None,
+    checkpoint: Callable[[Callable[[], list[NDArray]], float], None] | None = None,
 ) -> BlockSolution:
     """Solve ``A X = B`` for every parity class until the amplitudes are good enough.
 
@@ -107,6 +108,8 @@ def solve_block(
         Largest number of blocks of products.
     progress : callable(error, residual), optional
         Called after every block of products.
+    checkpoint : callable(fields, products), optional
+        Called likewise; `fields()` makes the best fields so far, as a later start.
 
     Returns
     -------
@@ -172,6 +175,10 @@ def solve_block(
             progress(error, residual)
         if error <= tolerance:
             break
+        if checkpoint is not None:
+            checkpoint(
+                lambda: [iterate.fields + iterate.residual for iterate in iterates], used / n_wave
+            )
         if len(history) > 8 and error > 0.9 * history[-5]:
             break
     # The residual is updated, not recomputed, so the remainder does not see rounding.

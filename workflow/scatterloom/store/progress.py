@@ -38,6 +38,14 @@ class Heartbeat:
     pid, host : int, str
     exit_code, message : int or None, str
         Of a failed job.
+    solved, seconds : int, float
+        Cases that this job solved, and the time they took [s].
+    reused : int
+        Cases taken from the case library.
+    cases_failed : int
+        Cases without a result.
+    peak_bytes : int
+        Largest memory in use while a case was solved [bytes].
     """
 
     job: str
@@ -53,6 +61,11 @@ class Heartbeat:
     host: str = ""
     exit_code: int | None = None
     message: str = ""
+    solved: int = 0
+    seconds: float = 0.0
+    reused: int = 0
+    cases_failed: int = 0
+    peak_bytes: int = 0
 
     @property
     def alive(self) -> bool:

@@ -1,0 +1,55 @@
+"""Predict the memory of a case before it is solved."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+
+from scatterloom.campaign import effort
+
+PROGRAM_BYTES = 245 * 2**20
+"""The program itself, with its libraries loaded and its kernels compiled (measured)."""
+
+_COMPLEX64_BYTES = 8
+
+_COLD_BLOCKS = 10.5
+"""Blocks of all waves on the finest lattice held at the peak of a cold solve.
+
+Measured on spheres at x = 2 to 5.5: 8 to 12. They are the incident block, fields,
+residuals, about two search directions and images a wave, the waves evaluated in double
+precision, and the fields of the coarser lattices.
+"""
+
+
+def case_bytes(
+    half_axes: Sequence[float],
+    size_parameter: float,
+    levels: Sequence[int],
+    f11_relative: float,
+    neighbours: int = 0,
+) -> int:
+    """Return the predicted peak memory of a job while it solves one case [bytes].
+
+    Parameters
+    ----------
+    half_axes : sequence of 3 float
+        In units of the equal-volume-sphere radius.
+    size_parameter : float
+    levels : sequence of int
+        Cells across on each lattice.
+    f11_relative : float
+        Accuracy asked.
+    neighbours : int
+        Anchors whose fields are held to start from.
+    """
+    order = effort.n_max(half_axes, size_parameter, f11_relative)
+    waves = 2 * order * (order + 2)
+    finest = max(levels)
+    spacing = 2.0 * max(half_axes) / finest
+    # One octant of cells stands for all.
+    block = 3.0 * (4.0 * math.pi / 3.0 / spacing**3) / 8.0 * waves
+    box = math.prod(2.0 * axis / spacing + 1.0 for axis in half_axes)
+    blocks = _COLD_BLOCKS + neighbours * sum((n / finest) ** 3 for n in levels)
+    # The kernel on an octant of the doubled grid, and the padded grids of a batch of waves.
+    grids = 6.0 * box + 8 * 3 * 2.0 * box
+    return round(PROGRAM_BYTES + (blocks * block + grids) * _COMPLEX64_BYTES)
