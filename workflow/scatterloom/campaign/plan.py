@@ -108,7 +108,9 @@ def plan(grid: Grid) -> list[Job]:
     segments = [segment for ladder in _ladders(grid) for segment in _segments(ladder, grid)]
     longest = math.fsum(size.cold for segment in segments for size in segment.sizes)
     # A small campaign is shared out too, down to jobs whose start-up still does not matter.
-    seconds = min(grid.job_seconds, max(SHORTEST_JOB_S, longest / SHARES))
+    # In powers of two, so that a few more sizes or particles seldom lay out all jobs anew.
+    doublings = max(0, math.ceil(math.log2(max(longest, 1.0) / SHARES / SHORTEST_JOB_S)))
+    seconds = min(grid.job_seconds, SHORTEST_JOB_S * 2.0**doublings)
     while _count(segments, seconds) > MOST_JOBS:
         if seconds > longest:
             raise BadInput(

@@ -12,7 +12,15 @@ from typing import Annotated, Any
 from pydantic import BaseModel, ConfigDict, Field
 from pydantic_core import PydanticCustomError
 
-UNIT_NAMES = {"um": "um", "deg": "degrees", "s": "seconds", "1": "", "size": ""}
+UNIT_NAMES = {
+    "um": "um",
+    "deg": "degrees",
+    "s": "seconds",
+    "min": "minutes",
+    "GiB": "GiB",
+    "1": "",
+    "size": "",
+}
 """Units of the configuration and how they read in a sentence; a size is in um or has no unit."""
 
 

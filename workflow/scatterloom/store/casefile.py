@@ -94,6 +94,34 @@ def read_records(path: Path | str) -> list[CaseRecord]:
         ) from error
 
 
+def check_file(path: Path, *, digest: bool = True) -> None:
+    """Check that a case file is whole and as it was written, without decoding it.
+
+    Parameters
+    ----------
+    path : Path
+    digest : bool
+        Whether to read all of it, or only its first bytes and its length.
+
+    Raises
+    ------
+    IntegrityError
+        Naming the file and what is wrong.
+    """
+    if digest:
+        _checked_payload(path, path.read_bytes())
+        return
+    head = len(SIGNATURE) + _FIXED.size
+    with open(path, "rb") as stream:
+        content = stream.read(head)
+    expected = 0
+    if len(content) == head and content.startswith(SIGNATURE):
+        expected = head + _FIXED.unpack_from(content, len(SIGNATURE))[1]
+    if path.stat().st_size != expected:
+        # Rare: the whole check finds the words.
+        _checked_payload(path, path.read_bytes())
+
+
 def _checked_payload(path: Path, content: bytes) -> bytes:
     head = len(SIGNATURE)
     if content[:head] != SIGNATURE[: len(content)] or not content:
