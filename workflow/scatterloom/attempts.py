@@ -185,7 +185,7 @@ def solve_case(
                 case.solves.checkpoint.remove()
             return _failed(task, digest, x, _REASON.get(type(error), "breakdown")), []
         # A finer attempt was cut short; the one before it stands, flagged for its accuracy.
-        solved, own = case.best
+        solved, own = case.best, []
     if not solved.operator_error < _GIVE_UP:
         flags = solved.warning_flags | _BIT["not_converged"]
         return failed_record(digest, task.shape_json, task.index, x, solved.levels, flags), own
@@ -212,7 +212,7 @@ class _Case:
         self._task, self._digest, self._x, self._anchors = task, digest, x, anchors
         self._began = time.perf_counter()
         self.solves = _Solves(task, digest, x, anchors, progress)
-        self.best: tuple[CaseRecord, list[LevelResult]] | None = None
+        self.best: CaseRecord | None = None
 
     def solve(self) -> tuple[CaseRecord, list[LevelResult]]:
         task, x = self._task, self._x
@@ -220,10 +220,12 @@ class _Case:
         cells, longer, finer = task.cells, _LONGER_BASES, task.refinements
         while True:
             solved, own = self._attempt(cells, n_max)
-            self.best = solved, own
+            self.best = solved
             if solved.warning_flags & _BIT["truncation"] and longer:
                 n_max, longer = n_max + 3, longer - 1
+                # Fields of the shorter basis are of no more use.
                 self.solves.by_cells.clear()
+                own.clear()
             elif solved.warning_flags & _BIT["accuracy_not_met"] and finer:
                 cells, finer = effort.finer_levels(task.half_axes, cells), finer - 1
                 if not self._affordable(cells, solved.levels):

@@ -114,6 +114,34 @@ def solve(
         _Job(spec, folder, threads, limits or Limits(), library).run()
 
 
+def task_of(
+    spec: Mapping[str, Any],
+    threads: int = 1,
+    limits: Limits | None = None,
+    state: Path | None = None,
+) -> Task:
+    """Return what all cases of a job share, from its specification."""
+    accuracy = spec["accuracy"]
+    return Task(
+        name=spec["name"],
+        kind=spec["kind"],
+        shape=from_spec(spec["shape"]),
+        shape_json=json.dumps(spec["shape"], sort_keys=True),
+        index=complex(*spec["index"]),
+        cells=tuple(int(n) for n in spec["levels"]),
+        refinements=int(spec["refinements"]),
+        tolerance=float(spec["tolerance"]),
+        asked=Asked(
+            accuracy["f11_relative"],
+            accuracy["ratio_absolute"],
+            accuracy["efficiency_relative"],
+        ),
+        threads=threads,
+        limits=limits or Limits(),
+        state=state,
+    )
+
+
 class _Job:
     def __init__(
         self,
@@ -126,27 +154,7 @@ class _Job:
         self.spec = spec
         self.library = library
         self.layout = Layout(folder)
-        shape = from_spec(spec["shape"])
-        cells = tuple(int(n) for n in spec["levels"])
-        accuracy = spec["accuracy"]
-        self.task = Task(
-            name=spec["name"],
-            kind=spec["kind"],
-            shape=shape,
-            shape_json=json.dumps(spec["shape"], sort_keys=True),
-            index=complex(*spec["index"]),
-            cells=cells,
-            refinements=int(spec["refinements"]),
-            tolerance=float(spec["tolerance"]),
-            asked=Asked(
-                accuracy["f11_relative"],
-                accuracy["ratio_absolute"],
-                accuracy["efficiency_relative"],
-            ),
-            threads=threads,
-            limits=limits,
-            state=self.layout.checkpoints,
-        )
+        self.task = task_of(spec, threads, limits, self.layout.checkpoints)
         self.cases: list[tuple[str, float]] = [(d, float(x)) for d, x in spec["cases"]]
         self.report = _Reporter(folder, self.task, len(self.cases))
 

@@ -6,6 +6,7 @@ import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
+from scatterloom.campaign import effort
 from scatterloom.campaign.expand import Grid
 from scatterloom.campaign.geometry import half_axes
 from scatterloom.campaign.memory import case_bytes
@@ -17,7 +18,8 @@ class Outlook:
     """Size and predicted cost of a campaign.
 
     `largest_job_bytes` is what the largest job holds at once; `core_hours` counts every
-    case as new.
+    case as new and is for the machine that the cost model was fitted to. `table_bytes` and
+    `case_bytes` are compressed sizes on disk, of the table and of all case files.
     """
 
     cells: int
@@ -28,10 +30,21 @@ class Outlook:
     largest_size_parameter: float
     finest_cells_across: int
     largest_job_bytes: int
+    table_bytes: int
+    case_bytes: int
 
 
-def outlook(grid: Grid, jobs: Sequence[Job]) -> Outlook:
-    """Return the outlook of a grid and its jobs."""
+_MATRIX_BYTES_A_CELL_AND_ANGLE = 110.0
+"""Sixteen elements with two half widths each, compressed."""
+
+_CASE_BYTES_A_DEGREE = 420.0
+_CASE_BYTES = 1500.0
+"""A record is a header and, per degree of its expansion, compressed coefficients of all
+variants."""
+
+
+def outlook(grid: Grid, jobs: Sequence[Job], angles: int) -> Outlook:
+    """Return the outlook of a grid and its jobs for a table of so many angles."""
     anchors = [job for job in jobs if job.kind == "anchors"]
     return Outlook(
         cells=int(grid.where.size),
@@ -42,7 +55,18 @@ def outlook(grid: Grid, jobs: Sequence[Job]) -> Outlook:
         largest_size_parameter=float(grid.size_parameter.max()),
         finest_cells_across=max(max(job.levels) for job in jobs),
         largest_job_bytes=max(job_bytes(job) for job in jobs),
+        table_bytes=round(_MATRIX_BYTES_A_CELL_AND_ANGLE * angles * grid.where.size),
+        # Each record lies twice: by itself, and in the file of its job.
+        case_bytes=2 * sum(_record_bytes(job) for job in jobs),
     )
+
+
+def _record_bytes(job: Job) -> int:
+    """Disk space of the records of a job [bytes]."""
+    axes = half_axes(job.shape)
+    middle = job.cases[len(job.cases) // 2][1]
+    degrees = 2 * effort.n_max(axes, middle, job.accuracy.f11_relative) + 1
+    return round(len(job.cases) * (_CASE_BYTES + _CASE_BYTES_A_DEGREE * degrees))
 
 
 def job_bytes(job: Job) -> int:
