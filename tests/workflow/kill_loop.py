@@ -101,6 +101,8 @@ def kill_loop(
         at = began + chance.uniform(0.1, 0.9) * usual
         while time.monotonic() < at and run.poll() is None:
             time.sleep(0.02)
+        while victim == "worker" and run.poll() is None and not _pids(folder / "cut", "solve-job"):
+            time.sleep(0.01)
         hit = _strike(victim, run.pid, folder / "cut", chance) if run.poll() is None else False
         done = finish(run)
         _silence(folder / "cut")

@@ -59,15 +59,7 @@ def test_a_cut_case_file_is_noticed_by_every_run(campaign, finished):
     assert solved_cases(campaign) == before  # the single cases were whole: nothing is solved
     assert same_table(campaign, finished)
     assert (campaign / "state" / "damaged" / victim.name).exists()
-
-
-def test_a_flipped_bit_in_a_case_file_is_noticed_when_all_is_read(campaign, finished):
-    victim = published(campaign, "span*")[-1]
-    flip(victim)
-    done = run(campaign, "--verify")
-    assert done.returncode == 1, done.stderr
-    assert f"{victim}: altered" in done.stderr
-    assert same_table(campaign, finished)
+    assert victim.exists()
 
 
 def test_a_flipped_bit_met_by_the_gathering_is_mended_in_the_same_run(campaign, finished):
@@ -94,6 +86,7 @@ def test_only_the_lost_case_is_solved_again(campaign, monkeypatch):
     flip(lost)
     done = run(campaign, "--verify")
     assert done.returncode == 1, done.stderr
+    assert f"{victim}: altered" in done.stderr
     after = solved_cases(campaign)
     assert {digest for digest in after if after[digest] != before[digest]} == {lost.stem}
 

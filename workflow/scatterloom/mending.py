@@ -41,6 +41,8 @@ def put_damaged_aside(graph: Graph, *, digests: bool) -> list[str]:
             aside = graph.layout.state / "damaged" / path.name
             aside.parent.mkdir(parents=True, exist_ok=True)
             os.replace(path, aside)
+    if lines:
+        _gather_again(graph)
     if digests:
         lines += _unpublish_damaged(graph)
     return lines
@@ -83,11 +85,17 @@ def take_up_failed(graph: Graph) -> int:
             continue
         taken += len(lost)
         # The job's file first: killed in between, the run finds the job unfinished.
+        _gather_again(graph)
         layout.case_file(name).unlink(missing_ok=True)
         for digest in lost:
             for path in _files_of(graph, digest):
                 path.unlink(missing_ok=True)
     return taken
+
+
+def _gather_again(graph: Graph) -> None:
+    """Without the receipt the engine looks for every case file; with it, lost ones go unnoticed."""
+    graph.layout.receipt.unlink(missing_ok=True)
 
 
 def _files_of(graph: Graph, digest: str) -> tuple[Path, ...]:

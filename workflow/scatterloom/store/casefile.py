@@ -15,6 +15,7 @@ breaks the signature, a cut breaks the length, any changed bit breaks the digest
 
 from __future__ import annotations
 
+import errno
 import hashlib
 import json
 import struct
@@ -84,6 +85,10 @@ def read_records(path: Path | str) -> list[CaseRecord]:
         content = path.read_bytes()
     except FileNotFoundError:
         raise IntegrityError(f"{path}: the case file is missing") from None
+    except OSError as error:
+        if error.errno != errno.EIO:
+            raise
+        raise IntegrityError(f"{path}: the medium fails ({error.strerror})") from None
     payload = _checked_payload(path, content)
     try:
         return [CaseRecord.from_arrays(arrays) for arrays in _decode(zlib.decompress(payload))]
