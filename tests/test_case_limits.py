@@ -75,7 +75,7 @@ def test_finer_lattices_respect_the_limits(tmp_path, monkeypatch, bound):
     (free,) = records_of(tmp_path / "free", one)
     assert free.levels[-1] > LEVELS[-1]
     if bound == "memory":
-        most = memory.case_bytes((1.0, 1.0, 1.0), SIZES[1], LEVELS, hard.f11_relative)
+        most = memory.case_bytes((1.0,) * 3, (1.0,) * 4, 3, SIZES[1], LEVELS, 1e-5)
         limits = Limits(memory_bytes=most)
     else:
         # Time that passes only between attempts: the first one is always completed.

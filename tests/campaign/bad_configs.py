@@ -84,6 +84,31 @@ EDITS = {
     "odd level": ("[12, 16, 24]", "[12, 15, 24]"),
     "one level": ("[12, 16, 24]", "[12]"),
     "two axes": ("{kind: sphere}", "{kind: ellipsoid, axes: [1, 2]}"),
+    "two edges": ("{kind: sphere}", "{kind: cuboid, edges: [1, 2]}"),
+    "flat cuboid": ("{kind: sphere}", "{kind: cuboid, edges: [1, 2, 0.1]}"),
+    "negative edge": ("{kind: sphere}", "{kind: cuboid, edges: [1, 2, -1]}"),
+    "two sides": ("{kind: sphere}", "{kind: prism, sides: 2, height_to_width: 1}"),
+    "half a side": ("{kind: sphere}", "{kind: prism, sides: 6.5, height_to_width: 1}"),
+    "prism without height": ("{kind: sphere}", "{kind: prism, sides: 6}"),
+    "long prism": ("{kind: sphere}", "{kind: prism, sides: 6, height_to_width: 30}"),
+    "coating without size": ("{kind: sphere}", "{kind: sphere}\n    coating: {material: silt}"),
+    "coating with two sizes": (
+        "{kind: sphere}",
+        "{kind: sphere}\n    coating: "
+        "{material: silt, core_radius_fraction: 0.5, core_volume_fraction: 0.5}",
+    ),
+    "coating thickness": (
+        "{kind: sphere}",
+        "{kind: sphere}\n    coating: {material: silt, thickness_um: 0.1}",
+    ),
+    "core as large as the particle": (
+        "{kind: sphere}",
+        "{kind: sphere}\n    coating: {material: silt, core_radius_fraction: 1.0}",
+    ),
+    "coating of the core's material": (
+        "{kind: sphere}",
+        "{kind: sphere}\n    coating: {material: salt, core_radius_fraction: 0.5}",
+    ),
     "long ellipsoid": ("{kind: sphere}", "{kind: ellipsoid, axes: [1, 2, 20]}"),
     # checks within a section
     "descending range": ("from: 0.1, to: 1.0", "from: 1.0, to: 0.1"),
@@ -108,6 +133,10 @@ EDITS = {
     "weight of zero": ("ball: 0.3", "ball: 0"),
     # checks between sections
     "unknown material": ("material: salt", "material: silk"),
+    "unknown material of a coating": (
+        "{kind: sphere}",
+        "{kind: sphere}\n    coating: {material: slit, core_radius_fraction: 0.5}",
+    ),
     "repeated particle": ("name: ball", "name: Plate"),
     "unknown particle in population": ("ball: 0.3", "bal: 0.3"),
     "metal": ("{n: 1.5, k: 0.0}", "{n: 0.2, k: 3.4}"),

@@ -9,7 +9,7 @@ import pytest
 from campaign.bad_configs import GOOD, edited
 from scatterloom.campaign import effort, load
 from scatterloom.campaign.expand import expand
-from scatterloom.campaign.geometry import canonical, circumscribed_radius, half_axes
+from scatterloom.campaign.geometry import canonical, extents
 
 
 @pytest.fixture
@@ -170,16 +170,16 @@ def test_digest_is_the_same_on_every_machine(grid_of, monkeypatch):
         ({"kind": "ellipsoid", "axes": [4.0, 2.0, 1.0]}, (2.0, 1.0, 0.5)),
     ],
 )
-def test_half_axes(spec, expected):
-    axes = half_axes(spec)
-    assert axes == pytest.approx(expected, rel=1e-15)
-    assert math.prod(axes) == pytest.approx(1.0, rel=1e-15)
-    assert circumscribed_radius(spec) == max(axes)
+def test_extents_of_ellipsoids(spec, expected):
+    reach = extents(spec)
+    assert reach.half == reach.lengths == pytest.approx(expected, rel=1e-15)
+    assert math.prod(reach.half) == pytest.approx(1.0, rel=1e-15)
+    assert reach.circumscribed_radius == max(reach.half)
 
 
 def test_unknown_shape_is_refused():
     with pytest.raises(ValueError, match="unknown shape kind 'torus'"):
-        half_axes({"kind": "torus"})
+        extents({"kind": "torus"})
 
 
 def test_canonical_shapes():

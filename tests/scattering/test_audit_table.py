@@ -196,3 +196,11 @@ def test_bulk_without_populations_is_bad_input(campaign, capsys) -> None:
     config.write_text(CONFIG[: CONFIG.index("populations:")])
     assert main(["bulk", str(config), "--results", str(results)]) == 2
     assert "populations" in capsys.readouterr().err
+
+
+def test_an_absorbing_core_is_absorption(table) -> None:
+    """A coating may be clear: a particle is lossless only if its core is, too."""
+    coated = table.copy(deep=True)
+    clear = coated["refractive_index_k"].values == 0.0
+    coated["core_refractive_index_k"].values[clear] = 0.1
+    assert named(audit_table(coated, ASKED), "lossless")["judged"] == 0

@@ -62,13 +62,18 @@ def test_start_interpolates_row_by_row_and_scales_by_the_norms():
             np.testing.assert_allclose(row, norm[r] * ((r + 1) * 1.2**2 + c + 1j), rtol=1e-6)
 
 
-def test_waves_that_a_neighbour_lacks_start_from_zero():
+def test_waves_that_a_neighbour_lacks_come_from_the_others():
     neighbours = [stored(1.0, (2, 1)), stored(2.0, (3, 2))]
     kept = [rows.copy() for n in neighbours for rows in n.rows]
     start = interpolated_start(neighbours, 1.5)([np.ones(4), np.ones(2)])
     assert [rows.shape for rows in start] == [(4, 4), (2, 4)]
-    assert np.all(start[0][:2] != 0) and not start[0][2:].any()
-    assert np.all(start[1][:1] != 0) and not start[1][1:].any()
+    # both have the first two, one the third, none the fourth
+    np.testing.assert_allclose(
+        start[0][:2], (neighbours[0].rows[0] + neighbours[1].rows[0][:2]) / 2, rtol=1e-6
+    )
+    np.testing.assert_array_equal(start[0][2], neighbours[1].rows[0][2])
+    assert not start[0][3].any()
+    np.testing.assert_array_equal(start[1][1], neighbours[1].rows[1][1])
     # a shorter basis than the neighbours'
     short = interpolated_start(neighbours, 1.5)([np.ones(1), np.ones(1)])
     assert [rows.shape for rows in short] == [(1, 4), (1, 4)]

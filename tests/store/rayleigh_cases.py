@@ -52,7 +52,12 @@ def record(particle: str, size_parameter: float, status: int = 1, **changes) -> 
         "memory_bytes": 1e6,
         "start": "cold",
         "scalars": {name: (value, 1e-3 * abs(value)) for name, value in values.items()},
-        "checks": {},
+        "checks": {
+            "discretization": 0.003,
+            "solver": 0.0002,
+            "truncation": 0.0001,
+            "extrapolation_disagreement": 0.1,
+        },
         "expansion": np.stack([coefficients, 1.01 * coefficients]),
         "variants": ("best", "one percent off"),
         "causes": ("best", "remainder"),
@@ -81,6 +86,7 @@ def axes(sizes=(0.01, 0.02, 0.03), wavelength_um=(0.5, 1.0)) -> Axes:
         size_parameter=x,
         radius_um=x * wavelengths[:, None] / (2 * np.pi),
         refractive_index=np.full((2, len(wavelengths)), INDEX),
+        core_refractive_index=np.full((2, len(wavelengths)), complex(np.nan, np.nan)),
         where=where,
         digests=tuple(digest(name, s) for name in HALF_AXES for s in sizes),
     )

@@ -72,6 +72,8 @@ def test_coordinates(table):
     np.testing.assert_allclose(x.transpose(*table.size_parameter.dims), table.size_parameter)
     assert (table.refractive_index_n == INDEX.real).all()
     assert (table.refractive_index_k == INDEX.imag).all()
+    assert table.core_refractive_index_n.isnull().all()
+    assert table.core_refractive_index_k.isnull().all()
 
 
 def test_plain_xarray_opens_it_without_a_warning(path):

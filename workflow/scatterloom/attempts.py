@@ -61,11 +61,25 @@ class Task:
     limits: Limits = field(default_factory=Limits)
     state: Path | None = None
     """Folder of checkpoints; None for none."""
+    inner_indices: tuple[complex, ...] = ()
 
     @property
-    def half_axes(self) -> tuple[float, float, float]:
-        a, b, c = (float(axis) for axis in self.shape.half_axes)
-        return a, b, c
+    def indices(self) -> tuple[complex, ...]:
+        """Indices of all materials, from outside inwards."""
+        return (self.index, *self.inner_indices)
+
+    @property
+    def lengths(self) -> tuple[float, ...]:
+        """Half extents of the nested bodies: what should lie alike on all lattices."""
+        return tuple(
+            float(scale * half) for scale in self.shape.scales for half in self.shape.half_extents
+        )
+
+    @property
+    def radii(self) -> tuple[float, ...]:
+        """Half extents and circumscribed radius: what sets the truncation."""
+        half = (float(length) for length in self.shape.half_extents)
+        return (*half, self.shape.circumscribed_radius)
 
 
 class _Solves:
@@ -128,7 +142,7 @@ class _Solves:
 
         return solve_level(
             lattice(task.shape, cells),
-            task.index,
+            task.indices,
             self._x,
             n_max,
             tolerance,
@@ -188,7 +202,7 @@ def solve_case(
         solved, own = case.best, []
     if not solved.operator_error < _GIVE_UP:
         flags = solved.warning_flags | _BIT["not_converged"]
-        return failed_record(digest, task.shape_json, task.index, x, solved.levels, flags), own
+        return failed_record(digest, task.shape_json, task.indices, x, solved.levels, flags), own
     return replace(solved, memory_bytes=float(peak_bytes())), own
 
 
@@ -216,7 +230,7 @@ class _Case:
 
     def solve(self) -> tuple[CaseRecord, list[LevelResult]]:
         task, x = self._task, self._x
-        n_max = effort.n_max(task.half_axes, x, task.asked.f11_relative)
+        n_max = effort.n_max(task.radii, x, task.asked.f11_relative)
         cells, longer, finer = task.cells, _LONGER_BASES, task.refinements
         while True:
             solved, own = self._attempt(cells, n_max)
@@ -227,7 +241,7 @@ class _Case:
                 self.solves.by_cells.clear()
                 own.clear()
             elif solved.warning_flags & _BIT["accuracy_not_met"] and finer:
-                cells, finer = effort.finer_levels(task.half_axes, cells), finer - 1
+                cells, finer = effort.finer_levels(task.lengths, cells), finer - 1
                 if not self._affordable(cells, solved.levels):
                     return solved, own
             else:
@@ -252,7 +266,7 @@ class _Case:
             levels,
             cells,
             task.shape.symmetry,
-            task.index,
+            task.indices,
             x,
             lattice(task.shape, cells[-1]).spacing,
             task.asked,
@@ -267,11 +281,13 @@ class _Case:
 
 
 def _needed(task: Task, x: float, cells: Sequence[int], neighbours: int) -> int:
-    return case_bytes(task.half_axes, x, cells, task.asked.f11_relative, neighbours)
+    half = [float(extent) for extent in task.shape.half_extents]
+    planes = sum(task.shape.is_mirrored(axis) for axis in np.eye(3))
+    return case_bytes(half, task.radii, planes, x, cells, task.asked.f11_relative, neighbours)
 
 
 def _failed(task: Task, digest: str, x: float, reason: str) -> CaseRecord:
-    return failed_record(digest, task.shape_json, task.index, x, task.cells, _BIT[reason])
+    return failed_record(digest, task.shape_json, task.indices, x, task.cells, _BIT[reason])
 
 
 def _cold_estimate(anchors: Sequence[FieldFile], x: float) -> float:

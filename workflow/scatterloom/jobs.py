@@ -139,6 +139,7 @@ def task_of(
         threads=threads,
         limits=limits or Limits(),
         state=state,
+        inner_indices=tuple(complex(*m) for m in spec.get("inner_indices", ())),
     )
 
 

@@ -26,6 +26,8 @@ from scatterloom.store.layout import Layout, results_root
 from scatterloom.store.library import reuse_wanted
 
 if TYPE_CHECKING:
+    from scatterloom.campaign.case import Case
+    from scatterloom.campaign.plan import Job
     from scatterloom.graph import Graph
 
 
@@ -133,7 +135,7 @@ class Outline:
 def outline_of(graph: Graph) -> Outline:
     """Return the outline of a planned campaign."""
     grid = graph.grid
-    ladders: dict[tuple[str, complex], set[str]] = {}
+    ladders: dict[tuple[str, tuple[complex, ...]], set[str]] = {}
     for name, row in zip(grid.particle_names, grid.where, strict=True):
         for column in row:
             # All sizes of a particle at one wavelength share shape and index.
@@ -154,8 +156,8 @@ def outline_of(graph: Graph) -> Outline:
     return Outline(graph.campaign, graph.layout, jobs)
 
 
-def _ladder(owner: object) -> tuple[str, complex]:
-    return canonical_json(dict(owner.shape)), owner.index  # type: ignore[attr-defined]
+def _ladder(owner: Case | Job) -> tuple[str, tuple[complex, ...]]:
+    return canonical_json(dict(owner.shape)), (owner.index, *owner.inner_indices)
 
 
 def table_digest(campaign: campaigns.Campaign) -> str:

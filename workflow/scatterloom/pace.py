@@ -119,11 +119,12 @@ def calibrate(path: Path | None = None, seconds: float = CALIBRATION_S) -> Pace:
     for number, (flatness, x) in enumerate(samples):
         if number > 2 and time.monotonic() - began > seconds:
             break
-        body = from_spec({"kind": "spheroid", "equatorial_to_polar": flatness})
-        a, b, c = (float(axis) for axis in body.half_axes)
+        spec = {"kind": "spheroid", "equatorial_to_polar": flatness}
+        body, shape = from_spec(spec), json.dumps(spec)
+        a, b, c = (float(extent) for extent in body.half_extents)
         cells = effort.levels((a, b, c), index, x)
         tolerance = effort.operator_tolerance(accuracy.ratio_absolute)
-        task = Task("", "anchors", body, "{}", index, cells, 0, tolerance, accuracy, 1)
+        task = Task("", "anchors", body, shape, index, cells, 0, tolerance, accuracy, 1)
         start = time.perf_counter()
         solve_case(task, "", x, [], lambda size, residual: None)
         if number:

@@ -32,7 +32,7 @@ def check_names(document: Document) -> list[Problem]:
     materials = tree.get("materials")
     particles = [name for _, name in _texts(document, "particles", "name")]
     if isinstance(materials, dict):
-        for path, name in _texts(document, "particles", "material"):
+        for path, name in _materials(document):
             if name not in materials:
                 message = f"material '{name}' is not defined under materials"
                 hint = nearest(name, materials)
@@ -52,7 +52,7 @@ def check_names(document: Document) -> list[Problem]:
 
 def unused_materials(document: Document) -> list[Problem]:
     """Warn of materials that no particle is made of."""
-    used = {name for _, name in _texts(document, "particles", "material")}
+    used = {name for _, name in _materials(document)}
     return [
         document.problem(
             ("materials", name),
@@ -158,6 +158,17 @@ def _texts(document: Document, section: str, key: str) -> list[tuple[KeyPath, st
         for position, entry in enumerate(_entries(document, section))
         if isinstance(entry.get(key), str)
     ]
+
+
+def _materials(document: Document) -> list[tuple[KeyPath, str]]:
+    """Return the material of every particle and of every coating."""
+    found = _texts(document, "particles", "material")
+    for position, entry in enumerate(_entries(document, "particles")):
+        coating = entry.get("coating")
+        name = coating.get("material") if isinstance(coating, dict) else None
+        if isinstance(name, str):
+            found.append((("particles", position, "coating", "material"), name))
+    return found
 
 
 def _repeated(document: Document, section: str) -> list[Problem]:

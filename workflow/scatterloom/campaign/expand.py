@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from decimal import Decimal, localcontext
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,6 +13,7 @@ from scatterloom.campaign.case import Accuracy, Case, Overrides, canonical_json
 from scatterloom.campaign.geometry import canonical
 from scatterloom.campaign.grids import DIGITS, decimal, grid_values
 from scatterloom.campaign.loader import Campaign
+from scatterloom.campaign.model import Particle
 
 TWO_PI = 2 * Decimal("3.14159265358979323846264338327950288419716939937510")
 
@@ -36,7 +38,9 @@ class Grid:
     radius_um : float64 (n_wavelength, n_size)
         Radius of the equal-volume sphere [um]; the same for all particles.
     refractive_index_n, refractive_index_k : float64 (n_particle, n_wavelength)
-        Refractive index relative to the medium.
+        Refractive index relative to the medium; of a coated particle that of the coating.
+    core_refractive_index : complex128 (n_particle, n_wavelength)
+        That of the core of a coated particle; NaN in both parts where there is no coating.
     job_seconds : float
         Predicted time at which cases are batched to jobs.
     anchor_spacing : float or None
@@ -52,6 +56,7 @@ class Grid:
     radius_um: NDArray[np.float64]
     refractive_index_n: NDArray[np.float64]
     refractive_index_k: NDArray[np.float64]
+    core_refractive_index: NDArray[np.complex128]
     job_seconds: float
     anchor_spacing: float | None
 
@@ -68,25 +73,27 @@ def expand(campaign: Campaign) -> Grid:
     accuracy = Accuracy(**model.accuracy.model_dump())
     levels = model.solver.levels
     overrides = Overrides(tuple(levels) if levels else None, model.solver.tolerance)
-    indices = np.array(
-        [
-            [_relative(m, model.medium.index) for m in campaign.indices[particle.material]]
-            for particle in model.particles
-        ]
-    )
+    outer = np.empty((len(model.particles), n_wavelength), dtype=np.complex128)
+    core = np.full_like(outer, complex(np.nan, np.nan))
     cases: list[Case] = []
-    known: dict[tuple[str, complex, float], int] = {}
+    known: dict[tuple[str, tuple[complex, ...], float], int] = {}
     where = np.empty((len(model.particles), n_wavelength, n_size), dtype=np.int64)
     values = size_parameter.tolist()
     for p, particle in enumerate(model.particles):
-        shape = canonical(particle.shape.model_dump())
-        shape_key = canonical_json(shape)
+        materials = particle.materials
         for w in range(n_wavelength):
-            index = complex(indices[p, w])
+            indices = tuple(
+                _relative(campaign.indices[name][w], model.medium.index) for name in materials
+            )
+            shape, indices = _body(particle, indices)
+            outer[p, w] = indices[0]
+            if len(indices) > 1:
+                core[p, w] = indices[1]
+            shape_key = canonical_json(shape)
             for s, x in enumerate(values[w]):
-                position = known.setdefault((shape_key, index, x), len(cases))
+                position = known.setdefault((shape_key, indices, x), len(cases))
                 if position == len(cases):
-                    cases.append(Case(shape, index, x, accuracy, overrides))
+                    cases.append(Case(shape, indices[0], x, accuracy, overrides, indices[1:]))
                 where[p, w, s] = position
     return Grid(
         campaign=campaign.name,
@@ -96,11 +103,23 @@ def expand(campaign: Campaign) -> Grid:
         wavelength_um=np.array(model.wavelengths_um, dtype=float),
         size_parameter=size_parameter,
         radius_um=radius_um,
-        refractive_index_n=np.ascontiguousarray(indices.real),
-        refractive_index_k=np.ascontiguousarray(indices.imag),
+        refractive_index_n=np.ascontiguousarray(outer.real),
+        refractive_index_k=np.ascontiguousarray(outer.imag),
+        core_refractive_index=core,
         job_seconds=model.solver.job_seconds,
         anchor_spacing=model.solver.anchor_spacing,
     )
+
+
+def _body(
+    particle: Particle, indices: tuple[complex, ...]
+) -> tuple[dict[str, Any], tuple[complex, ...]]:
+    """Return shape and indices; a coating of the same index as the core is no coating."""
+    spec = particle.shape.model_dump()
+    if particle.coating is None or indices[0] == indices[1]:
+        return canonical(spec), indices[:1]
+    spec["core_radius_fraction"] = particle.coating.core_scale
+    return canonical(spec), indices
 
 
 def _sizes(campaign: Campaign) -> tuple[NDArray[np.float64], NDArray[np.float64]]:

@@ -1,60 +1,127 @@
-"""Half axes of shape specifications, for predictions that need no lattice."""
+"""Extents of shape specifications, for predictions that need no lattice."""
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
+from dataclasses import dataclass
 from typing import Any
 
 
-def half_axes(spec: Mapping[str, Any]) -> tuple[float, float, float]:
-    """Return the half axes along x, y and z in units of the equal-volume radius.
+@dataclass(frozen=True)
+class Extents:
+    """How far a particle reaches, in units of the equal-volume radius.
+
+    Attributes
+    ----------
+    half : tuple of 3 float
+        Largest distance from the centre along x, y and z.
+    circumscribed_radius : float
+        Radius of the smallest sphere about the centre that holds the particle.
+    core_radius_fraction : float or None
+        Size of the core relative to the particle, as a ratio of lengths.
+    """
+
+    half: tuple[float, float, float]
+    circumscribed_radius: float
+    core_radius_fraction: float | None = None
+
+    @property
+    def lengths(self) -> tuple[float, ...]:
+        """Half extents of the particle and of its core: what should lie alike on all lattices."""
+        if self.core_radius_fraction is None:
+            return self.half
+        return (*self.half, *(length * self.core_radius_fraction for length in self.half))
+
+    @property
+    def radii(self) -> tuple[float, ...]:
+        """Half extents and the circumscribed radius: what sets the truncation."""
+        return (*self.half, self.circumscribed_radius)
+
+
+def extents(spec: Mapping[str, Any]) -> Extents:
+    """Return the extents of a shape.
 
     Parameters
     ----------
     spec : mapping
-        A shape such as {"kind": "spheroid", "equatorial_to_polar": 2.0}; z is the axis of
-        revolution.
+        A shape such as {"kind": "spheroid", "equatorial_to_polar": 2.0}, perhaps with a
+        "core_radius_fraction"; z is the axis of revolution, or of a prism.
 
     Raises
     ------
     ValueError
         If the kind is unknown.
     """
+    core = spec.get("core_radius_fraction")
     match spec["kind"]:
         case "sphere":
-            return (1.0, 1.0, 1.0)
+            return Extents((1.0, 1.0, 1.0), 1.0, core)
         case "spheroid":
             ratio = float(spec["equatorial_to_polar"])
             equatorial = ratio ** (1.0 / 3.0)
-            return (equatorial, equatorial, equatorial / ratio)
+            half = (equatorial, equatorial, equatorial / ratio)
+            return Extents(half, max(half), core)
         case "ellipsoid":
             a, b, c = (float(axis) for axis in spec["axes"])
             scale = (a * b * c) ** (1.0 / 3.0)
-            return (a / scale, b / scale, c / scale)
+            half = (a / scale, b / scale, c / scale)
+            return Extents(half, max(half), core)
+        case "cuboid":
+            a, b, c = (float(edge) for edge in spec["edges"])
+            # half edges of a cuboid of volume 4 pi / 3
+            scale = (a * b * c * 6.0 / math.pi) ** (1.0 / 3.0)
+            half = (a / scale, b / scale, c / scale)
+            return Extents(half, math.hypot(*half), core)
+        case "prism":
+            sides, ratio = int(spec["sides"]), float(spec["height_to_width"])
+            # volume: sides R^2 sin(2 pi / sides) / 2 times the height 2 R ratio
+            base = sides * math.sin(2.0 * math.pi / sides)
+            radius = (4.0 * math.pi / 3.0 / (base * ratio)) ** (1.0 / 3.0)
+            lateral = max(math.sin(2.0 * math.pi * i / sides) for i in range(sides))
+            half = (radius, radius * lateral, radius * ratio)
+            return Extents(half, math.hypot(radius, radius * ratio), core)
     raise ValueError(f"unknown shape kind {spec['kind']!r}")
 
 
-def circumscribed_radius(spec: Mapping[str, Any]) -> float:
-    """Return the radius of the circumscribed sphere in units of the equal-volume radius."""
-    return max(half_axes(spec))
+def mirror_planes(spec: Mapping[str, Any]) -> int:
+    """Return how many of the planes x = 0, y = 0, z = 0 are mirror planes of a shape."""
+    return 2 if spec["kind"] == "prism" and spec["sides"] % 2 else 3
 
 
 def canonical(spec: Mapping[str, Any]) -> dict[str, Any]:
     """Return the simplest specification of the same body, so that equal bodies merge.
 
-    Ratios keep twelve significant digits. The order of an ellipsoid's axes is kept: it fixes
+    Ratios keep twelve significant digits. The order of axes and edges is kept: it fixes
     the frame in which a transition matrix is stored.
     """
+    plain = _plain(spec)
+    if spec.get("core_radius_fraction") is not None:
+        plain["core_radius_fraction"] = _rounded(spec["core_radius_fraction"])
+    return plain
+
+
+def _plain(spec: Mapping[str, Any]) -> dict[str, Any]:
     match spec["kind"]:
         case "spheroid":
-            ratio = float(f"{spec['equatorial_to_polar']:.11e}")
+            ratio = _rounded(spec["equatorial_to_polar"])
             if ratio == 1.0:
                 return {"kind": "sphere"}
             return {"kind": "spheroid", "equatorial_to_polar": ratio}
         case "ellipsoid":
             last = spec["axes"][2]
-            axes = [float(f"{axis / last:.11e}") for axis in spec["axes"]]
+            axes = [_rounded(axis / last) for axis in spec["axes"]]
             if axes[0] == axes[1]:
-                return canonical({"kind": "spheroid", "equatorial_to_polar": axes[0]})
+                return _plain({"kind": "spheroid", "equatorial_to_polar": axes[0]})
             return {"kind": "ellipsoid", "axes": axes}
-    return dict(spec)
+        case "cuboid":
+            last = spec["edges"][2]
+            return {"kind": "cuboid", "edges": [_rounded(edge / last) for edge in spec["edges"]]}
+        case "prism":
+            ratio = _rounded(spec["height_to_width"])
+            return {"kind": "prism", "sides": spec["sides"], "height_to_width": ratio}
+    return {"kind": spec["kind"]}
+
+
+def _rounded(value: float) -> float:
+    return float(f"{value:.11e}")

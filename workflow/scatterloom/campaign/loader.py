@@ -149,7 +149,7 @@ def _indices(
     materials = sections["materials"]
     used = list(materials)
     if "particles" in sections:
-        wanted = {particle.material for particle in sections["particles"]}
+        wanted = {name for particle in sections["particles"] for name in particle.materials}
         used = [name for name in materials if name in wanted]
     medium = sections.get("medium")
     return optics.resolve(

@@ -7,7 +7,7 @@ from collections.abc import Sequence
 
 from scatterloom.campaign import effort
 
-PROGRAM_BYTES = 245 * 2**20
+PROGRAM_BYTES = 193 * 2**20
 """The program itself, with its libraries loaded and its kernels compiled (measured)."""
 
 _COMPLEX64_BYTES = 8
@@ -22,7 +22,9 @@ precision, and the fields of the coarser lattices.
 
 
 def case_bytes(
-    half_axes: Sequence[float],
+    half_extents: Sequence[float],
+    radii: Sequence[float],
+    mirror_planes: int,
     size_parameter: float,
     levels: Sequence[int],
     f11_relative: float,
@@ -32,8 +34,12 @@ def case_bytes(
 
     Parameters
     ----------
-    half_axes : sequence of 3 float
+    half_extents : sequence of 3 float
         In units of the equal-volume-sphere radius.
+    radii : sequence of float
+        Half extents and circumscribed radius: what sets the truncation.
+    mirror_planes : int
+        Planes of symmetry; each halves the cells that are stored.
     size_parameter : float
     levels : sequence of int
         Cells across on each lattice.
@@ -42,13 +48,12 @@ def case_bytes(
     neighbours : int
         Anchors whose fields are held to start from.
     """
-    order = effort.n_max(half_axes, size_parameter, f11_relative)
+    order = effort.n_max(radii, size_parameter, f11_relative)
     waves = 2 * order * (order + 2)
     finest = max(levels)
-    spacing = 2.0 * max(half_axes) / finest
-    # One octant of cells stands for all.
-    block = 3.0 * (4.0 * math.pi / 3.0 / spacing**3) / 8.0 * waves
-    box = math.prod(2.0 * axis / spacing + 1.0 for axis in half_axes)
+    spacing = 2.0 * max(half_extents) / finest
+    block = 3.0 * (4.0 * math.pi / 3.0 / spacing**3) / 2**mirror_planes * waves
+    box = math.prod(2.0 * axis / spacing + 1.0 for axis in half_extents)
     blocks = _COLD_BLOCKS + neighbours * sum((n / finest) ** 3 for n in levels)
     # The kernel on an octant of the doubled grid, and the padded grids of a batch of waves.
     grids = 6.0 * box + 8 * 3 * 2.0 * box

@@ -18,6 +18,8 @@ from scatterloom.campaign.shapes import Shape
 Wavelength = Annotated[float, setting("One wavelength.", unit="um", ge=1e-3, le=1e6)]
 _N: dict[str, Any] = {"unit": "1", "ge": 0.01, "le": 10.0}
 _K: dict[str, Any] = {"unit": "1", "ge": 0.0, "le": 10.0}
+THINNEST = 0.02
+"""Smallest radius of a core, and smallest thickness of a coating, over the particle's radius."""
 _ABSORBS = "absorption is a positive k: the index is n + ik"
 
 
@@ -79,14 +81,81 @@ class Material(Section):
         return value
 
 
+class Coating(Section):
+    """A shell of another material around a core of the particle's own shape."""
+
+    material: str = setting(
+        "Material of the coating, one of the keys under `materials`.",
+        form="the name of a material under 'materials'",
+    )
+    core_radius_fraction: float | None = setting(
+        "Radius of the core divided by that of the whole particle (for other shapes than "
+        "spheres the ratio of their axes or edges, the same along all of them).",
+        None,
+        unit="1",
+        ge=THINNEST,
+        le=1 - THINNEST,
+    )
+    core_volume_fraction: float | None = setting(
+        "Volume of the core divided by that of the whole particle, instead of "
+        "`core_radius_fraction`.",
+        None,
+        unit="1",
+        ge=1e-5,
+        le=0.97,
+    )
+
+    @model_validator(mode="after")
+    def _check(self) -> Coating:
+        both = self.core_radius_fraction is not None and self.core_volume_fraction is not None
+        if both or (self.core_radius_fraction is None and self.core_volume_fraction is None):
+            raise wrong(
+                "both core_radius_fraction and core_volume_fraction are given"
+                if both
+                else "neither core_radius_fraction nor core_volume_fraction is given",
+                "give exactly one of 'core_radius_fraction' and 'core_volume_fraction'",
+                *(["core_volume_fraction"] if both else []),
+            )
+        return self
+
+    @property
+    def core_scale(self) -> float:
+        """Radius of the core over that of the particle."""
+        if self.core_radius_fraction is not None:
+            return self.core_radius_fraction
+        assert self.core_volume_fraction is not None
+        return self.core_volume_fraction ** (1.0 / 3.0)
+
+
 class Particle(Section):
-    """A shape made of a material."""
+    """A shape made of a material, perhaps coated with another one."""
 
     name: Name = setting("Name of the particle, a coordinate of the table.", form=NAME_FORM)
     material: str = setting(
-        "One of the keys under `materials`.", form="the name of a material under 'materials'"
+        "One of the keys under `materials`; of a coated particle that of the core.",
+        form="the name of a material under 'materials'",
     )
-    shape: Shape = setting("Shape of the particle.")
+    shape: Shape = setting("Shape of the particle; a core has the same shape.")
+    coating: Coating | None = setting(
+        "Coating around the core; sizes are those of the whole particle, coating included.", None
+    )
+
+    @model_validator(mode="after")
+    def _check(self) -> Particle:
+        if self.coating is not None and self.coating.material == self.material:
+            raise wrong(
+                f"core and coating are both of '{self.material}'",
+                "give the coating another material, or leave it out",
+                *("coating", "material"),
+            )
+        return self
+
+    @property
+    def materials(self) -> tuple[str, ...]:
+        """Names of the materials from outside inwards."""
+        if self.coating is None:
+            return (self.material,)
+        return self.coating.material, self.material
 
 
 class Sizes(Section):

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 
 from scatterloom.campaign import effort
 from scatterloom.campaign.expand import Grid
-from scatterloom.campaign.geometry import half_axes
+from scatterloom.campaign.geometry import extents, mirror_planes
 from scatterloom.campaign.memory import case_bytes
 from scatterloom.campaign.plan import Job
 
@@ -43,7 +43,7 @@ _CASE_BYTES = 1500.0
 variants."""
 
 
-def outlook(grid: Grid, jobs: Sequence[Job], angles: int) -> Outlook:
+def outlook(grid: Grid, jobs: Sequence[Job], angles: int = 181) -> Outlook:
     """Return the outlook of a grid and its jobs for a table of so many angles."""
     anchors = [job for job in jobs if job.kind == "anchors"]
     return Outlook(
@@ -63,16 +63,18 @@ def outlook(grid: Grid, jobs: Sequence[Job], angles: int) -> Outlook:
 
 def _record_bytes(job: Job) -> int:
     """Disk space of the records of a job [bytes]."""
-    axes = half_axes(job.shape)
+    radii = extents(job.shape).radii
     middle = job.cases[len(job.cases) // 2][1]
-    degrees = 2 * effort.n_max(axes, middle, job.accuracy.f11_relative) + 1
+    degrees = 2 * effort.n_max(radii, middle, job.accuracy.f11_relative) + 1
     return round(len(job.cases) * (_CASE_BYTES + _CASE_BYTES_A_DEGREE * degrees))
 
 
 def job_bytes(job: Job) -> int:
     """Return the predicted peak memory of a job, that of its largest case [bytes]."""
     return case_bytes(
-        half_axes(job.shape),
+        extents(job.shape).half,
+        extents(job.shape).radii,
+        mirror_planes(job.shape),
         max(x for _, x in job.cases),
         job.levels,
         job.accuracy.f11_relative,

@@ -1,6 +1,6 @@
 """Lay out the jobs of a campaign: ladders, segments, anchors and spans.
 
-A ladder holds all sizes of one (shape, index), of all wavelengths. A segment is a run of
+A ladder holds all sizes of one (shape, indices), of all wavelengths. A segment is a run of
 sizes solved on the same lattices. In each segment anchors are solved from nothing; the
 sizes between two anchors form a span and are filled in from both sides.
 """
@@ -15,9 +15,9 @@ from itertools import pairwise
 from typing import Any, TypeVar
 
 from scatterloom.campaign import effort
-from scatterloom.campaign.case import Accuracy, Case, canonical_json
+from scatterloom.campaign.case import Accuracy, Case, canonical_json, indices_content
 from scatterloom.campaign.expand import Grid
-from scatterloom.campaign.geometry import half_axes
+from scatterloom.campaign.geometry import Extents, extents
 from scatterloom.errors import BadInput
 
 MOST_JOBS = 10_000
@@ -42,7 +42,7 @@ class Job:
         Kind, shape and a digest of everything else; a changed job has another name.
     kind : str
         "anchors" (each case solved from nothing) or "span" (filled in between anchors).
-    shape, index, accuracy, levels, refinements, tolerance
+    shape, index, inner_indices, accuracy, levels, refinements, tolerance
         What all cases of the job share; `levels` are cells across, coarse to fine, and
         `refinements` is how often finer ones may follow (never where levels are given).
     cases : tuple of (digest, size parameter)
@@ -67,6 +67,7 @@ class Job:
     needs: tuple[str, ...]
     anchors: tuple[tuple[str, float, str], ...]
     seconds: float
+    inner_indices: tuple[complex, ...] = ()
 
     def spec(self) -> dict[str, Any]:
         """Return everything a solver job needs, as values that JSON can hold."""
@@ -123,21 +124,21 @@ def plan(grid: Grid) -> list[Job]:
 
 
 def _ladders(grid: Grid) -> list[list[Case]]:
-    """Return the cases of each (shape, index), ascending in size."""
-    ladders: dict[tuple[str, complex], list[Case]] = {}
+    """Return the cases of each (shape, indices), ascending in size."""
+    ladders: dict[tuple[str, tuple[complex, ...]], list[Case]] = {}
     keys: dict[int, str] = {}  # cases of one particle share their shape object
     for case in grid.cases:
         shape = keys.setdefault(id(case.shape), canonical_json(dict(case.shape)))
-        ladders.setdefault((shape, case.index), []).append(case)
+        ladders.setdefault((shape, case.indices), []).append(case)
     return [sorted(cases, key=lambda case: case.size_parameter) for cases in ladders.values()]
 
 
 def _segments(ladder: Sequence[Case], grid: Grid) -> Iterator[_Segment]:
-    axes = half_axes(ladder[0].shape)
+    reach = extents(ladder[0].shape)
     run: list[_Size] = []
     current: tuple[int, ...] = ()
     for case in ladder:
-        levels, size = _predict(case, axes)
+        levels, size = _predict(case, reach)
         if run and levels != current:
             yield _segment(ladder[0], current, run, grid)
             run = []
@@ -146,12 +147,15 @@ def _segments(ladder: Sequence[Case], grid: Grid) -> Iterator[_Segment]:
     yield _segment(ladder[0], current, run, grid)
 
 
-def _predict(case: Case, axes: Sequence[float]) -> tuple[tuple[int, ...], _Size]:
-    x, index = case.size_parameter, case.index
-    chosen = effort.levels(axes, index, x, case.accuracy.f11_relative)
+def _predict(case: Case, reach: Extents) -> tuple[tuple[int, ...], _Size]:
+    x, axes = case.size_parameter, reach.half
+    index = max(case.indices, key=abs)  # the shortest wavelength inside sets the cells
+    chosen = effort.levels(reach.lengths, index, x, case.accuracy.f11_relative)
     levels = case.overrides.levels or chosen
     # The prediction is for the chosen levels; cost is proportional to the number of cells.
     scale = sum(n**3 for n in levels) / sum(n**3 for n in chosen)
+    # The cost counts waves for the half extents; corners reach farther.
+    scale *= (effort.n_max(reach.radii, x) / effort.n_max(axes, x)) ** 2
     cold = scale * effort.cost(axes, index, x, cold=True)
     warm = scale * effort.cost(axes, index, x, cold=False)
     return levels, _Size(case.digest, x, cold, warm)
@@ -159,7 +163,8 @@ def _predict(case: Case, axes: Sequence[float]) -> tuple[tuple[int, ...], _Size]
 
 def _segment(case: Case, levels: tuple[int, ...], run: list[_Size], grid: Grid) -> _Segment:
     def step(x: float) -> float:
-        return grid.anchor_spacing or effort.anchor_step(case.index, x)
+        strongest = max(case.indices, key=lambda index: abs(index - 1.0))
+        return grid.anchor_spacing or effort.anchor_step(strongest, x)
 
     anchors = choose_anchors([size.x for size in run], step)
     return _Segment(case, levels, tuple(run), tuple(anchors))
@@ -264,6 +269,7 @@ def _job(
         needs=tuple(dict.fromkeys(name for _, _, name in anchors)),
         anchors=anchors,
         seconds=seconds,
+        inner_indices=case.inner_indices,
     )
     digest = hashlib.sha256(canonical_json(_content(job)).encode()).hexdigest()[:16]
     name = f"{kind}-{case.shape['kind']}-{digest}"
@@ -274,7 +280,7 @@ def _content(job: Job) -> dict[str, Any]:
     return {
         "kind": job.kind,
         "shape": dict(job.shape),
-        "index": [job.index.real, job.index.imag],
+        **indices_content(job.index, job.inner_indices),
         "accuracy": asdict(job.accuracy),
         "levels": list(job.levels),
         "refinements": job.refinements,

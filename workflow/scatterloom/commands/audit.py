@@ -61,8 +61,23 @@ def summary(result: dict[str, Any]) -> list[str]:
         lines.append(
             f"{row['statement']:<58}{row['asked']:>8.2g}{median:>9}{worst:>9}{row['above']:>9}"
         )
-    lines.append("all checks passed" if result["passed"] else _verdict(result))
+    lines.append(_budget(result["budget"]))
+    if result["passed"]:
+        lines[0] += "; all checks passed"
+    else:
+        lines.append(_verdict(result))
     return lines
+
+
+def _budget(rows: list[dict[str, Any]]) -> str:
+    """Name the median parts of the half width of F11 and what the extrapolation is worth."""
+    from scatterloom.scattering.error_bars import BUDGET
+
+    median = {row["name"]: row["median"] for row in rows}
+    text = {name: "-" if value is None else f"{value:.1g}" for name, value in median.items()}
+    parts = ", ".join(f"{part} {text[f'f11_error_{part}']}" for part in BUDGET)
+    disagreement = text["extrapolation_disagreement"]
+    return f"median F11 half width: {parts}; fits differ by {disagreement} of their step"
 
 
 def _worst(check: dict[str, Any]) -> str:

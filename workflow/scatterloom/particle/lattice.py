@@ -1,18 +1,50 @@
-"""Cubic lattice of an ellipsoidal particle: fill fraction and surface normal of every cell."""
+"""Cubic lattice of a particle: what every cell is made of, and the surfaces in it."""
 
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterloom.particle.overlap import octant_overlap
-from scatterloom.particle.shapes import Shape
+from scatterloom.particle.bodies import Placement, cut
+from scatterloom.particle.shapes import Ellipsoid, Shape
+
+Floats = NDArray[np.float64]
 
 SMALLEST_FILL = 1e-9
 """Cells emptier than this are left out; all of them together weigh less than 1e-9."""
+
+MEDIUM = -1
+"""Stands for the host medium where materials are numbered."""
+
+
+@dataclass(frozen=True, eq=False)
+class Composition:
+    """Materials and interfaces of a particle that one fill and one normal a cell cannot describe.
+
+    Materials are numbered from outside inwards.
+
+    Attributes
+    ----------
+    fraction : float64 (n_material, n_cell)
+        Volume fraction of each material in every cell; the rest is medium.
+    interfaces : tuple of (inside, outside)
+        Materials on either side of each smooth piece of surface, -1 for the medium.
+    area_vector : float64 (n_interface, n_cell, 3)
+        Outward mean normal times area of each piece in every cell, in units of a face.
+    moment : float64 (n_material, n_cell, 3) or None
+        Integral of the position from the cell's centre over the part of the cell inside the
+        outer interface of each material [cells]; None where it is not made use of.
+    """
+
+    fraction: Floats
+    interfaces: tuple[tuple[int, int], ...]
+    area_vector: Floats
+    moment: Floats | None = None
 
 
 # Compared and hashed by identity: it holds arrays.
@@ -20,11 +52,14 @@ SMALLEST_FILL = 1e-9
 class Lattice:
     """Cells of a particle on a cubic lattice; lengths in units of the equal-volume-sphere radius.
 
+    Everything is described along the axes of the lattice, which `rotation` relates to
+    those of the particle.
+
     Attributes
     ----------
     box : tuple of 3 int
-        Cells of the surrounding box along x, y, z, all even; the centre of the
-        particle is the centre of the box and thus a corner shared by eight cells.
+        Cells of the surrounding box along x, y, z; along an axis with a mirror plane
+        the number is even and the particle's centre is the centre of the box.
     spacing : float
         Edge of a cell.
     cell : int32 (n_cell, 3)
@@ -32,47 +67,90 @@ class Lattice:
     fill : float64 (n_cell,)
         Volume fraction of the cell inside the particle, in (0, 1].
     normal : float64 (n_cell, 3)
-        Unit outward normal, averaged over the surface inside the cell; 0 in full cells.
+        Unit outward normal, averaged over the outer surface inside the cell; 0 in full
+        cells, and where faces that look in opposite directions cancel.
     area : float64 (n_cell,)
-        Area of the surface inside the cell, projected along its mean normal, in units of
-        a face of the cell; 0 in full cells.
+        Area of the outer surface inside the cell, projected along its mean normal, in units
+        of a face of the cell; 0 in full cells.
     mirrors : tuple of 3 bool
         Whether x, y, z -> -x, -y, -z map the lattice onto itself.
     symmetry : str
-        Symmetry of the shape: ``sphere``, ``axial`` or ``mirrors``.
+        Symmetry of the shape in its own frame: ``sphere``, ``axial``, ``mirrors``, ``none``.
     cells_across : int
-        Cells spanned by the longest axis of the particle.
+        Cells spanned by the longest extent of the particle along its own axes.
+    composition : Composition or None
+        None for an ellipsoid of one material, which `fill`, `normal` and `area` describe
+        completely.
+    rotation : float64 (3, 3) or None
+        Turns a vector of the particle frame into the lattice frame; None if they agree.
+    origin : tuple of 3 float or None
+        Centre of the particle in cells from the lowest corner of the box; None for the
+        centre of the box.
     """
 
     box: tuple[int, int, int]
     spacing: float
     cell: NDArray[np.int32]
-    fill: NDArray[np.float64]
-    normal: NDArray[np.float64]
-    area: NDArray[np.float64]
+    fill: Floats
+    normal: Floats
+    area: Floats
     mirrors: tuple[bool, bool, bool]
     symmetry: str
     cells_across: int
+    composition: Composition | None = None
+    rotation: Floats | None = None
+    origin: tuple[float, float, float] | None = None
 
-    def centre(self) -> NDArray[np.float64]:
-        """Positions of the cell centres, float64 (n_cell, 3), from the particle's centre."""
-        return (self.cell + 0.5 - np.array(self.box) / 2) * self.spacing
+    def centre(self) -> Floats:
+        """Positions of the cell centres from the particle's centre, along the lattice axes.
+
+        float64 (n_cell, 3)
+        """
+        origin = np.array(self.box) / 2 if self.origin is None else np.array(self.origin)
+        return (self.cell + 0.5 - origin) * self.spacing
+
+    @property
+    def fraction(self) -> Floats:
+        """Volume fraction of each material in every cell, float64 (n_material, n_cell)."""
+        return self.fill[None] if self.composition is None else self.composition.fraction
+
+    @property
+    def interfaces(self) -> tuple[tuple[int, int], ...]:
+        """Materials inside and outside of each smooth piece of surface, -1 for the medium."""
+        return ((0, MEDIUM),) if self.composition is None else self.composition.interfaces
+
+    @property
+    def area_vector(self) -> Floats:
+        """Outward mean normal times area of each piece, float64 (n_interface, n_cell, 3)."""
+        if self.composition is None:
+            return (self.normal * self.area[:, None])[None]
+        return self.composition.area_vector
 
 
-def lattice(shape: Shape, cells_across: int) -> Lattice:
-    """Lattice of a shape whose longest axis spans exactly `cells_across` cells.
+def lattice(
+    shape: Shape,
+    cells_across: int,
+    rotation: NDArray[np.float64] | None = None,
+    offset: Sequence[float] | None = None,
+) -> Lattice:
+    """Lattice of a shape whose longest extent spans exactly `cells_across` cells.
 
     Fill fractions are exact to about 1e-12 of a cell and the volume of the cells
-    adds up to the particle's. The normal of a cut cell is the integral of the
-    normal over the surface inside it, normalized; the divergence theorem gives it
-    from the areas of the cell's faces inside the particle.
+    adds up to the particle's. The area vector of a surface in a cut cell is the integral of
+    the normal over it; for a curved surface the divergence theorem gives it from the areas
+    of the cell's faces inside the body, for a polyhedron each face is clipped.
 
     Parameters
     ----------
     shape : Shape
     cells_across : int
-        Cells along the longest axis, 1 or more; an odd number leaves half a cell
-        between the end of that axis and the box.
+        Cells along the longest extent in the particle's own frame, 1 or more; an odd
+        number leaves half a cell between its end and the box.
+    rotation : float64 (3, 3), optional
+        Turns vectors of the particle frame into the frame of the lattice; the lattice's axes
+        are the particle's if missing.
+    offset : sequence of 3 float, optional
+        Place of the particle's centre past a corner of the lattice, in cells.
 
     Returns
     -------
@@ -81,7 +159,7 @@ def lattice(shape: Shape, cells_across: int) -> Lattice:
     Raises
     ------
     ValueError
-        If `cells_across` is below 1.
+        If `cells_across` is below 1 or `rotation` is not a rotation.
 
     Examples
     --------
@@ -92,32 +170,68 @@ def lattice(shape: Shape, cells_across: int) -> Lattice:
     """
     if cells_across < 1:
         raise ValueError(f"cells_across must be 1 or more, found {cells_across}")
-    half_axes = shape.half_axes
-    spacing = 2.0 * shape.circumscribed_radius / cells_across
-    # Rounding must not open a layer of cells for an axis that ends on a face.
-    nx, ny, nz = (math.ceil(half / spacing - 1e-9) for half in half_axes)
-    fill, area = octant_overlap(spacing / half_axes, (nx, ny, nz))
-    fill = np.where(fill > SMALLEST_FILL, fill, 0.0)
-    cut = (fill > 0.0) & (fill < 1.0)
-    normal = np.zeros_like(area)
-    length = np.where(cut, np.linalg.norm(area, axis=-1), 0.0)
-    normal[cut] = area[cut] / length[cut][:, None]
-    # One octant reflected: the mirror symmetry is exact to the last bit.
-    for axis in range(3):
-        mirrored = np.flip(normal, axis).copy()
-        mirrored[..., axis] *= -1.0
-        normal = np.concatenate((mirrored, normal), axis)
-        fill = np.concatenate((np.flip(fill, axis), fill), axis)
-        length = np.concatenate((np.flip(length, axis), length), axis)
+    turn = np.eye(3) if rotation is None else np.asarray(rotation, dtype=np.float64)
+    if turn.shape != (3, 3) or np.abs(turn @ turn.T - np.eye(3)).max() > 1e-12:
+        raise ValueError("rotation must be an orthogonal 3 x 3 matrix")
+    if np.linalg.det(turn) < 0.0:
+        raise ValueError("rotation must not be a reflection")
+    place, mirrors = _place(shape, cells_across, turn, offset)
+    cuts = [cut(shape, scale, place) for scale in shape.scales]
+    outer = cuts[0]
+    fill = np.where(outer.fill > SMALLEST_FILL, outer.fill, 0.0)
     inside = fill > 0.0
+    whole = (fill < 1.0)[..., None] * sum(outer.surfaces)
+    area = np.linalg.norm(whole, axis=-1)[inside]
+    # Faces that cancel leave rounding errors, which have no direction.
+    area[area < 1e-12] = 0.0
+    normal = whole[inside] / np.where(area > 0.0, area, 1.0)[:, None]
+    normal[area == 0.0] = 0.0
+    composition = None
+    if len(cuts) > 1 or not isinstance(shape, Ellipsoid):
+        # Nested bodies: each material is what one body holds beyond the next.
+        held = [fill[inside], *(np.minimum(c.fill[inside], fill[inside]) for c in cuts[1:])]
+        held.append(np.zeros_like(held[0]))
+        moments = [c.moment[inside] for c in cuts if c.moment is not None]
+        composition = Composition(
+            fraction=np.stack([outside - within for outside, within in pairwise(held)]),
+            interfaces=tuple((m, m - 1) for m, c in enumerate(cuts) for _ in c.surfaces),
+            area_vector=np.stack([part[inside] for c in cuts for part in c.surfaces]) + 0.0,
+            moment=None if not moments else np.stack(moments),
+        )
+    nx, ny, nz = place.box
+    ox, oy, oz = (float(o) for o in place.origin)
     return Lattice(
-        box=(2 * nx, 2 * ny, 2 * nz),
-        spacing=spacing,
+        box=(nx, ny, nz),
+        spacing=place.spacing,
         cell=np.argwhere(inside).astype(np.int32),
         fill=fill[inside],
-        normal=normal[inside] + 0.0,  # no negative zeros
-        area=length[inside],
-        mirrors=(True, True, True),
+        normal=normal + 0.0,  # no negative zeros
+        area=area,
+        mirrors=mirrors,
         symmetry=shape.symmetry,
         cells_across=cells_across,
+        composition=composition,
+        rotation=None if rotation is None else turn,
+        origin=None if place.centred else (ox, oy, oz),
     )
+
+
+def _place(
+    shape: Shape, cells_across: int, turn: Floats, offset: Sequence[float] | None
+) -> tuple[Placement, tuple[bool, bool, bool]]:
+    """Box around the particle, and the mirror planes that lattice and particle share."""
+    spacing = 2.0 * float(shape.half_extents.max()) / cells_across
+    shift = np.zeros(3) if offset is None else np.asarray(offset, dtype=np.float64) % 1.0
+    low, high = shape.bounds(turn) / spacing
+    # Rounding must not open a layer of cells for an axis that ends on a face.
+    first = np.array([math.floor(x + 1e-9) for x in shift + low])
+    last = np.array([math.ceil(x - 1e-9) for x in shift + high])
+    mirrors = [
+        bool(s == 0.0) and shape.is_mirrored(axis) for s, axis in zip(shift, turn, strict=True)
+    ]
+    for axis in np.flatnonzero(mirrors):
+        last[axis] = max(last[axis], -first[axis])
+        first[axis] = -last[axis]
+    nx, ny, nz = (int(n) for n in last - first)
+    box = (nx, ny, nz)
+    return Placement(spacing, turn, shift - first, box), (mirrors[0], mirrors[1], mirrors[2])

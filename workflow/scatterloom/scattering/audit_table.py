@@ -8,10 +8,11 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from scatterloom.errors import IntegrityError
 from scatterloom.scattering.audit import CHECKS, FloatArray, audit_energy, audit_matrix
-from scatterloom.scattering.error_bars import over_angle
+from scatterloom.scattering.error_bars import BUDGET, over_angle
 from scatterloom.scattering.record import SOLVED, STATUS_MEANINGS, has_result
 
 if TYPE_CHECKING:
@@ -65,7 +66,7 @@ def audit_table(table: xarray.Dataset, asked: dict[str, float]) -> dict[str, Any
     status = table["status"].values
     solved = has_result(status)
     cells = {name: int((status == value).sum()) for value, name in enumerate(STATUS_MEANINGS)}
-    lossless = (table["refractive_index_k"].values == 0.0)[:, :, None]
+    lossless = ~_absorbing(table)[:, :, None]
     checks = []
     for check in CHECKS:
         # The check of lossless particles has nothing to judge in absorbing ones.
@@ -100,10 +101,18 @@ def audit_table(table: xarray.Dataset, asked: dict[str, float]) -> dict[str, Any
         "unit": "deviations are in units of the error bar; above 1 is flagged",
         "checks": checks,
         "accuracy": accuracy,
+        "budget": _budget(table, solved),
         "flagged": flagged,
         "short": int(short.sum()),
         "passed": flagged == 0 and cells["solved"] == status.size and not short.any(),
     }
+
+
+def _absorbing(part: xarray.Dataset) -> NDArray[np.bool_]:
+    """Whether any material of a particle absorbs; a core that is not there is NaN."""
+    return np.asarray(
+        (part["refractive_index_k"].values > 0.0) | (part["core_refractive_index_k"].values > 0.0)
+    )
 
 
 def _audit_ladder(part: xarray.Dataset) -> dict[str, FloatArray]:
@@ -115,7 +124,7 @@ def _audit_ladder(part: xarray.Dataset) -> dict[str, FloatArray]:
         part["asymmetry_parameter"].values,
         part["asymmetry_parameter_error"].values,
     )
-    absorbing = np.full(part.sizes["size"], float(part["refractive_index_k"]) > 0.0)
+    absorbing = np.full(part.sizes["size"], _absorbing(part))
     values = {name: part[name].values for name in _EFFICIENCIES}
     half_widths = {name: part[f"{name}_error"].values for name in _EFFICIENCIES}
     return matrix | audit_energy(values, half_widths, absorbing)
@@ -132,6 +141,31 @@ def _half_widths(part: xarray.Dataset) -> dict[str, FloatArray]:
         "ratio_absolute": ratio,
         "efficiency_relative": efficiencies.max(axis=0),
     }
+
+
+_BUDGET = {
+    **{f"f11_error_{part}": f"half width of F11 due to {part}" for part in BUDGET},
+    "extrapolation_disagreement": "rival extrapolations differ, over the step",
+}
+
+
+def _budget(table: xarray.Dataset, solved: np.ndarray) -> list[dict[str, Any]]:
+    """Parts of the error of F11 and the health of the extrapolation over the lattices."""
+    rows = []
+    for name, words in _BUDGET.items():
+        values = table[name].values
+        judged = _judge(table, values, solved, math.inf)
+        known = values[np.isfinite(values)]
+        rows.append(
+            {
+                "name": name,
+                "statement": words,
+                "median": _number(float(np.median(known))) if known.size else None,
+                "worst": judged["worst"],
+                "worst_case": judged["worst_case"],
+            }
+        )
+    return rows
 
 
 def _judge(

@@ -134,7 +134,7 @@ def _flags(
         flags |= bit["arithmetic_cells"]
     if any(level.solution.start_dropped for level in levels):
         flags |= bit["start_dropped"]
-    if kd_finest * abs(case.index) > 2.0 * np.pi / 10.0:
+    if kd_finest * max(abs(index) for index in case.indices) > 2.0 * np.pi / 10.0:
         flags |= bit["cells_too_coarse"]
     balance = case.checks["extinction_efficiency_balance"]
     widths = [case.scalars[n][1] for n in record.SCALARS[:3]]
@@ -164,7 +164,7 @@ def combine_levels(
     levels: Sequence[LevelResult],
     cells: Sequence[int],
     symmetry: str,
-    index: complex,
+    indices: complex | Sequence[complex],
     size_parameter: float,
     spacing: float,
     asked: Asked,
@@ -179,7 +179,8 @@ def combine_levels(
     cells : sequence of int
         Cells across on each level.
     symmetry : str
-    index : complex
+    indices : complex or sequence of complex
+        Refractive index of each material relative to the medium, from outside inwards.
     size_parameter : float
     spacing : float
         Lattice spacing of the finest level in units of the equal-volume radius.
@@ -187,16 +188,17 @@ def combine_levels(
     identity
         digest, shape, start, products, cold_products_estimate, wall_seconds.
     """
+    index, *inner = indices if isinstance(indices, Sequence) else [indices]
     variants = _variants(levels, cells, symmetry, size_parameter)
     best = variants[0]
     fit = fits(cells)[0]
     amplification = float(np.abs(fit.weights).sum())
     operator_error = max(level.solution.error for level in levels)
-    # First order in the fields, but only their part not orthogonal to the loss: a tenth of
-    # the residual bounds what the energy balance of single levels showed.
-    field_error = 0.1 * amplification * max(level.solution.residual for level in levels)
+    # First order in the fields, but only in their part not orthogonal to the loss: three
+    # hundredths of the residual bound what exact absorption efficiencies showed.
+    field_error = 0.03 * amplification * max(level.solution.residual for level in levels)
     across = 2.0 / spacing
-    model = error_bars.cell_model_error(index, across)
+    model = error_bars.cell_model_error((index, *inner), across)
     scalars = _scalars(variants, model, field_error, size_parameter)
     balance = best.result.extinction_efficiency - (
         best.result.scattering_efficiency + best.absorption
@@ -206,8 +208,12 @@ def combine_levels(
         for v in variants
         if v.cause == TRUNCATION
     ]
+    expansion = _expansions(variants)
+    causes = tuple(v.cause for v in variants)
+    floor = model * error_bars.matrix_model_share(size_parameter)
     out = record.CaseRecord(
         index=index,
+        inner_indices=tuple(inner),
         size_parameter=size_parameter,
         levels=tuple(cells),
         lattice_cells=levels[-1].cells,
@@ -224,10 +230,11 @@ def combine_levels(
             "integrated_scattering_efficiency": best.result.integrated_scattering_efficiency,
             "truncation_share": max(shares, default=1.0),
             "lattice_asymmetry": levels[-1].asymmetry,
+            **error_bars.f11_budget(expansion, causes, floor),
         },
-        expansion=_expansions(variants),
+        expansion=expansion,
         variants=tuple(v.name for v in variants),
-        causes=tuple(v.cause for v in variants),
+        causes=causes,
         model_error=model,
         **identity,
     )

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -60,7 +61,7 @@ class CaseRecord:
     shape : str
         Canonical JSON of the shape.
     index : complex
-        Refractive index relative to the medium.
+        Refractive index relative to the medium; of a coated particle that of the coating.
     size_parameter : float
     levels : tuple of int
         Cells across the longest axis on each lattice.
@@ -94,6 +95,8 @@ class CaseRecord:
         The source of error that each variant measures (`scatterloom.scattering.error_bars`).
     model_error : float
         Relative error of efficiencies from the cell model, part of their half widths.
+    inner_indices : tuple of complex
+        Indices of the materials further inside, such as that of a core.
     """
 
     digest: str
@@ -119,6 +122,12 @@ class CaseRecord:
     variants: tuple[str, ...]
     causes: tuple[str, ...]
     model_error: float
+    inner_indices: tuple[complex, ...] = ()
+
+    @property
+    def indices(self) -> tuple[complex, ...]:
+        """Indices of all materials, from outside inwards."""
+        return (self.index, *self.inner_indices)
 
     def scattering_matrix(
         self, angles_deg: NDArray[np.float64]
@@ -152,11 +161,14 @@ class CaseRecord:
                 "variants", "causes", "model_error", "levels",
             )
         }  # fmt: skip
-        return {
+        arrays = {
             "header": np.array(json.dumps(header, sort_keys=True)),
             "index": np.array(self.index, dtype=np.complex128),
             "expansion": self.expansion,
         }
+        if self.inner_indices:
+            arrays["inner_indices"] = np.array(self.inner_indices, dtype=np.complex128)
+        return arrays
 
     @classmethod
     def from_arrays(cls, arrays: dict[str, Any]) -> CaseRecord:
@@ -174,6 +186,7 @@ class CaseRecord:
         header["scalars"] = {k: (v[0], v[1]) for k, v in header["scalars"].items()}
         return cls(
             index=complex(arrays["index"]),
+            inner_indices=tuple(complex(m) for m in arrays.get("inner_indices", ())),
             expansion=np.asarray(arrays["expansion"]),
             **header,
         )
@@ -182,13 +195,14 @@ class CaseRecord:
 def failed_record(
     digest: str,
     shape: str,
-    index: complex,
+    indices: complex | Sequence[complex],
     size_parameter: float,
     levels: tuple[int, ...],
     flags: int,
 ) -> CaseRecord:
     """Record of a case that gave no result."""
     nan = float("nan")
+    index, *inner = indices if isinstance(indices, Sequence) else [indices]
     return CaseRecord(
         digest=digest, shape=shape, index=index, size_parameter=size_parameter, levels=levels,
         lattice_cells=0, n_max=0, wave_count=0, status=FAILED, warning_flags=flags,
@@ -196,4 +210,5 @@ def failed_record(
         wall_seconds=0.0, memory_bytes=0.0, start="cold",
         scalars={name: (nan, nan) for name in SCALARS}, checks={},
         expansion=np.full((1, 1, 4, 4), nan), variants=("none",), causes=(BEST,), model_error=nan,
+        inner_indices=tuple(inner),
     )  # fmt: skip

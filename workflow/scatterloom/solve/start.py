@@ -46,8 +46,9 @@ def interpolated_start(
 ) -> Callable[[list[NDArray[np.float64]]], list[NDArray] | None]:
     """A start for `size_parameter` from fields solved at other sizes on the same lattice.
 
-    Neighbours may be truncated at different degrees; waves that some of them lack start
-    from zero (the basis lists waves by ascending degree, so shared waves come first).
+    Neighbours may be truncated at different degrees; a wave is interpolated
+    between those that have it and starts from zero if none has (the basis lists waves by
+    ascending degree, so shared waves come first).
 
     Returns
     -------
@@ -60,17 +61,20 @@ def interpolated_start(
     """
     if not neighbours:
         raise ValueError("a start needs at least one solved neighbour")
-    weights = lagrange_weights([n.size_parameter for n in neighbours], size_parameter)
 
     def start(norms: list[NDArray[np.float64]]) -> list[NDArray]:
         out = []
         for c, norm in enumerate(norms):
-            shared = min(len(norm), *(len(n.rows[c]) for n in neighbours))
-            rows = np.zeros(
-                (len(norm), neighbours[0].rows[c].shape[1]), neighbours[0].rows[c].dtype
-            )
-            for weight, neighbour in zip(weights, neighbours, strict=True):
-                rows[:shared] += rows.real.dtype.type(weight) * neighbour.rows[c][:shared]
+            kept = neighbours[0].rows[c]
+            rows = np.zeros((len(norm), kept.shape[1]), kept.dtype)
+            first = 0
+            for last in sorted({min(len(norm), len(n.rows[c])) for n in neighbours}):
+                having = [n for n in neighbours if len(n.rows[c]) >= last]
+                weights = lagrange_weights([n.size_parameter for n in having], size_parameter)
+                for weight, neighbour in zip(weights, having, strict=True):
+                    part = neighbour.rows[c][first:last]
+                    rows[first:last] += rows.real.dtype.type(weight) * part
+                first = last
             rows *= norm[:, None].astype(rows.real.dtype)
             out.append(rows)
         return out

@@ -11,6 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterloom.errors import IntegrityError
+from scatterloom.scattering.error_bars import BUDGET
 from scatterloom.scattering.record import FAILED, CaseRecord
 from scatterloom.store import schema
 from scatterloom.store.casefile import read_records
@@ -83,6 +84,9 @@ def put_scalars(
         columns[name][cell] = getattr(record, name)
     if record.status == FAILED:
         return
+    for part in BUDGET:
+        columns[f"f11_error_{part}"][cell] = record.checks[part]
+    columns["extrapolation_disagreement"][cell] = record.checks["extrapolation_disagreement"]
     for variable in schema.SCALARS:
         value, half_width = record.scalars[variable.name]
         columns[variable.name][cell] = value

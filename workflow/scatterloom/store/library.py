@@ -63,6 +63,7 @@ def physics_digest(spec: Mapping[str, Any], size_parameter: float) -> str:
     content = {
         "shape": spec["shape"],
         "index": spec["index"],
+        "inner_indices": spec.get("inner_indices"),
         "size_parameter": size_parameter,
         "levels": None if spec["refinements"] else spec["levels"],
         "tolerance": None if spec["tolerance"] == usual else spec["tolerance"],

@@ -6,6 +6,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 from typing import Any
 
+from scatterloom.scattering.error_bars import BUDGET
 from scatterloom.scattering.record import (
     FAILED,
     MISSING,
@@ -103,7 +104,13 @@ class Variable:
         return "modelResult"
 
 
-QUALITY = ("status", "warning_flags", "residual")
+QUALITY = (
+    "status",
+    "warning_flags",
+    "residual",
+    *(f"f11_error_{part}" for part in BUDGET),
+    "extrapolation_disagreement",
+)
 AUXILIARY = ("size_parameter", "radius_um")
 """Coordinates that are no dimension: they depend on wavelength and size."""
 
@@ -209,13 +216,29 @@ INDICES = (
         GRID[:2],
         "f8",
         "real part of the refractive index relative to the medium",
+        comment="of a coated particle that of the coating",
     ),
     Variable(
         "refractive_index_k",
         GRID[:2],
         "f8",
         "imaginary part of the refractive index relative to the medium",
-        comment="positive for absorption, with the time factor exp(-i w t)",
+        comment="positive for absorption, with the time factor exp(-i w t); of a coated "
+        "particle that of the coating",
+    ),
+    Variable(
+        "core_refractive_index_n",
+        GRID[:2],
+        "f8",
+        "real part of the refractive index of the core relative to the medium",
+        comment="missing where the particle has no coating",
+    ),
+    Variable(
+        "core_refractive_index_k",
+        GRID[:2],
+        "f8",
+        "imaginary part of the refractive index of the core relative to the medium",
+        comment="missing where the particle has no coating",
     ),
 )
 
@@ -249,6 +272,23 @@ DIAGNOSTICS = (
         "products for each incident wave that a solve from zero would take",
     ),
     Variable("residual", GRID, "f8", "largest relative residual of the accepted solution"),
+    *(
+        Variable(
+            f"f11_error_{part}",
+            GRID,
+            "f8",
+            f"part of the relative half width of F11 that is due to {part}",
+            comment="root mean square over scattering angle; the parts add in squares",
+        )
+        for part in BUDGET
+    ),
+    Variable(
+        "extrapolation_disagreement",
+        GRID,
+        "f8",
+        "difference of rival extrapolations of F11 relative to the extrapolation step",
+        comment="well below one where the error follows its law in the lattice spacing",
+    ),
     Variable("wall_seconds", GRID, "f8", "time spent on the case", "s"),
 )
 

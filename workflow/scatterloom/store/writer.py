@@ -39,7 +39,9 @@ class Axes:
     angles_deg : float64 (n_angle,)
     size_parameter, radius_um : float64 (n_wavelength, n_size)
     refractive_index : complex128 (n_particle, n_wavelength)
-        Relative to the medium.
+        Relative to the medium; of a coated particle that of the coating.
+    core_refractive_index : complex128 (n_particle, n_wavelength)
+        NaN where there is no coating.
     where : int (n_particle, n_wavelength, n_size)
         Position in `digests` of the case in each cell.
     digests : tuple of str
@@ -52,6 +54,7 @@ class Axes:
     size_parameter: FloatArray
     radius_um: FloatArray
     refractive_index: NDArray[np.complex128]
+    core_refractive_index: NDArray[np.complex128]
     where: NDArray[np.integer[Any]]
     digests: tuple[str, ...]
 
@@ -65,6 +68,7 @@ class Axes:
             size_parameter=grid.size_parameter,
             radius_um=grid.radius_um,
             refractive_index=grid.refractive_index_n + 1j * grid.refractive_index_k,
+            core_refractive_index=grid.core_refractive_index,
             where=grid.where,
             digests=tuple(case.digest for case in grid.cases),
         )
@@ -195,6 +199,8 @@ def _known_columns(axes: Axes) -> dict[str, NDArray[Any]]:
         "radius_um": axes.radius_um,
         "refractive_index_n": axes.refractive_index.real,
         "refractive_index_k": axes.refractive_index.imag,
+        "core_refractive_index_n": axes.core_refractive_index.real,
+        "core_refractive_index_k": axes.core_refractive_index.imag,
     }
 
 

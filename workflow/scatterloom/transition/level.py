@@ -2,20 +2,21 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterloom.dipole.polarizability import cell_tensors
+from scatterloom.dipole.mixture import particle_tensors
 from scatterloom.dipole.product import LatticeMatrix
 from scatterloom.particle.lattice import Lattice
 from scatterloom.solve.block import BlockSolution, solve_block
 from scatterloom.solve.start import StoredFields
 from scatterloom.transition.matrix import TransitionMatrix, from_amplitudes, project
+from scatterloom.transition.rotate import turned
 from scatterloom.waves.basis import wave_basis
-from scatterloom.waves.incident import incident_block
+from scatterloom.waves.incident import IncidentBlock, incident_block
 
 
 @dataclass(frozen=True)
@@ -58,7 +59,7 @@ class LevelResult:
 
 def solve_level(
     lattice: Lattice,
-    index: complex,
+    indices: complex | Sequence[complex],
     size_parameter: float,
     n_max: int,
     tolerance: float,
@@ -73,8 +74,8 @@ def solve_level(
     Parameters
     ----------
     lattice : Lattice
-    index : complex
-        Relative to the medium.
+    indices : complex or sequence of complex
+        Refractive index of each material relative to the medium, from outside inwards.
     size_parameter : float
         Of the sphere of equal volume.
     n_max : int
@@ -91,7 +92,8 @@ def solve_level(
         which the solve can go on, `products` is how many a wave have been used.
     """
     kd = size_parameter * lattice.spacing
-    tensors = cell_tensors(lattice.fill, lattice.normal, index, kd, lattice.area)
+    materials = indices if isinstance(indices, Sequence) else [indices]
+    tensors = particle_tensors(lattice, materials, kd)
     matrix = LatticeMatrix(lattice, tensors, kd, dtype, threads)
     incident = incident_block(lattice, matrix, size_parameter, wave_basis(n_max))
     first = None if start is None else start(incident.norms)
@@ -110,10 +112,10 @@ def solve_level(
     solution = solve_block(
         matrix, incident.rows, tolerance, first, progress=progress, checkpoint=keep
     )
-    raw = from_amplitudes(n_max, incident.members, solution.amplitudes)
+    raw = _of_particle(lattice, n_max, incident, solution.amplitudes)
     transition = project(raw, lattice.symmetry)
     stationary = [s - r for s, r in zip(solution.amplitudes, solution.remainder, strict=True)]
-    uncorrected = project(from_amplitudes(n_max, incident.members, stationary), lattice.symmetry)
+    uncorrected = project(_of_particle(lattice, n_max, incident, stationary), lattice.symmetry)
     lost = np.linalg.norm(raw.matrix - transition.matrix) / np.linalg.norm(raw.matrix)
     return LevelResult(
         transition=transition,
@@ -126,6 +128,16 @@ def solve_level(
         memory_bytes=matrix.nbytes + 3 * sum(rows.nbytes for rows in incident.rows),
         arithmetic_cells=tensors.arithmetic,
     )
+
+
+def _of_particle(
+    lattice: Lattice, n_max: int, incident: IncidentBlock, amplitudes: Sequence[NDArray]
+) -> TransitionMatrix:
+    """Transition matrix in the particle's own frame."""
+    transition = from_amplitudes(n_max, incident.members, amplitudes)
+    if lattice.rotation is None:
+        return transition
+    return turned(transition, lattice.rotation.T)
 
 
 def _absorption(matrix: LatticeMatrix, fields: list[NDArray], size_parameter: float) -> float:
