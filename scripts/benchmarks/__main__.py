@@ -14,9 +14,10 @@ from benchmarks.output import write_result
 
 BENCHMARKS = {
     "transforms": "Fourier transforms of two libraries on the boxes of the lattice product",
-    "product": "the lattice product against the textbook way and against its bare transforms",
+    "product": "the lattice product against the textbook way and a library's transforms",
     "solve": "one oblate spheroid: block solve and in-fill against one plane wave at a time",
     "starts": "products and error of in-filled sizes against the spacing of their anchors",
+    "single": "products of one plane wave at a time by the field the iteration starts from",
     "coverage": "how often the 95 % half widths hold the exact value, random spheres and spheroids",
 }
 DEFAULT_OUTPUT = Path(__file__).parents[2] / "workflow" / "docs" / "benchmarks"

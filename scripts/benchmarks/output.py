@@ -42,6 +42,8 @@ def table(rows: Sequence[Mapping[str, Any]]) -> list[str]:
 
 
 def _text(value: Any) -> str:
+    if value is None:
+        return "-"
     if isinstance(value, float):
         return f"{value:.3g}"
     return str(value)

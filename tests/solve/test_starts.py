@@ -5,7 +5,13 @@ from dataclasses import dataclass
 import numpy as np
 import pytest
 
-from scatterloom.solve.start import StoredFields, interpolated_start, lagrange_weights, nearest
+from scatterloom.solve.start import (
+    StoredFields,
+    interpolated_start,
+    lagrange_weights,
+    nearest,
+    rational_weights,
+)
 
 
 @pytest.mark.parametrize("nodes", [[2.0], [1.0, 1.5], [1.0, 1.2, 1.7], [1.0, 1.1, 1.3, 2.0]])
@@ -40,26 +46,79 @@ def test_nodes_lie_on_both_sides_where_there_are_any():
     assert nearest(nodes[:0], 1.5) == []
 
 
+POLES = (1.4 - 0.2j, 2.3 - 0.5j, 1.1 - 0.3j)
+
+
 def stored(x, rows):
-    """Fields whose rows are (row + 1) x^2 + class: a polynomial in size."""
+    """Fields of two parts: one as 1/(x - pole), the pole that of the row, and one constant."""
     return StoredFields(
         x,
         [
-            np.array([[(r + 1) * x**2 + c + 1j] * 4 for r in range(count)], np.complex64)
+            np.array([field(x, r, c) for r in range(count)], np.complex64)
             for c, count in enumerate(rows)
         ],
     )
+
+
+def field(x, r, c):
+    return [(r + 1) / (x - POLES[r]), c + 1j, 0.3 / (x - POLES[r]), 2.0 + c]
 
 
 def test_start_interpolates_row_by_row_and_scales_by_the_norms():
     neighbours = [stored(x, (3, 2)) for x in (1.0, 1.5, 2.0)]
     norms = [np.array([1.0, 2.0, 3.0]), np.array([0.5, 4.0])]
     start = interpolated_start(neighbours, 1.2)(norms)
+    polynomial = lagrange_weights((1.0, 1.5, 2.0), 1.2)
+    missed = []
     for c, (rows, norm) in enumerate(zip(start, norms, strict=True)):
         assert rows.dtype == np.complex64
         for r, row in enumerate(rows):
-            # single precision, weights of order one
-            np.testing.assert_allclose(row, norm[r] * ((r + 1) * 1.2**2 + c + 1j), rtol=1e-6)
+            # A pole is found from the fields alone, to the error that they may have.
+            exact = norm[r] * np.array(field(1.2, r, c))
+            np.testing.assert_allclose(row, exact, rtol=2e-3)
+            plain = norm[r] * sum(
+                w * n.rows[c][r] for w, n in zip(polynomial, neighbours, strict=True)
+            )
+            missed.append(np.abs(plain / exact - 1.0).max())
+    assert max(missed) > 0.3
+    # at an anchor itself, its own fields
+    for rows, own, norm in zip(
+        interpolated_start(neighbours, 1.5)(norms), neighbours[1].rows, norms, strict=True
+    ):
+        np.testing.assert_array_equal(rows, own * norm[:, None].astype(np.float32))
+
+
+@pytest.mark.parametrize("nodes", [[2.0], [1.0, 1.5], [1.0, 1.2, 1.7], [1.0, 1.1, 1.3, 2.0]])
+def test_rational_weights_interpolate(nodes):
+    rng = np.random.default_rng(3)
+    values = rng.normal(size=(5, len(nodes), 9)) + 1j * rng.normal(size=(5, len(nodes), 9))
+    products = values @ values.conj().transpose(0, 2, 1)
+    # constants stay, whatever the denominator
+    weights = rational_weights(nodes, 1.25, products)
+    np.testing.assert_allclose(weights.sum(axis=1), 1.0, atol=1e-12)
+    assert np.abs(weights).max() <= 30.0
+    # next to a node, the value there
+    near = rational_weights(nodes, nodes[0] + 1e-7, products)
+    np.testing.assert_allclose(
+        near, np.broadcast_to(np.arange(len(nodes)) == 0, near.shape), atol=1e-4
+    )
+
+
+def test_fields_equal_within_their_errors_are_interpolated_by_a_polynomial():
+    # Differences below the errors of the fields say nothing about poles.
+    rng = np.random.default_rng(4)
+    nodes, x = [1.0, 1.01, 1.02, 1.03], 1.015
+    values = 1.0 + 1e-5 * rng.normal(size=(3, 4, 50))
+    weights = rational_weights(nodes, x, (values @ values.transpose(0, 2, 1)).astype(complex))
+    np.testing.assert_allclose(weights, np.tile(lagrange_weights(nodes, x), (3, 1)), atol=1e-2)
+
+
+def test_a_root_of_the_denominator_nearby_is_not_believed():
+    # Fields with a pole on the real axis, next to the size wanted.
+    nodes, x = [1.0, 1.5, 2.0], 1.7
+    values = np.array([[[1.0 / (node - x - 1e-6), 1.0] for node in nodes]])
+    weights = rational_weights(nodes, x, (values @ values.transpose(0, 2, 1)).astype(complex))
+    np.testing.assert_allclose(weights[0], lagrange_weights(nodes, x))
 
 
 def test_waves_that_a_neighbour_lacks_come_from_the_others():
@@ -68,9 +127,9 @@ def test_waves_that_a_neighbour_lacks_come_from_the_others():
     start = interpolated_start(neighbours, 1.5)([np.ones(4), np.ones(2)])
     assert [rows.shape for rows in start] == [(4, 4), (2, 4)]
     # both have the first two, one the third, none the fourth
-    np.testing.assert_allclose(
-        start[0][:2], (neighbours[0].rows[0] + neighbours[1].rows[0][:2]) / 2, rtol=1e-6
-    )
+    both = np.stack([neighbours[0].rows[0], neighbours[1].rows[0][:2]], axis=1)
+    weights = rational_weights((1.0, 2.0), 1.5, both @ both.conj().transpose(0, 2, 1))
+    np.testing.assert_allclose(start[0][:2], (weights[:, None] @ both)[:, 0], rtol=1e-5)
     np.testing.assert_array_equal(start[0][2], neighbours[1].rows[0][2])
     assert not start[0][3].any()
     np.testing.assert_array_equal(start[1][1], neighbours[1].rows[1][1])

@@ -5,143 +5,131 @@ mixes. A field of known parity is stored on the fundamental cells only (one octa
 three planes), and one product serves one wave of every class: their sum is formed on
 the whole box, A is applied once, and the classes are taken apart again.
 
-The convolution runs on the doubled grid without ever transforming known zeros: the
-padding is added axis by axis, and the second and third axis are handled one x plane at
-a time, so that the work stays in cache.
+On the box the components of a few waves lie side by side at every point, in the lanes of
+the processor's vectors (`scatterloom.dipole.lanes`); the convolution is that of
+`scatterloom.dipole.transform`.
 """
 
 from __future__ import annotations
 
-import ducc0
+from collections.abc import Callable
+from concurrent.futures import ThreadPoolExecutor
+from typing import Any
+
 import numpy as np
 from numba import njit
 from numpy.typing import DTypeLike, NDArray
 
 from scatterloom.dipole.kernel import octant_spectrum
+from scatterloom.dipole.lanes import mix, scale, tensor_times
 from scatterloom.dipole.polarizability import CellTensors
+from scatterloom.dipole.transform import (
+    convolve_planes,
+    efficient_length,
+    transform_columns,
+    transform_plan,
+)
 from scatterloom.particle.lattice import Lattice
 
+_LANES = ((8, 2), (16, 5))
+"""Lanes of a group, and the waves whose three components they take."""
 
-def padded_half(n: int) -> int:
-    """Half of an efficient padded length for `n` cells."""
-    return (ducc0.fft.good_size(2 * n, False) + 1) // 2 if n > 1 else 1
+_BLOCK = 8
+"""Cells taken at a time: a cache line of each wave."""
 
 
-@njit(cache=True, fastmath=True)
-def _spread(waves, first, root, target, flip, box, grid):  # type: ignore[no-untyped-def]
-    """Multiply by a^1/2 and lay the sum of all classes on the box (grid zeroed before)."""
-    n_class, n_cell = waves.shape[0], waves.shape[3]
-    nyz, nz = box[1] * box[2], box[2]
-    part = np.empty((3, n_class), dtype=waves.dtype)
-    work = np.empty(n_class, dtype=waves.dtype)
-    for b in range(grid.shape[0]):
-        w = first + b
-        for o in range(n_cell):
-            for c in range(n_class):
-                x, y, z = waves[c, w, 0, o], waves[c, w, 1, o], waves[c, w, 2, o]
-                part[0, c] = root[0, o] * x + root[3, o] * y + root[4, o] * z
-                part[1, c] = root[3, o] * x + root[1, o] * y + root[5, o] * z
-                part[2, c] = root[4, o] * x + root[5, o] * y + root[2, o] * z
+@njit(cache=True)
+def _mix_classes(buffer, n_class, group, lanes, like):  # type: ignore[no-untyped-def]
+    """Sums of all classes with the signs they have at every image of a cell, in place."""
+    step = 1
+    while step < n_class:
+        for base in range(0, n_class, 2 * step):
+            for s in range(base, base + step):
+                mix(buffer + s * group, buffer + (s + step) * group, lanes, like)
+        step *= 2
+
+
+@njit(cache=True, nogil=True)
+def _spread(grid, work, waves, wave, count, root, target, signs, plus, first, last, lanes):  # type: ignore[no-untyped-def]
+    """Multiply `count` waves by a^1/2 and lay the sum of all classes on the box.
+
+    Takes the cells `first` to `last` - 1; the box has been filled with zeros.
+    """
+    n_class, width = waves.shape[0], len(lanes)
+    each = width // 3
+    like = root
+    group = 2 * width * like.itemsize
+    part = work[: _BLOCK * n_class * 2 * width].reshape(_BLOCK, n_class, 2, width)
+    part[:] = 0
+    base, plus_at = np.intp(grid.ctypes.data), np.intp(plus.ctypes.data)
+    for start in range(first, last, _BLOCK):
+        stop = min(start + _BLOCK, last)
+        for c in range(n_class):
             for q in range(3):
-                for c in range(n_class):
-                    work[c ^ flip[q]] = part[q, c]
-                step = 1
-                while step < n_class:
-                    for base in range(0, n_class, 2 * step):
-                        for s in range(base, base + step):
-                            u, v = work[s], work[s + step]
-                            work[s], work[s + step] = u + v, u - v
-                    step *= 2
-                for s in range(n_class):
-                    t = target[s, o]
-                    grid[b, q, t // nyz, (t % nyz) // nz, t % nz] = work[s]
+                for b in range(count):
+                    lane = q * each + b
+                    for o in range(start, stop):
+                        part[o - start, c, 0, lane] = waves[c, wave + b, q, o, 0]
+                        part[o - start, c, 1, lane] = waves[c, wave + b, q, o, 1]
+        buffer = np.intp(work.ctypes.data)
+        for o in range(start, stop):
+            tensor = np.intp(root.ctypes.data) + 12 * like.itemsize * o
+            for c in range(n_class):
+                tensor_times(buffer + c * group, tensor, plus_at, 0, group // 2, lanes, like)
+            _mix_classes(buffer, n_class, group, lanes, like)
+            for s in range(n_class):
+                factor = np.intp(signs.ctypes.data) + s * width * like.itemsize
+                scale(buffer + s * group, factor, base + target[s, o] * group, lanes, like)
+            buffer += n_class * group
 
 
-@njit(cache=True, fastmath=True)
-def _collect(waves, first, root, target, flip, box, grid, out):  # type: ignore[no-untyped-def]
+@njit(cache=True, nogil=True)
+def _collect(grid, work, waves, out, wave, count, root, target, signs, plus, first, last, lanes):  # type: ignore[no-untyped-def]
     """Take the classes apart, multiply by a^1/2 and subtract from the waves."""
-    n_class, n_cell = waves.shape[0], waves.shape[3]
-    nyz, nz = box[1] * box[2], box[2]
-    part = np.empty((3, n_class), dtype=waves.dtype)
-    work = np.empty(n_class, dtype=waves.dtype)
-    share = waves.real.dtype.type(1.0 / n_class)
-    for b in range(grid.shape[0]):
-        w = first + b
-        for o in range(n_cell):
-            for q in range(3):
-                for s in range(n_class):
-                    t = target[s, o]
-                    work[s] = grid[b, q, t // nyz, (t % nyz) // nz, t % nz]
-                step = 1
-                while step < n_class:
-                    for base in range(0, n_class, 2 * step):
-                        for s in range(base, base + step):
-                            u, v = work[s], work[s + step]
-                            work[s], work[s + step] = u + v, u - v
-                    step *= 2
-                for c in range(n_class):
-                    part[q, c] = share * work[c ^ flip[q]]
+    n_class, width = waves.shape[0], len(lanes)
+    each = width // 3
+    like = root
+    group = 2 * width * like.itemsize
+    part = work[: _BLOCK * n_class * 2 * width].reshape(_BLOCK, n_class, 2, width)
+    base, plus_at = np.intp(grid.ctypes.data), np.intp(plus.ctypes.data)
+    for start in range(first, last, _BLOCK):
+        stop = min(start + _BLOCK, last)
+        buffer = np.intp(work.ctypes.data)
+        for o in range(start, stop):
+            tensor = np.intp(root.ctypes.data) + 12 * like.itemsize * o
+            for s in range(n_class):
+                factor = np.intp(signs.ctypes.data) + s * width * like.itemsize
+                scale(base + target[s, o] * group, factor, buffer + s * group, lanes, like)
+            _mix_classes(buffer, n_class, group, lanes, like)
             for c in range(n_class):
-                x, y, z = part[0, c], part[1, c], part[2, c]
-                out[c, w, 0, o] = waves[c, w, 0, o] - (
-                    root[0, o] * x + root[3, o] * y + root[4, o] * z
-                )
-                out[c, w, 1, o] = waves[c, w, 1, o] - (
-                    root[3, o] * x + root[1, o] * y + root[5, o] * z
-                )
-                out[c, w, 2, o] = waves[c, w, 2, o] - (
-                    root[4, o] * x + root[5, o] * y + root[2, o] * z
-                )
+                tensor_times(buffer + c * group, tensor, plus_at, 0, group // 2, lanes, like)
+            buffer += n_class * group
+        for c in range(n_class):
+            for q in range(3):
+                for b in range(count):
+                    w, lane = wave + b, q * each + b
+                    for o in range(start, stop):
+                        out[c, w, q, o, 0] = waves[c, w, q, o, 0] - part[o - start, c, 0, lane]
+                        out[c, w, q, o, 1] = waves[c, w, q, o, 1] - part[o - start, c, 1, lane]
 
 
-@njit(cache=True, fastmath=True)
-def _multiply_plane(plane, kernel, sign_x):  # type: ignore[no-untyped-def]
-    """Multiply one kx plane of every wave by the octant kernel, in place."""
-    n_y, n_z = plane.shape[2], plane.shape[3]
-    half_y, half_z = n_y // 2, n_z // 2
-    for b in range(plane.shape[0]):
-        for j in range(n_y):
-            jj, sign_y = (j, 1) if j <= half_y else (n_y - j, -1)
-            sxy, sxz, syz = sign_x * sign_y, sign_x, sign_y
-            kxx, kyy, kzz = kernel[0, jj], kernel[1, jj], kernel[2, jj]
-            kxy, kxz, kyz = kernel[3, jj], kernel[4, jj], kernel[5, jj]
-            px, py, pz = plane[b, 0, j], plane[b, 1, j], plane[b, 2, j]
-            for k in range(half_z + 1):
-                x, y, z = px[k], py[k], pz[k]
-                xy, xz, yz = sxy * kxy[k], sxz * kxz[k], syz * kyz[k]
-                px[k] = kxx[k] * x + xy * y + xz * z
-                py[k] = xy * x + kyy[k] * y + yz * z
-                pz[k] = xz * x + yz * y + kzz[k] * z
-            for k in range(1, half_z):
-                m = n_z - k
-                x, y, z = px[m], py[m], pz[m]
-                xy, xz, yz = sxy * kxy[k], -sxz * kxz[k], -syz * kyz[k]
-                px[m] = kxx[k] * x + xy * y + xz * z
-                py[m] = xy * x + kyy[k] * y + yz * z
-                pz[m] = xz * x + yz * y + kzz[k] * z
+def _aligned(count: int, dtype: np.dtype) -> NDArray:
+    """Uninitialized array that begins on a cache line."""
+    raw = np.empty(count * dtype.itemsize + 64, dtype=np.uint8)
+    start = -raw.ctypes.data % 64
+    return raw[start : start + count * dtype.itemsize].view(dtype)
 
 
-@njit(cache=True)
-def _take_plane(grid, i, n_y, n_z, out):  # type: ignore[no-untyped-def]
-    """Copy x plane `i` into `out`, padding the y axis with zeros."""
-    for b in range(out.shape[0]):
-        for q in range(3):
-            for j in range(n_y):
-                for k in range(n_z):
-                    out[b, q, j, k] = grid[b, q, i, j, k]
-            out[b, q, n_y:, :] = 0
+def _packed(tensor: NDArray, real: np.dtype) -> NDArray:
+    """Real parts of six components, then the imaginary ones, of complex (n, 6); flat.
 
-
-@njit(cache=True)
-def _pad_z(source, out):  # type: ignore[no-untyped-def]
-    """Copy `source`, padding the z axis with zeros."""
-    n_z = source.shape[3]
-    for b in range(source.shape[0]):
-        for q in range(3):
-            for j in range(source.shape[2]):
-                for k in range(n_z):
-                    out[b, q, j, k] = source[b, q, j, k]
-                out[b, q, j, n_z:] = 0
+    Eight values are loaded for six, hence some room at the end.
+    """
+    out = _aligned(12 * len(tensor) + 2, real)
+    parts = out[:-2].reshape(-1, 2, 6)
+    parts[:, 0], parts[:, 1] = tensor.real, tensor.imag
+    out[-2:] = 0.0
+    return out
 
 
 class LatticeMatrix:
@@ -179,7 +167,8 @@ class LatticeMatrix:
         self.threads = threads
         self.kd = kd
         self.box = lattice.box
-        self.half = tuple(padded_half(n) for n in lattice.box)
+        half = tuple(efficient_length(n) for n in lattice.box)
+        self.half: tuple[int, int, int] = half  # type: ignore[assignment]
         mirrored = [a for a in range(3) if lattice.mirrors[a]]
         self.n_class = 2 ** len(mirrored)
         fundamental = np.ones(len(lattice.cell), dtype=bool)
@@ -188,29 +177,52 @@ class LatticeMatrix:
         self.fundamental = np.flatnonzero(fundamental)
         cell = lattice.cell[self.fundamental].astype(np.int64)
         self.n_cell = len(cell)
+        # In groups; an odd number of them in a row keeps columns apart in the cache.
+        row = lattice.box[2] | 1
+        self._strides = (lattice.box[1] * row + 1, row, 1)
         self._target = np.empty((self.n_class, self.n_cell), dtype=np.int64)
+        signs = np.ones((self.n_class, 3))
         for s in range(self.n_class):
             image = cell.copy()
             for bit, a in enumerate(mirrored):
                 if s >> bit & 1:
                     image[:, a] = lattice.box[a] - 1 - image[:, a]
-            self._target[s] = (image[:, 0] * self.box[1] + image[:, 1]) * self.box[2] + image[:, 2]
-        self._flip = np.zeros(3, dtype=np.int64)
-        for bit, a in enumerate(mirrored):
-            self._flip[a] = 1 << bit
+                    # The component across a mirror plane has the opposite parity.
+                    signs[s, a] = -1.0
+            self._target[s] = image @ self._strides
+        self._signs = signs
+        real = self.dtype.type(0).real.dtype
         self.root: NDArray = np.ascontiguousarray(tensors.root[self.fundamental].T.astype(dtype))
         self.loss = np.ascontiguousarray(tensors.loss[self.fundamental].T)
-        self._kernel = octant_spectrum(lattice.box, self.half, kd, dtype)  # type: ignore[arg-type]
-        self._batch = max(1, min(8, int(4e6 / (3 * 8 * np.prod(self.half) / self.half[0] * 4))))
+        self._root = _packed(self.root.T, real)
+        spectrum = octant_spectrum(lattice.box, self.half, kd, dtype)
+        self._kernel = _packed(spectrum.transpose(0, 2, 3, 1).reshape(-1, 6), real)
+        # Signs of the six components in every octant of the spectrum.
+        odd = np.array([[i >> b & 1 for b in (2, 1, 0)] for i in range(8)])
+        flips = np.ones((9, 8), dtype=real)
+        for component, (a, b) in enumerate(((0, 1), (0, 2), (1, 2)), 3):
+            flips[:8, component] = 1 - 2 * (odd[:, a] ^ odd[:, b])
+        self._flips = flips
+        self._used = np.zeros(lattice.box[1] * lattice.box[2], dtype=np.bool_)
+        self._used[lattice.cell[:, 1] * lattice.box[2] + lattice.cell[:, 2]] = True
+        self._plans = [transform_plan(h, real) for h in self.half]
+        self._grid: NDArray = _aligned(0, real)
+        self._work: list[NDArray] = []
         self.products = 0
 
     @property
     def nbytes(self) -> int:
         """Bytes held by the kernel, the cell tensors and the work space of one product."""
-        px, py, pz = (2 * h for h in self.half)
-        work = px * self.box[1] * self.box[2] + py * self.box[2] + py * pz
-        fixed = self._kernel.nbytes + self.root.nbytes + self.loss.nbytes + self._target.nbytes
-        return fixed + 3 * self._batch * work * self.dtype.itemsize
+        lanes, _ = _LANES[-1]
+        fixed = self._kernel.nbytes + self._root.nbytes + self.root.nbytes
+        fixed += self.loss.nbytes + self._target.nbytes
+        grid, work = self._groups()
+        return fixed + (grid + self.threads * work) * lanes * self.dtype.itemsize
+
+    def _groups(self) -> tuple[int, int]:
+        """Groups of the box with its padded x axis, and of the work space of one thread."""
+        columns = 2 * self.half[1] * self._strides[1] + 2 * self.half[2] + 4 * max(self.half)
+        return 2 * self.half[0] * self._strides[0], max(columns, _BLOCK * self.n_class)
 
     def __call__(self, waves: NDArray, out: NDArray | None = None) -> NDArray:
         """Return A applied to every wave; `waves` is left untouched.
@@ -220,41 +232,72 @@ class LatticeMatrix:
         waves : complex (n_class, n_wave, 3, n_cell), of this matrix's dtype
         out : same shape, optional
         """
-        expected = (self.n_class, waves.shape[1], 3, self.n_cell)
+        n_wave = waves.shape[1]
+        expected = (self.n_class, n_wave, 3, self.n_cell)
         if waves.shape != expected or waves.dtype != self.dtype:
             raise ValueError(
                 f"waves are {waves.dtype} {waves.shape}, should be {self.dtype} {expected}"
             )
         if out is None:
             out = np.empty_like(waves)
-        box = np.array(self.box, dtype=np.int64)
-        for first in range(0, waves.shape[1], self._batch):
-            count = min(self._batch, waves.shape[1] - first)
-            grid = np.zeros((count, 3, 2 * self.half[0], *self.box[1:]), dtype=self.dtype)
-            _spread(waves, first, self.root, self._target, self._flip, box, grid)
-            self._convolve(grid)
-            _collect(waves, first, self.root, self._target, self._flip, box, grid, out)
-        self.products += waves.shape[1]
+        parts = (*expected, 2)
+        source = np.ascontiguousarray(waves).view(self._root.dtype).reshape(parts)
+        result = out.view(self._root.dtype).reshape(parts)
+        first = 0
+        while first < n_wave:
+            left = n_wave - first
+            lanes, most = next((w for w in _LANES if w[1] >= left), _LANES[-1])
+            count = min(most, left)
+            self._multiply(source, result, first, count, (0,) * lanes)
+            first += count
+        self.products += n_wave
         return out
 
-    def _convolve(self, grid: NDArray) -> None:
-        """Convolve with the kernel, in place; the first box[0] x planes hold in- and output."""
-        count, (_, ny, nz) = grid.shape[0], self.box
-        px, py, pz = (2 * h for h in self.half)
-        threads = self.threads
-        c2c = ducc0.fft.c2c
-        c2c(grid, [2], True, 0, grid, threads)
-        column = np.empty((count, 3, py, nz), dtype=self.dtype)
-        plane = np.empty((count, 3, py, pz), dtype=self.dtype)
-        for i in range(px):
-            _take_plane(grid, i, ny, nz, column)
-            c2c(column, [2], True, 0, column, threads)
-            _pad_z(column, plane)
-            c2c(plane, [3], True, 0, plane, threads)
-            mirrored = i > self.half[0]
-            _multiply_plane(plane, self._kernel[px - i if mirrored else i], -1 if mirrored else 1)
-            c2c(plane, [3], False, 0, plane, threads)
-            column[...] = plane[..., :nz]
-            c2c(column, [2], False, 0, column, threads)
-            grid[:, :, i] = column[:, :, :ny]
-        c2c(grid, [2], False, 0, grid, threads)
+    def _multiply(
+        self, source: NDArray, result: NDArray, first: int, count: int, lanes: tuple[int, ...]
+    ) -> None:
+        """Multiply the waves that fit into one group."""
+        width = 2 * len(lanes)
+        n_grid, n_work = self._groups()
+        if len(self._grid) < n_grid * width:
+            real = self._root.dtype
+            self._grid = _aligned(n_grid * width, real)
+            self._work = [_aligned(n_work * width, real) for _ in range(self.threads)]
+        grid, box, half = self._grid, self.box, self.half
+        strides = tuple(s * width * grid.itemsize for s in self._strides)
+        (radix_x, table_x), (radix_y, table_y), (radix_z, table_z) = self._plans
+        signs = np.zeros((self.n_class, len(lanes)), dtype=grid.dtype)
+        signs[:, : 3 * (len(lanes) // 3)] = np.repeat(self._signs, len(lanes) // 3, axis=1)
+        share = signs / grid.dtype.type(self.n_class)
+        cells = (self._root, self._target)
+        columns = (self._used, box, half, strides, radix_x, table_x)
+        planes = (
+            self._kernel, self._flips, box, half, strides, radix_y, table_y, radix_z, table_z,
+        )  # fmt: skip
+        plus = self._flips[8]
+        n_column, n_plane = len(self._used), 2 * half[0]
+        grid[: box[0] * self._strides[0] * width] = 0.0
+        run = self._in_parts
+        run(_spread, self.n_cell, (source, first, count, *cells, signs, plus), lanes)
+        run(transform_columns, n_column, (*columns, False), lanes)
+        run(convolve_planes, n_plane, planes, lanes)
+        run(transform_columns, n_column, (*columns, True), lanes)
+        run(_collect, self.n_cell, (source, result, first, count, *cells, share, plus), lanes)
+
+    def _in_parts(
+        self, function: Callable[..., None], total: int, args: tuple[Any, ...], lanes: tuple
+    ) -> None:
+        """Run a function on all of `total` items, an equal part of them on every thread."""
+        if self.threads == 1:
+            function(self._grid, self._work[0], *args, 0, total, lanes)
+            return
+        edges = [total * t // self.threads for t in range(self.threads + 1)]
+        with ThreadPoolExecutor(self.threads) as pool:
+            list(
+                pool.map(
+                    lambda t: function(
+                        self._grid, self._work[t], *args, edges[t], edges[t + 1], lanes
+                    ),
+                    range(self.threads),
+                )
+            )

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.sparse import csr_array
+from scipy.sparse.csgraph import connected_components
 
 from scatterloom.orientation.nodes import IncidenceNodes, incidence_nodes
 from scatterloom.transition.matrix import TransitionMatrix
@@ -11,6 +13,13 @@ from scatterloom.waves.angular import axial_plane_wave, polar_functions, wigner_
 
 _MOST_SAMPLES = 4_000_000
 """Complex amplitudes held at a time (64 MB, and a few copies)."""
+
+
+def _groups(matrix: NDArray[np.complex128]) -> list[NDArray[np.int64]]:
+    """Waves that the matrix connects; symmetries leave most of its entries exactly zero."""
+    count, group = connected_components(csr_array(matrix != 0.0), directed=False)
+    order = np.argsort(group, kind="stable")
+    return np.split(order, np.cumsum(np.bincount(group, minlength=count))[:-1])
 
 
 def _scattered_in_beam_frame(
@@ -40,7 +49,11 @@ def _scattered_in_beam_frame(
             for hand, m in enumerate((1, -1)):
                 # Rows of one kind and degree are sorted by order.
                 incident[rows[kind][n], :, hand] = axial[kind][hand, n] * rotation[:, :, n + m].T
-    scattered = np.tensordot(transition.matrix, incident, axes=1)
+    scattered = np.empty_like(incident)
+    for group in _groups(transition.matrix):
+        part = incident[group].reshape(len(group), 2 * n_node)
+        block = transition.matrix[np.ix_(group, group)]
+        scattered[group] = (block @ part).reshape(len(group), n_node, 2)
     out = np.zeros((2, n_max + 1, 2 * n_max + 1, n_node, 2), dtype=np.complex128)
     for n in range(1, n_max + 1):
         for kind in (0, 1):
@@ -91,7 +104,7 @@ def _coherency(
     sample = np.moveaxis(linear, 1, 0) * np.sqrt(nodes.weight)[:, None]
     sample = np.ascontiguousarray(np.moveaxis(sample, 2, 3))
     sample = sample.reshape(n_angle, (2 * n_max + 3) * n_node, 4)
-    product = np.einsum("asx,asy->axy", sample, sample.conj(), optimize=True)
+    product = sample.transpose(0, 2, 1) @ sample.conj()
     return product.reshape(n_angle, 2, 2, 2, 2)
 
 

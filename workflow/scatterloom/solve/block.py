@@ -9,10 +9,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterloom.dipole.product import LatticeMatrix
+from scatterloom.dipole.sectors import Sectors
 from scatterloom.solve.minimal_residual import ClassIterate
 
 BAD_START = 0.3
 """A start whose images miss the incident block by more than this is dropped."""
+
+_RESCALE = 4
+"""Steps after which the scale of the amplitudes is computed anew."""
 
 _ROUNDING = 8.0
 """Error of the amplitudes by rounding alone, in units of the precision (measured: 1 to 4)."""
@@ -24,12 +28,12 @@ class BlockSolution:
 
     Attributes
     ----------
-    amplitudes : list of complex128 (n_wave_of_class, n_wave_of_class)
-        S of each parity class, corrected by its remainder.
+    amplitudes : list of complex128 (n_wave_of_sector, n_wave_of_sector)
+        S of each sector, corrected by its remainder.
     remainder : list of complex128, same shapes
-        R^T R of each class, the leading term of the error before the correction.
-    fields : list of complex (n_wave_of_class, 3 n_cell)
-        X + R of each class.
+        R^T R of each sector, the leading term of the error before the correction.
+    fields : list of complex (n_wave_of_sector, n_row_of_sector)
+        X + R of each sector.
     error : float
         Estimated relative error (Frobenius) of the amplitudes: the size of the
         remainder, which is already added, hence on the safe side in most cases. Never
@@ -61,22 +65,10 @@ class BlockSolution:
     history: list[float] = field(default_factory=list)
 
 
-def _apply(matrix: LatticeMatrix, blocks: Sequence[NDArray]) -> list[NDArray]:
-    """A times one block of rows for every class, packed."""
-    width = max(len(block) for block in blocks)
-    shape = (matrix.n_class, width, 3, matrix.n_cell)
-    packed = np.zeros(shape, dtype=matrix.dtype)
-    for c, block in enumerate(blocks):
-        packed[c, : len(block)] = block.reshape(len(block), 3, matrix.n_cell)
-    image = matrix(packed)
-    return [
-        image[c, : len(block)].reshape(len(block), 3 * matrix.n_cell)
-        for c, block in enumerate(blocks)
-    ]
-
-
-def _norm(blocks: Sequence[NDArray]) -> float:
-    return float(np.sqrt(sum(np.linalg.norm(block) ** 2 for block in blocks)))
+def _norm(blocks: Sequence[NDArray], copies: Sequence[int]) -> float:
+    """Frobenius norm over all classes; some sectors stand for two."""
+    squares = (c * np.linalg.norm(b) ** 2 for c, b in zip(copies, blocks, strict=True))
+    return float(np.sqrt(sum(squares)))
 
 
 def solve_block(
@@ -87,8 +79,9 @@ def solve_block(
     max_steps: int = 60,
     progress: Callable[[float, float], None] | None = None,
     checkpoint: Callable[[Callable[[], list[NDArray]], float], None] | None = None,
+    sectors: Sectors | None = None,
 ) -> BlockSolution:
-    """Solve ``A X = B`` for every parity class until the amplitudes are good enough.
+    """Solve ``A X = B`` for every sector until the amplitudes are good enough.
 
     Stops when ``|R^T R| <= tolerance |S|`` in the Frobenius norm over all classes,
     R being the residual block: the leading term of the error of the stationary
@@ -97,9 +90,9 @@ def solve_block(
     Parameters
     ----------
     matrix : LatticeMatrix
-    incident : list of complex (n_wave_of_class, 3 n_cell)
-        B of each class, ``a^1/2 E`` scaled so that row products on the fundamental
-        cells are those on the whole particle.
+    incident : list of complex (n_wave_of_sector, n_row_of_sector)
+        B of each sector, ``a^1/2 E`` scaled so that row products are those on the whole
+        particle.
     tolerance : float
         Relative error of the amplitudes asked for.
     start : list like `incident`, optional
@@ -110,6 +103,8 @@ def solve_block(
         Called after every block of products.
     checkpoint : callable(fields, products), optional
         Called likewise; `fields()` makes the best fields so far, as a later start.
+    sectors : Sectors, optional
+        Those of `incident`; the parity classes if not given.
 
     Returns
     -------
@@ -123,10 +118,12 @@ def solve_block(
     """
     if not tolerance > 0.0:
         raise ValueError(f"tolerance is {tolerance}, must be positive")
+    sectors = Sectors(matrix) if sectors is None else sectors
+    copies = [sector.copies for sector in sectors.all]
     iterates = [ClassIterate(block) for block in incident]
-    n_wave = sum(len(block) for block in incident)
+    n_wave = sum(c * len(block) for c, block in zip(copies, incident, strict=True))
     # Before the first product the Born amplitudes stand in for the scale of S.
-    scale = _norm([(block @ block.T) for block in incident])
+    scale = _norm([block @ block.T for block in incident], copies)
     used = 0
     packed_before = matrix.products
     start_residual, dropped = 1.0, False
@@ -134,6 +131,8 @@ def solve_block(
     amplitudes: list[NDArray] = []
     remainders: list[NDArray] = []
     error = np.inf
+    fresh = True
+    total = _norm(incident, copies)
 
     def threshold() -> float:
         return 0.5 * tolerance * scale / np.sqrt(n_wave)
@@ -144,14 +143,14 @@ def solve_block(
                 it.propose_start(first, threshold())
                 for it, first in zip(iterates, start, strict=True)
             ]
-            images = _apply(matrix, blocks)
+            images = sectors.apply(blocks)
             used += sum(len(block) for block in blocks)
             wanted = [it.propose(threshold()) for it in iterates]
             shares = [
                 it.shortfall(w, image)
                 for it, w, image in zip(iterates, wanted, images, strict=True)
             ]
-            missed, whole = np.sqrt(np.sum(np.square(shares), axis=0))
+            missed, whole = np.sqrt(np.array(copies) @ np.square(shares))
             start_residual = missed / max(whole, 1e-300)
             if not start_residual <= BAD_START:
                 dropped = True
@@ -160,17 +159,23 @@ def solve_block(
             blocks = [it.propose(threshold()) for it in iterates]
             if not any(len(block) for block in blocks):
                 break
-            images = _apply(matrix, blocks)
+            images = sectors.apply(blocks)
             used += sum(len(block) for block in blocks)
         for iterate, block, image in zip(iterates, blocks, images, strict=True):
             iterate.take(block, image)
-        parts = [iterate.amplitudes() for iterate in iterates]
-        remainders = [part[1] for part in parts]
-        amplitudes = [part[0] + part[1] for part in parts]
-        scale = _norm(amplitudes)
-        error = _norm(remainders) / scale
+        remainders = [iterate.residual_products()[1] for iterate in iterates]
+        missing = _norm(remainders, copies)
+        # Amplitudes change little after the first step: their scale is looked at again when
+        # it decides, and now and then.
+        if len(history) % _RESCALE == 0 or missing <= 1.5 * tolerance * scale:
+            amplitudes = _corrected(iterates)
+            scale = _norm(amplitudes, copies)
+            fresh = True
+        else:
+            fresh = False
+        error = missing / scale
         history.append(error)
-        residual = _total_residual(iterates)
+        residual = _total_residual(iterates, copies, total)
         if progress is not None:
             progress(error, residual)
         if error <= tolerance:
@@ -181,6 +186,10 @@ def solve_block(
             )
         if len(history) > 8 and error > 0.9 * history[-5]:
             break
+    if not fresh:
+        amplitudes = _corrected(iterates)
+        error = _norm(remainders, copies) / _norm(amplitudes, copies)
+        history[-1] = error
     # The residual is updated, not recomputed, so the remainder does not see rounding.
     error = max(error, _ROUNDING * float(np.finfo(matrix.dtype).eps))
     return BlockSolution(
@@ -189,7 +198,7 @@ def solve_block(
         # One free correction: A is close to one on what little is left.
         fields=[iterate.fields + iterate.residual for iterate in iterates],
         error=float(error),
-        residual=_total_residual(iterates),
+        residual=_total_residual(iterates, copies, total),
         products=used / n_wave,
         packed_products=matrix.products - packed_before,
         converged=bool(error <= tolerance),
@@ -199,6 +208,14 @@ def solve_block(
     )
 
 
-def _total_residual(iterates: Sequence[ClassIterate]) -> float:
-    missed = _norm([iterate.residual for iterate in iterates])
-    return missed / max(_norm([iterate.incident for iterate in iterates]), 1e-300)
+def _corrected(iterates: Sequence[ClassIterate]) -> list[NDArray]:
+    """Amplitudes of all classes with their remainders added."""
+    return [stationary + rest for stationary, rest in (it.amplitudes() for it in iterates)]
+
+
+def _total_residual(iterates: Sequence[ClassIterate], copies: Sequence[int], total: float) -> float:
+    squares = sum(
+        c * float(np.trace(it.residual_products()[0]).real)
+        for c, it in zip(copies, iterates, strict=True)
+    )
+    return float(np.sqrt(max(squares, 0.0))) / max(total, 1e-300)

@@ -6,10 +6,12 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
+from numba import njit
 from numpy.typing import NDArray
 
 from scatterloom.dipole.mixture import particle_tensors
 from scatterloom.dipole.product import LatticeMatrix
+from scatterloom.dipole.sectors import Sectors, exchange_of_cells
 from scatterloom.particle.lattice import Lattice
 from scatterloom.solve.block import BlockSolution, solve_block
 from scatterloom.solve.start import StoredFields
@@ -95,7 +97,8 @@ def solve_level(
     materials = indices if isinstance(indices, Sequence) else [indices]
     tensors = particle_tensors(lattice, materials, kd)
     matrix = LatticeMatrix(lattice, tensors, kd, dtype, threads)
-    incident = incident_block(lattice, matrix, size_parameter, wave_basis(n_max))
+    sectors = Sectors(matrix, exchange_of_cells(lattice, tensors))
+    incident = incident_block(lattice, matrix, size_parameter, wave_basis(n_max), sectors)
     first = None if start is None else start(incident.norms)
 
     def per_norm(blocks: list[NDArray]) -> StoredFields:
@@ -110,7 +113,13 @@ def solve_level(
             checkpoint(lambda: per_norm(blocks()), products)
 
     solution = solve_block(
-        matrix, incident.rows, tolerance, first, progress=progress, checkpoint=keep
+        matrix,
+        incident.rows,
+        tolerance,
+        first,
+        progress=progress,
+        checkpoint=keep,
+        sectors=sectors,
     )
     raw = _of_particle(lattice, n_max, incident, solution.amplitudes)
     transition = project(raw, lattice.symmetry)
@@ -121,7 +130,7 @@ def solve_level(
         transition=transition,
         uncorrected=uncorrected,
         asymmetry=float(lost),
-        absorption_efficiency=_absorption(matrix, solution.fields, size_parameter),
+        absorption_efficiency=_absorption(sectors, solution.fields, size_parameter),
         solution=solution,
         fields=per_norm(solution.fields),
         cells=len(lattice.cell),
@@ -134,27 +143,40 @@ def _of_particle(
     lattice: Lattice, n_max: int, incident: IncidentBlock, amplitudes: Sequence[NDArray]
 ) -> TransitionMatrix:
     """Transition matrix in the particle's own frame."""
-    transition = from_amplitudes(n_max, incident.members, amplitudes)
+    transition = from_amplitudes(n_max, *incident.of_all_waves(amplitudes))
     if lattice.rotation is None:
         return transition
     return turned(transition, lattice.rotation.T)
 
 
-def _absorption(matrix: LatticeMatrix, fields: list[NDArray], size_parameter: float) -> float:
+@njit(cache=True)
+def _power(rows, loss):  # type: ignore[no-untyped-def]
+    """Sum of x^H L x over cells and waves, L real and symmetric."""
+    total = 0.0
+    for w in range(rows.shape[0]):
+        for o in range(rows.shape[2]):
+            x, y, z = rows[w, 0, o], rows[w, 1, o], rows[w, 2, o]
+            power = loss[0, o] * (x.real * x.real + x.imag * x.imag)
+            power += loss[1, o] * (y.real * y.real + y.imag * y.imag)
+            power += loss[2, o] * (z.real * z.real + z.imag * z.imag)
+            power += 2.0 * loss[3, o] * (x.real * y.real + x.imag * y.imag)
+            power += 2.0 * loss[4, o] * (x.real * z.real + x.imag * z.imag)
+            power += 2.0 * loss[5, o] * (y.real * z.real + y.imag * z.imag)
+            total += power
+    return total
+
+
+def _absorption(sectors: Sectors, fields: list[NDArray], size_parameter: float) -> float:
     """Absorption efficiency from the loss in the cells.
 
     One plane wave: C_abs = 4 pi sum x^H L x (Bohren & Huffman 1983, section 3.2, applied to
     dipoles); the mean over all plane waves is 2 pi times the sum over normalized waves.
     """
-    loss = matrix.loss
+    loss = sectors.matrix.loss
     total = 0.0
-    for rows in fields:
-        x, y, z = (rows.reshape(len(rows), 3, matrix.n_cell)[:, q] for q in range(3))
-        diagonal = [np.sum(np.abs(u) ** 2, axis=0, dtype=np.float64) for u in (x, y, z)]
-        mixed = [
-            np.sum((u.conj() * v).real, axis=0, dtype=np.float64)
-            for u, v in ((x, y), (x, z), (y, z))
-        ]
-        total += sum(float(loss[q] @ diagonal[q]) for q in range(3))
-        total += 2.0 * sum(float(loss[3 + q] @ mixed[q]) for q in range(3))
+    for sector, part in zip(sectors.all, fields, strict=True):
+        rows = sectors.whole(sector, part).reshape(len(part), 3, sectors.matrix.n_cell)
+        power = _power(rows, loss)
+        # The image of a sector absorbs as much.
+        total += sector.copies * power
     return 8.0 * np.pi**2 * total / (np.pi * size_parameter**2)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -64,8 +65,29 @@ def from_amplitudes(
     real = np.zeros((size, size), dtype=np.complex128)
     for member, block in zip(members, amplitudes, strict=True):
         real[np.ix_(member, member)] = 4j * np.pi * block
-    change, labels = complex_from_real(n_max)
-    return TransitionMatrix(change @ real @ change.conj().T, labels)
+    return TransitionMatrix(_in_complex_waves(real, n_max), complex_from_real(n_max)[1])
+
+
+@lru_cache(maxsize=16)
+def _two_entries(n_max: int) -> tuple[NDArray[np.int64], NDArray[np.complex128]]:
+    """Columns and values of the two entries in each row of `complex_from_real`, (2, n_wave)."""
+    change = complex_from_real(n_max)[0]
+    found = np.abs(change) > 0.0
+    first = found.argmax(axis=1)
+    last = found.shape[1] - 1 - found[:, ::-1].argmax(axis=1)
+    row = np.arange(len(change))
+    # Waves of order zero have one entry only.
+    second = np.where(first == last, 0.0, change[row, last])
+    return np.stack([first, last]), np.stack([change[row, first], second])
+
+
+def _in_complex_waves(real: NDArray, n_max: int) -> NDArray[np.complex128]:
+    """``W real W^H`` with W of `complex_from_real`, whose rows have two entries at most."""
+    (first, last), (one, other) = _two_entries(n_max)
+    half = one[:, None] * real[first] + other[:, None] * real[last]
+    half = np.ascontiguousarray(half.T)
+    out = one.conj()[:, None] * half[first] + other.conj()[:, None] * half[last]
+    return np.ascontiguousarray(out.T)
 
 
 def project(transition: TransitionMatrix, symmetry: str) -> TransitionMatrix:

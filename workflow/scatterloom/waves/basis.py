@@ -59,6 +59,21 @@ class WaveBasis:
             out |= parity[axis] << bit
         return out
 
+    def exchanged(self) -> tuple[NDArray[np.int64], NDArray[np.float64]]:
+        """The wave that each becomes under the exchange of x and y, and its sign.
+
+        The exchange, E(x, y, z) to (Ey, Ex, Ez)(y, x, z), takes phi to pi/2 - phi: cosine and
+        sine functions of even order stay, those of odd order change places. RgM, a curl,
+        has the opposite sign.
+        """
+        odd = self.order % 2 == 1
+        # Waves of one kind, degree and order stand next to each other, cosine first.
+        step = np.where(self.sine == 0, 1, -1)
+        image = np.arange(len(self)) + np.where(odd, step, 0)
+        turns = np.where(self.order // 2 % 2 == 1, -1.0, 1.0)
+        sign = np.where(~odd & (self.sine == 1), -turns, turns)
+        return image, np.where(self.kind == MAGNETIC, -sign, sign)
+
 
 @lru_cache(maxsize=64)
 def wave_basis(n_max: int) -> WaveBasis:
