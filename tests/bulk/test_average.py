@@ -10,7 +10,7 @@ import pytest
 
 from oracles.mie import sphere
 from scatterloom.bulk.average import Average, Optics, population_average
-from scatterloom.bulk.distribution import Distribution, Gamma, Lognormal
+from scatterloom.campaign.distribution import Distribution, Gamma, Lognormal
 
 ANGLES = np.array([0.0, 30.0, 90.0, 150.0, 180.0])
 WAVENUMBER = 2 * math.pi / 0.55

@@ -10,13 +10,20 @@ import pytest
 from oracles.mie import sphere
 from oracles.tables import mie_table
 from scatterloom.bulk import schema
-from scatterloom.bulk.build import Population, build
+from scatterloom.bulk.build import angle_blocks, build
 from scatterloom.bulk.bulkfile import open_bulk, write_bulk
-from scatterloom.bulk.distribution import Gamma, Lognormal
+from scatterloom.bulk.population import Population
+from scatterloom.bulk.quantities import spectral
+from scatterloom.campaign.distribution import Gamma, Lognormal
 from scatterloom.errors import BadInput, IntegrityError
 
-HAZE = Population("haze", {"clear": 3.0, "dark": 1.0}, Lognormal(0.12, math.log(1.25)))
-DARK = Population("soot", {"dark": 1.0}, Gamma(0.2, 0.03))
+HAZE = Population(
+    "haze",
+    {"clear": 3.0, "dark": 1.0},
+    Lognormal(0.12, math.log(1.25)),
+    densities={"clear": 1.0, "dark": 2.0},
+)
+DARK = Population("soot", {"dark": 1.0}, Gamma(0.2, 0.03), densities={"dark": 1.8})
 
 
 @pytest.fixture(scope="module")
@@ -34,9 +41,17 @@ def test_every_variable_has_its_shape_and_no_hole(columns) -> None:
     assert columns["scattering_matrix"].shape == (2, 2, 31, 4, 4)
     assert columns["status"].tolist() == [[1, 1], [1, 1]]
     assert columns["number_fraction"].tolist() == [[0.75, 0.25], [0.0, 1.0]]
+    to_the_next = set(spectral(columns, 0, 0, 1))
     for name in schema.VALUE_NAMES:
-        assert np.isfinite(columns[name]).all(), name
-        assert (columns[f"{name}_error"] >= 0).all(), name
+        value, half_width = columns[name], columns[f"{name}_error"]
+        if name in to_the_next:  # the last wavelength has no next one
+            assert np.isnan(value[:, -1]).all(), name
+            value, half_width = value[:, :-1], half_width[:, :-1]
+        if name == "depolarization_spectral_ratio":  # spheres do not depolarize
+            assert np.isnan(value).all()
+            continue
+        assert np.isfinite(value).all(), name
+        assert (half_width >= 0).all(), name
 
 
 def test_spheres_do_not_depolarize_and_the_matrix_is_normalized(columns) -> None:
@@ -92,6 +107,39 @@ def test_flags_tell_what_was_wrong(table) -> None:
     assert out["warning_flags"][1, 1] & f["too_few_sizes"]
     assert np.isnan(out["extinction_cross_section"][:, 1]).all()
     assert out["size_count"][1, 1] == 3
+
+
+def test_a_population_that_the_table_does_not_cover_is_refused(table) -> None:
+    out = build(table, [Population("coarse", {"dark": 1.0}, Gamma(1.5, 0.1))])
+    f = schema.FLAGS
+    assert out["status"].tolist() == [[3, 3]]
+    assert (out["warning_flags"] & (f["not_covered"] | f["truncated_by_table"]) == 40).all()
+    assert (out["extinction_share_above"] > 0.9).all()
+    for name in schema.VALUE_NAMES:
+        assert np.isnan(out[name]).all(), name
+
+
+def test_blocks_of_angles_give_what_the_whole_gives(table, columns, monkeypatch) -> None:
+    """With room for a few angles only, of a table that stays on disk until asked."""
+    loaded = []
+    monkeypatch.setattr("scatterloom.bulk.build.BLOCK_BYTES", 5 * 3 * 16 * 8 * 60 * 2)
+    blocks = angle_blocks(60, 31, 2)
+    assert [b.stop - b.start for b in blocks] == [5] * 6 + [1]
+    lazy = table.chunk({"size": 20, "angle": 7})
+
+    class Spy(type(lazy)):
+        __slots__ = ()
+
+        def load(self, **keywords):
+            loaded.append(self.nbytes)
+            return super().load(**keywords)
+
+    spied = Spy(lazy.data_vars, lazy.coords, lazy.attrs)
+    out = build(spied, [HAZE, DARK])
+    for name in schema.VALUE_NAMES:
+        np.testing.assert_allclose(out[name], columns[name], rtol=1e-12, equal_nan=True)
+    whole = 2 * 60 * 31 * 16 * (8 + 4 + 4)
+    assert loaded and max(loaded) < 0.2 * whole
 
 
 def test_coarse_grid_is_flagged() -> None:

@@ -131,6 +131,38 @@ EDITS = {
         "{kind: gamma, effective_radius_um: 0.2, effective_variance: 0.5}",
     ),
     "weight of zero": ("ball: 0.3", "ball: 0"),
+    "weighted effective radius": (
+        "{kind: lognormal, radius_um: 0.2, geometric_sd: 1.3}",
+        "{kind: lognormal, effective_radius_um: 0.2, effective_variance: 0.1, by: volume}",
+    ),
+    "infinitely many particles": (
+        "{kind: lognormal, radius_um: 0.2, geometric_sd: 1.3}",
+        "{kind: modified_gamma, mode_radius_um: 0.2, alpha: 2, gamma: 1, by: volume}",
+    ),
+    "power law upside down": (
+        "{kind: lognormal, radius_um: 0.2, geometric_sd: 1.3}",
+        "{kind: power_law, exponent: 4, smallest_um: 0.9, largest_um: 0.1}",
+    ),
+    "unknown weighting": (
+        "{kind: lognormal, radius_um: 0.2, geometric_sd: 1.3}",
+        "{kind: power_law, exponent: 4, smallest_um: 0.1, largest_um: 0.9, by: mass}",
+    ),
+    "missing table of sizes": (
+        "{kind: lognormal, radius_um: 0.2, geometric_sd: 1.3}",
+        "{kind: tabulated, table: sizes.csv}",
+    ),
+    "table and points of sizes": (
+        "{kind: lognormal, radius_um: 0.2, geometric_sd: 1.3}",
+        "{kind: tabulated}",
+    ),
+    "sizes of a particle without a share": (
+        "geometric_sd: 1.3}",
+        "geometric_sd: 1.3}\n    sizes: {bal: {kind: gamma, effective_radius_um: 0.2, "
+        "effective_variance: 0.1}}",
+    ),
+    "mass without density": ("{plate: 0.7, ball: 0.3}", "{plate: 1}\n    shares_by: mass"),
+    "density out of range": ("k: 0.003}", "k: 0.003, density_g_cm3: 2650}"),
+    "odd streams": ("", "exchange: {streams: 15}\n"),
     # checks between sections
     "unknown material": ("material: salt", "material: silk"),
     "unknown material of a coating": (

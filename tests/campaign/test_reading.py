@@ -10,7 +10,7 @@ from campaign.bad_configs import GOOD, edited
 from scatterloom.campaign import load
 from scatterloom.campaign.expand import expand
 from scatterloom.campaign.grids import AngleRule, SizeRule
-from scatterloom.campaign.populations import Gamma, Lognormal
+from scatterloom.campaign.size_sections import Gamma, Lognormal
 from scatterloom.campaign.spectra import Spectrum
 
 

@@ -12,19 +12,23 @@ import pytest
 from matplotlib.figure import Figure
 
 from oracles.tables import mie_table
-from scatterloom.bulk.build import Population, build
+from scatterloom.bulk.build import build
 from scatterloom.bulk.bulkfile import open_bulk, write_bulk
-from scatterloom.bulk.distribution import Lognormal
+from scatterloom.bulk.population import Population
+from scatterloom.campaign.distribution import Lognormal
 from scatterloom.errors import IntegrityError
 from scatterloom.figures.axes import plain_log_ticks
 from scatterloom.figures.curves import matrix_curves
 from scatterloom.figures.effort import product_counts
 from scatterloom.figures.make import make_figures
 from scatterloom.figures.maps import edges, size_angle_map
+from scatterloom.figures.overlay import lidar_scatter, polar_intensity, populations_matrix
+from scatterloom.figures.overview import audit_map, size_wavelength_map
 from scatterloom.figures.picture import SERIES, read_index, style
 from scatterloom.figures.selection import load_ladder, spread_sizes, thinned
 
 HAZE = Population("haze", {"clear": 3.0, "dark": 1.0}, Lognormal(0.12, math.log(1.3)))
+SOOT = Population("soot", {"dark": 1.0}, Lognormal(0.1, math.log(1.2)))
 
 
 @pytest.fixture(scope="module")
@@ -39,9 +43,9 @@ def table():
 @pytest.fixture(scope="module")
 def drawn(table, tmp_path_factory):
     folder = tmp_path_factory.mktemp("campaign")
-    write_bulk(folder / "bulk.zarr", build(table, [HAZE]), table.attrs)
+    write_bulk(folder / "bulk.zarr", build(table, [HAZE, SOOT]), table.attrs)
     bulk = open_bulk(folder / "bulk.zarr")
-    entries, notes = make_figures(table, folder / "figures", bulk, [HAZE])
+    entries, notes = make_figures(table, folder / "figures", bulk, [HAZE, SOOT])
     return folder / "figures", bulk, entries, notes
 
 
@@ -53,7 +57,8 @@ def test_every_figure_is_there_with_its_words_and_numbers(drawn) -> None:
     assert names == (
         {f"matrix-{ladder}" for ladder in ladders}
         | {f"map-{ladder}" for ladder in ladders}
-        | {"products-clear", "products-dark", "population-haze"}
+        | {"products-clear", "products-dark", "audit-map"}
+        | {"population-haze", "population-soot", "populations-0.55um", "polar-0.55um", "lidar"}
     )
     for entry in entries:
         png = (folder / entry["png"]).read_bytes()
@@ -61,6 +66,7 @@ def test_every_figure_is_there_with_its_words_and_numbers(drawn) -> None:
         assert width == 1020  # one column of 86 mm at 300 dpi
         assert 600 < height < 1800  # less than two thirds of a page
         assert (folder / entry["svg"]).read_bytes().startswith(b"<?xml")
+        assert (folder / entry["pdf"]).read_bytes().startswith(b"%PDF")
         with open(folder / entry["csv"], newline="") as stream:
             header, *rows = list(csv.reader(stream))
         assert rows and all(len(row) == len(header) for row in rows)
@@ -74,7 +80,7 @@ def test_every_figure_is_there_with_its_words_and_numbers(drawn) -> None:
 
 def test_figures_are_byte_identical_on_repeat(drawn, table, tmp_path) -> None:
     folder, bulk, _, _ = drawn
-    make_figures(table, tmp_path / "again", bulk, [HAZE])
+    make_figures(table, tmp_path / "again", bulk, [HAZE, SOOT])
     first = {path.name: path.read_bytes() for path in folder.iterdir()}
     second = {path.name: path.read_bytes() for path in (tmp_path / "again").iterdir()}
     assert first == second
@@ -186,6 +192,7 @@ def test_a_long_campaign_is_cut_and_says_so(table, tmp_path, monkeypatch) -> Non
         "matrix-clear-0.55um",
         "map-clear-0.55um",
         "products-clear",
+        "audit-map",
     ]
     assert any("the first 1 of 2 pairs" in note for note in notes)
     assert any("the first 1 of 2 particles" in note for note in notes)
@@ -223,7 +230,15 @@ def test_figures_of_an_earlier_campaign_file_are_removed(table, tmp_path) -> Non
     make_figures(few, tmp_path)
     entries, _ = make_figures(few.isel(particle=[1]), tmp_path)
     left = {path.stem for path in tmp_path.iterdir()} - {"figures"}
-    assert left == {entry["name"] for entry in entries} == {"matrix-dark-0.55um", "products-dark"}
+    assert (
+        left
+        == {entry["name"] for entry in entries}
+        == {
+            "matrix-dark-0.55um",
+            "products-dark",
+            "audit-map",
+        }
+    )
 
 
 def test_signed_map_is_centred_on_zero(table) -> None:
@@ -272,3 +287,61 @@ def test_nothing_solved_is_an_error_with_a_name(table) -> None:
     ):
         with pytest.raises(ValueError, match="clear"):
             draw()
+
+
+def test_map_over_wavelength_needs_three_and_the_same_radii() -> None:
+    table = mie_table(
+        np.geomspace(0.05, 0.3, 8), (0.4, 0.5, 0.6), np.array([0.0, 90.0, 180.0]), {"a": 1.4 + 0j}
+    )
+    with style():
+        picture = size_wavelength_map(table, 0)
+        low = float(table["extinction_efficiency"].min())
+        assert f"extinction efficiency {low:.3g} to" in picture.alt
+        with pytest.raises(ValueError, match="needs 3"):
+            size_wavelength_map(table.isel(wavelength=[0, 1]), 0)
+        moved = table.copy(deep=True)
+        moved["radius_um"].values[1] *= 2.0
+        with pytest.raises(ValueError, match="same radii"):
+            size_wavelength_map(moved, 0)
+
+
+def test_audit_map_marks_what_is_wider_than_asked(table) -> None:
+    wide = table.copy(deep=True)
+    wide["scattering_matrix_ratio_error"].values[:] = 0.001
+    wide["scattering_matrix_ratio_error"].values[1, 0, 12:] = 0.05
+    wide["status"].values[0, 0, 3] = 3
+    with style():
+        picture = audit_map(wide, (0.02, 0.01))
+        assert "4 cells are wider" in picture.alt and "Dots: wider than asked" in picture.caption
+        dots = [line for line in picture.figure.axes[0].lines if line.get_marker() == "."]
+        assert sorted(dots[0].get_xdata()) == [12, 13, 14, 15]
+        assert set(dots[0].get_ydata()) == {1}
+        crosses = [line for line in picture.figure.axes[0].lines if line.get_marker() == "x"]
+        assert crosses[0].get_xdata().tolist() == [3]
+        assert "Dots" not in audit_map(wide, None).caption
+    wide["status"].values[:] = 0
+    with pytest.raises(ValueError, match="no case is solved"):
+        audit_map(wide, None)
+
+
+def test_pictures_of_populations_show_their_numbers(drawn) -> None:
+    folder, bulk, *_ = drawn
+    with open(folder / "lidar.csv", newline="") as stream:
+        _, *rows = list(csv.reader(stream))
+    assert [row[0] for row in rows] == ["haze", "soot"]
+    for i, row in enumerate(rows):
+        assert float(row[2]) == pytest.approx(float(bulk["lidar_ratio"][i, 0]), rel=1e-4)
+        assert float(row[3]) == pytest.approx(float(bulk["lidar_ratio_error"][i, 0]), rel=1e-4)
+    alone = bulk.isel(population=[0])
+    with style():
+        with pytest.raises(ValueError, match="fewer than two"):
+            populations_matrix(alone, 0)
+        picture = polar_intensity(alone, 0)
+        (curve,) = [line for line in picture.figure.axes[0].lines if len(line.get_xdata()) > 2]
+        # Both halves, mirror images.
+        radius = np.asarray(curve.get_ydata())
+        np.testing.assert_array_equal(radius, radius[::-1])
+        missing = bulk.copy(deep=True)
+        missing["lidar_ratio"] = np.nan * missing["lidar_ratio"]
+        with pytest.raises(ValueError, match="180"):
+            lidar_scatter(missing)

@@ -84,7 +84,7 @@ def test_the_page_is_well_formed_and_accessible(page) -> None:
     parsed = Page(page[0])
     assert parsed.all("html")[0]["lang"] == "en"
     images = parsed.all("img")
-    assert len(images) == 5
+    assert len(images) == 6
     assert all(len(image["alt"]) > 60 for image in images)
     identifiers = [a["id"] for _, a in parsed.tags if "id" in a]
     assert len(identifiers) == len(set(identifiers))

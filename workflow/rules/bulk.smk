@@ -1,4 +1,4 @@
-# Populations: their averages over sizes and particles.
+# Populations: their averages over sizes and particles, and what others take from them.
 
 
 rule make_bulk:
@@ -11,3 +11,16 @@ rule make_bulk:
     # Code 1 says that some averages are flagged, which is a finding and no failure.
     shell:
         "{SCATTERLOOM} bulk {CAMPAIGN} > {log} 2>&1 || [ $? -eq 1 ]"
+
+
+rule make_exchange:
+    input:
+        "table.json",
+        "bulk.zarr/commit.json",
+    output:
+        "exchange/exchange.json",
+    log:
+        "state/logs/exchange.log",
+    # Code 1 says that some averages are missing or flagged, which is a finding and no failure.
+    shell:
+        "{SCATTERLOOM} exchange {CAMPAIGN} > {log} 2>&1 || [ $? -eq 1 ]"

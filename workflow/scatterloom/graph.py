@@ -16,6 +16,7 @@ from pathlib import Path
 from typing import Any
 
 from scatterloom import campaign as campaigns
+from scatterloom.bulk.coefficients import FEWEST_ANGLES
 from scatterloom.campaign.effort import NUMERICS_REVISION
 from scatterloom.campaign.expand import Grid, expand
 from scatterloom.campaign.plan import Job, plan
@@ -89,6 +90,13 @@ class Graph:
     def has_populations(self) -> bool:
         """Whether there is a bulk table to make."""
         return bool(self.campaign.model.populations)
+
+    @property
+    def has_exchange(self) -> bool:
+        """Whether populations can be expanded: scattering angles over the whole sphere."""
+        angles = self.campaign.angles_deg
+        whole = len(angles) >= FEWEST_ANGLES and angles[0] == 0.0 and angles[-1] == 180.0
+        return self.has_populations and bool(whole)
 
     @property
     def cases_of(self) -> dict[str, int]:

@@ -6,7 +6,11 @@ cross section (Hansen & Travis 1974, section 2). Half widths are bounds that add
 - errors of the table count as fully correlated over sizes, particles and elements
   (they come from the same lattices and do tend to share their sign), so they add
   linearly and never average out;
-- the quadrature error is the change of the result when every other size is left out;
+- the quadrature error is the larger change of the result when the even, or the odd, sizes
+  are left out (one change alone may happen to be small). No element of a matrix has less
+  than half the largest such error of any element at its angle, and the asymmetry parameter
+  no less than its spread over sizes times half the relative one of the scattering cross
+  section: a change that crosses zero somewhere is not small by merit;
 - particles smaller or larger than the table are left out of the value. Their share
   of extinction is estimated from the ends of the table and its effect added in full.
   This is an estimate, not a bound: an average that needs it should not be trusted
@@ -22,8 +26,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterloom.bulk.distribution import Distribution
 from scatterloom.bulk.weights import coarse_nodes, size_weights
+from scatterloom.campaign.distribution import Distribution
 
 FloatArray = NDArray[np.float64]
 
@@ -82,7 +86,7 @@ class Average:
     share_below, share_above : float
         Estimated share of the extinction by particles below and above the table's sizes.
     quadrature_error : float
-        Relative change of the extinction when every other size is left out.
+        Largest relative change of the extinction when every other size is left out.
     """
 
     extinction_um2: float
@@ -106,7 +110,8 @@ class Average:
 
 @dataclass(frozen=True)
 class _Part:
-    """One kind of particle with its quadrature weights [um2], on all and on every other size."""
+    """One kind of particle with its quadrature weights [um2] on all sizes, (n_size,), and on
+    the two halves of them, (2, n_size)."""
 
     optics: Optics
     weight: FloatArray
@@ -116,16 +121,18 @@ class _Part:
 
 
 def population_average(
-    mixture: Sequence[tuple[float, Optics]], distribution: Distribution
+    mixture: Sequence[tuple[float, Optics]],
+    distribution: Distribution | Sequence[Distribution],
 ) -> Average:
-    """Average over a size distribution that all kinds of particles of a mixture share.
+    """Average over the size distributions of a mixture.
 
     Parameters
     ----------
     mixture : sequence of (float, Optics)
         Number of particles of each kind (any scale) and their optics, on common angles.
-    distribution : Distribution
-        Size distribution by number, of the radius of the sphere of equal volume.
+    distribution : Distribution or sequence of Distribution
+        Size distribution by number, of the radius of the sphere of equal volume: one for
+        all kinds, or one for each.
 
     Returns
     -------
@@ -140,7 +147,11 @@ def population_average(
     total = math.fsum(number for number, _ in mixture)
     if not total > 0:
         raise ValueError("the numbers of particles must sum to something above zero")
-    parts = [_part(number / total, optics, distribution) for number, optics in mixture]
+    each = distribution if isinstance(distribution, Sequence) else [distribution] * len(mixture)
+    parts = [
+        _part(number / total, optics, own)
+        for (number, optics), own in zip(mixture, each, strict=True)
+    ]
 
     ext, ext_error, ext_coarse = _cross_section(
         parts, lambda o: o.extinction, lambda o: o.extinction_error
@@ -166,7 +177,7 @@ def population_average(
     by_absorption = (ab_error + (1.0 - albedo) * ext_error) / ext
     albedo_error = (
         min(by_scattering, by_absorption)
-        + abs(albedo - sca_coarse / ext_coarse)
+        + _largest(albedo - sca_coarse / ext_coarse)
         + 2.0 * share * max(1.0 - albedo, *(abs(end - albedo) for end in end_albedo))
     )
     asymmetry, asymmetry_error = _by_scattering(
@@ -179,11 +190,11 @@ def population_average(
     end_absorption = max(1.0 - end for end in end_albedo)
     return Average(
         extinction_um2=ext,
-        extinction_um2_error=ext_error + abs(ext - ext_coarse) + missing,
+        extinction_um2_error=ext_error + _largest(ext - ext_coarse) + missing,
         scattering_um2=sca,
-        scattering_um2_error=sca_error + abs(sca - sca_coarse) + missing * max(end_albedo),
+        scattering_um2_error=sca_error + _largest(sca - sca_coarse) + missing * max(end_albedo),
         absorption_um2=ab,
-        absorption_um2_error=ab_error + abs(ab - ab_coarse) + missing * end_absorption,
+        absorption_um2_error=ab_error + _largest(ab - ab_coarse) + missing * end_absorption,
         albedo=albedo,
         albedo_error=albedo_error,
         asymmetry=float(asymmetry),
@@ -194,7 +205,7 @@ def population_average(
         ratio_error=ratio_error,
         share_below=below / (ext + missing),
         share_above=above / (ext + missing),
-        quadrature_error=abs(ext - ext_coarse) / ext,
+        quadrature_error=_largest(ext - ext_coarse) / ext,
     )
 
 
@@ -205,11 +216,18 @@ def _part(number: float, optics: Optics, distribution: Distribution) -> _Part:
     scale = math.pi * number
 
     def weights(nodes: FloatArray) -> FloatArray:
-        return scale * size_weights(nodes, distribution.density, distribution.log_width, power=2)
+        return scale * size_weights(
+            nodes,
+            distribution.density,
+            distribution.log_width,
+            power=2,
+            breaks_um=distribution.breaks_um,
+        )
 
-    keep = coarse_nodes(radius.size)
-    coarse = np.zeros(radius.size)
-    coarse[keep] = weights(radius[keep])
+    coarse = np.zeros((2, radius.size))
+    for half, row in enumerate(coarse):
+        keep = coarse_nodes(radius.size, half)
+        row[keep] = weights(radius[keep])
     # Below the table an efficiency falls at least like r (absorption by small particles);
     # above it extinction stays near its last value or is that of large particles.
     first, last = float(radius[0]), float(radius[-1])
@@ -224,36 +242,52 @@ def _part(number: float, optics: Optics, distribution: Distribution) -> _Part:
     )
 
 
+def _largest(change: FloatArray) -> float:
+    return float(np.abs(change).max())
+
+
 def _cross_section(
     parts: Sequence[_Part],
     efficiency: Callable[[Optics], FloatArray],
     half_width: Callable[[Optics], FloatArray],
-) -> tuple[float, float, float]:
-    """Mean cross section, the half width from the table, and the value on every other size."""
+) -> tuple[float, float, FloatArray]:
+    """Mean cross section, the half width from the table, and the values on half of the sizes."""
     value = math.fsum(float(p.weight @ efficiency(p.optics)) for p in parts)
     error = math.fsum(float(np.abs(p.weight) @ half_width(p.optics)) for p in parts)
-    coarse = math.fsum(float(p.coarse @ efficiency(p.optics)) for p in parts)
+    coarse = np.sum([p.coarse @ efficiency(p.optics) for p in parts], axis=0)
     return value, error, coarse
 
 
 def _by_scattering(
     parts: Sequence[_Part],
     scattering: float,
-    scattering_coarse: float,
+    scattering_coarse: FloatArray,
     share: float,
     quantity: Callable[[Optics], FloatArray],
     half_width: Callable[[Optics], FloatArray],
 ) -> tuple[FloatArray, FloatArray]:
     """Mean of a quantity weighted by scattering cross section, and its half width."""
 
-    def mean(weight: Callable[[_Part], FloatArray], norm: float) -> FloatArray:
+    def mean(weights: Sequence[FloatArray], norm: float) -> FloatArray:
         total = [
-            np.tensordot(weight(p) * p.optics.scattering, quantity(p.optics), axes=1) for p in parts
+            np.tensordot(weight * p.optics.scattering, quantity(p.optics), axes=1)
+            for p, weight in zip(parts, weights, strict=True)
         ]
         return np.asarray(sum(total) / norm)
 
-    value = mean(lambda p: p.weight, scattering)
-    error = np.abs(value - mean(lambda p: p.coarse, scattering_coarse))
+    value = mean([p.weight for p in parts], scattering)
+    error = np.zeros_like(value)
+    for half, norm in enumerate(scattering_coarse):
+        weights = [p.coarse[half] for p in parts]
+        error = np.maximum(error, np.abs(value - mean(weights, float(norm))))
+    if value.ndim:
+        occurs = np.any([np.any(quantity(p.optics) != 0.0, axis=0) for p in parts], axis=0)
+        least = 0.5 * error.max(axis=(-2, -1), keepdims=True)
+    else:
+        occurs = np.array(True)
+        spread = max(float(np.abs(quantity(p.optics) - value).max()) for p in parts)
+        least = np.array(0.5 * spread * _largest(1.0 - scattering_coarse / scattering))
+    error = np.where(occurs, np.maximum(error, least), error)
     for p in parts:
         weight, q = np.abs(p.weight) / scattering, quantity(p.optics)
         # d(N/D) = [q_i error + (q - mean) error of the cross section] / D at each size.
@@ -278,7 +312,7 @@ def _ratios(
     parts: Sequence[_Part],
     matrix: FloatArray,
     scattering: float,
-    scattering_coarse: float,
+    scattering_coarse: FloatArray,
     share: float,
 ) -> tuple[FloatArray, FloatArray]:
     """Elements divided by F11, and their half widths.

@@ -1,50 +1,30 @@
-"""From a table of particles to the bulk properties of a campaign's populations."""
+"""From a table of particles to the bulk properties of a campaign's populations.
+
+The table is opened lazily (xarray over dask); matrices are loaded for one block of angles
+at a time, so that memory does not grow with the table.
+"""
 
 from __future__ import annotations
 
-import math
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
 from scatterloom.bulk import schema
 from scatterloom.bulk.average import FEWEST_SIZES, Average, Optics, population_average
-from scatterloom.bulk.distribution import Distribution, from_spec
+from scatterloom.bulk.population import Population
+from scatterloom.bulk.quantities import quantities, spectral
 from scatterloom.errors import BadInput
-from scatterloom.scattering.elements import circular_depolarization, linear_depolarization
 from scatterloom.scattering.record import FAILED, SOLVED, SOLVED_WITH_WARNING, has_result
 from scatterloom.store.schema import Variable
 
 if TYPE_CHECKING:
     import xarray
 
-
-@dataclass(frozen=True)
-class Population:
-    """A named mixture of particles that share one size distribution.
-
-    Attributes
-    ----------
-    name : str
-    numbers : mapping of str to float
-        Number of particles by name, on any scale.
-    distribution : Distribution
-        By number, of the radius of the sphere of equal volume.
-    """
-
-    name: str
-    numbers: Mapping[str, float]
-    distribution: Distribution
-
-
-def populations_of(model: Any) -> tuple[Population, ...]:
-    """Populations of a campaign model, in its order (`CampaignModel.populations`)."""
-    return tuple(
-        Population(p.name, dict(p.particles), from_spec(p.size.model_dump()))
-        for p in model.populations or ()
-    )
+BLOCK_BYTES = 256 * 2**20
+"""Matrices and half widths of the table held in memory at a time."""
 
 
 def build(table: xarray.Dataset, populations: Sequence[Population]) -> dict[str, np.ndarray]:
@@ -88,17 +68,24 @@ def build(table: xarray.Dataset, populations: Sequence[Population]) -> dict[str,
     for name in ("wavelength", "angle", "row", "col"):
         out[name] = np.asarray(table[name].values)
     for i, population in enumerate(populations):
-        total = math.fsum(population.numbers.values())
+        shares = population.number_fractions()
         for j, name in enumerate(particles):
-            out["number_fraction"][i, j] = population.numbers.get(name, 0.0) / total
-        out["effective_radius"][i] = population.distribution.effective_radius_um
-        out["effective_variance"][i] = population.distribution.effective_variance
+            out["number_fraction"][i, j] = shares.get(name, 0.0)
+        out["effective_radius"][i] = population.effective_radius_um
+        out["effective_variance"][i] = population.effective_variance
+        out["mean_area"][i] = population.area_um2
+        out["mean_volume"][i] = population.volume_um3
+        out["mass_density"][i] = population.density_g_cm3
 
     for w in range(extent["wavelength"]):
         needed = {name for population in populations for name in population.numbers}
-        optics = {n: _optics(table, particles.index(n), w) for n in sorted(needed)}
+        solved = {n: _solved(table, particles.index(n), w) for n in sorted(needed)}
         for i, population in enumerate(populations):
-            _fill(out, (i, w), population, optics)
+            _fill(out, (i, w), population, solved)
+    for i, w in np.ndindex(len(populations), extent["wavelength"] - 1):
+        for name, (value, half_width) in spectral(out, i, w, w + 1).items():
+            out[name][i, w] = value
+            out[f"{name}_error"][i, w] = half_width
     return out
 
 
@@ -109,99 +96,119 @@ def _empty(variable: Variable, shape: tuple[int, ...]) -> np.ndarray:
 
 @dataclass(frozen=True)
 class _Solved:
-    """The solved sizes of a particle at a wavelength, and how the others fared."""
+    """The solved sizes of a particle at a wavelength, and how the others fared.
 
-    optics: Optics
+    Matrices stay in the table until a block of angles is asked for.
+    """
+
+    scalars: Mapping[str, np.ndarray]
+    part: xarray.Dataset
     missing: int
     warned: int
 
+    @property
+    def count(self) -> int:
+        return len(self.scalars["radius_um"])
 
-def _optics(table: xarray.Dataset, particle: int, wavelength: int) -> _Solved:
+    def optics(self, angles: slice) -> Optics:
+        """Load the matrices at some of the angles."""
+        block = self.part[list(_MATRICES.values())].isel(angle=angles).load()
+        matrices = {
+            field: np.asarray(block[name].values, dtype=np.float64)
+            for field, name in _MATRICES.items()
+        }
+        return Optics(**self.scalars, **matrices)
+
+
+_MATRICES = {
+    "matrix": "scattering_matrix",
+    "matrix_error": "scattering_matrix_error",
+    "ratio_error": "scattering_matrix_ratio_error",
+}
+_SCALARS = {
+    "radius_um": "radius_um",
+    "extinction": "extinction_efficiency",
+    "extinction_error": "extinction_efficiency_error",
+    "scattering": "scattering_efficiency",
+    "scattering_error": "scattering_efficiency_error",
+    "absorption": "absorption_efficiency",
+    "absorption_error": "absorption_efficiency_error",
+    "asymmetry": "asymmetry_parameter",
+    "asymmetry_error": "asymmetry_parameter_error",
+}
+
+
+def _solved(table: xarray.Dataset, particle: int, wavelength: int) -> _Solved:
     part = table.isel(particle=particle, wavelength=wavelength)
     status = part["status"].values
     solved = has_result(status)
-    part = part.isel(size=np.flatnonzero(solved)).load()
-
-    def column(name: str) -> np.ndarray:
-        return np.asarray(part[name].values, dtype=np.float64)
-
-    fields = {
-        field: column(name + suffix)
-        for field, name, suffix in (
-            ("extinction", "extinction_efficiency", ""),
-            ("extinction_error", "extinction_efficiency", "_error"),
-            ("scattering", "scattering_efficiency", ""),
-            ("scattering_error", "scattering_efficiency", "_error"),
-            ("absorption", "absorption_efficiency", ""),
-            ("absorption_error", "absorption_efficiency", "_error"),
-            ("asymmetry", "asymmetry_parameter", ""),
-            ("asymmetry_error", "asymmetry_parameter", "_error"),
-            ("matrix", "scattering_matrix", ""),
-            ("matrix_error", "scattering_matrix", "_error"),
-            ("ratio_error", "scattering_matrix", "_ratio_error"),
-        )
+    part = part.isel(size=np.flatnonzero(solved))
+    scalars = {
+        field: np.asarray(part[name].values, dtype=np.float64) for field, name in _SCALARS.items()
     }
-    return _Solved(
-        Optics(radius_um=column("radius_um"), **fields),
-        int((~solved).sum()),
-        int((status == SOLVED_WITH_WARNING).sum()),
-    )
+    return _Solved(scalars, part, int((~solved).sum()), int((status == SOLVED_WITH_WARNING).sum()))
+
+
+def angle_blocks(sizes: int, angles: int, particles: int) -> list[slice]:
+    """Cut the angles so that the matrices of all particles at a block fit `BLOCK_BYTES`."""
+    per_angle = 3 * 16 * 8 * max(1, sizes) * max(1, particles)
+    step = max(1, min(angles, BLOCK_BYTES // per_angle))
+    return [slice(start, min(start + step, angles)) for start in range(0, angles, step)]
+
+
+def _average(population: Population, solved: Mapping[str, _Solved], angles: int) -> Average:
+    """Average block by block of angles; only one block of the table is in memory."""
+    names = list(population.numbers)
+    largest = max(solved[name].count for name in names)
+    distributions = [population.distribution_of(name) for name in names]
+    averages = [
+        population_average(
+            [(population.numbers[name], solved[name].optics(block)) for name in names],
+            distributions,
+        )
+        for block in angle_blocks(largest, angles, len(names))
+    ]
+    joined: dict[str, Any] = {
+        name: np.concatenate([getattr(average, name) for average in averages])
+        for name in ("matrix", "matrix_error", "ratio", "ratio_error")
+    }
+    return replace(averages[0], **joined)
 
 
 def _fill(
     out: dict[str, np.ndarray],
     cell: tuple[int, int],
     population: Population,
-    optics: Mapping[str, _Solved],
+    solved: Mapping[str, _Solved],
 ) -> None:
-    parts = [(number, optics[name]) for name, number in population.numbers.items()]
-    count = min(part.optics.radius_um.size for _, part in parts)
+    used = {name: solved[name] for name in population.numbers}
+    count = min(part.count for part in used.values())
     out["size_count"][cell] = count
     flags = 0
-    if any(part.missing for _, part in parts):
+    if any(part.missing for part in used.values()):
         flags |= schema.FLAGS["missing_sizes"]
-    if any(part.warned for _, part in parts):
+    if any(part.warned for part in used.values()):
         flags |= schema.FLAGS["cases_with_warning"]
     if count < FEWEST_SIZES:
         out["warning_flags"][cell] = flags | schema.FLAGS["too_few_sizes"]
         out["status"][cell] = FAILED
         return
-    average = population_average(
-        [(number, part.optics) for number, part in parts], population.distribution
-    )
-    if average.share_below + average.share_above > schema.TRUNCATION_WARNING:
-        flags |= schema.FLAGS["truncated_by_table"]
-    if average.quadrature_error > schema.QUADRATURE_WARNING:
-        flags |= schema.FLAGS["coarse_size_grid"]
-    out["warning_flags"][cell] = flags
-    out["status"][cell] = SOLVED_WITH_WARNING if flags else SOLVED
-    values = _quantities(average, out["angle"])
-    for name, (value, half_width) in values.items():
-        out[name][cell] = value
-        out[f"{name}_error"][cell] = half_width
+    average = _average(population, used, out["angle"].size)
+    outside = average.share_below + average.share_above
     out["extinction_share_below"][cell] = average.share_below
     out["extinction_share_above"][cell] = average.share_above
     out["quadrature_error"][cell] = average.quadrature_error
-
-
-def _quantities(average: Average, angles_deg: np.ndarray) -> dict[str, tuple[Any, Any]]:
-    a = average
-    values: dict[str, tuple[Any, Any]] = {
-        "scattering_matrix": (a.matrix, a.matrix_error),
-        "extinction_cross_section": (a.extinction_um2, a.extinction_um2_error),
-        "scattering_cross_section": (a.scattering_um2, a.scattering_um2_error),
-        "absorption_cross_section": (a.absorption_um2, a.absorption_um2_error),
-        "single_scattering_albedo": (a.albedo, a.albedo_error),
-        "asymmetry_parameter": (a.asymmetry, a.asymmetry_error),
-        "scattering_matrix_ratio": (a.ratio, a.ratio_error),
-        "degree_of_linear_polarization": (-a.ratio[:, 0, 1], a.ratio_error[:, 0, 1]),
-    }
-    if angles_deg[-1] == 180.0:
-        f11, f11_error = a.matrix[-1, 0, 0], a.matrix_error[-1, 0, 0]
-        r, r_error = a.ratio[-1], a.ratio_error[-1]
-        lidar_ratio = 4.0 * math.pi / (a.albedo * f11)
-        relative = a.albedo_error / a.albedo + f11_error / f11
-        values["lidar_ratio"] = (lidar_ratio, lidar_ratio * relative)
-        values["linear_depolarization_ratio"] = linear_depolarization(r[1, 1], r_error[1, 1])
-        values["circular_depolarization_ratio"] = circular_depolarization(r[3, 3], r_error[3, 3])
-    return values
+    if outside > schema.TRUNCATION_WARNING:
+        flags |= schema.FLAGS["truncated_by_table"]
+    if average.quadrature_error > schema.QUADRATURE_WARNING:
+        flags |= schema.FLAGS["coarse_size_grid"]
+    # A share that is not a number must not pass either.
+    if not outside <= schema.TRUNCATION_REFUSED:
+        out["warning_flags"][cell] = flags | schema.FLAGS["not_covered"]
+        out["status"][cell] = FAILED
+        return
+    out["warning_flags"][cell] = flags
+    out["status"][cell] = SOLVED_WITH_WARNING if flags else SOLVED
+    for name, (value, half_width) in quantities(average, population, out["angle"]).items():
+        out[name][cell] = value
+        out[f"{name}_error"][cell] = half_width

@@ -13,7 +13,7 @@ import numpy as np
 import zarr
 
 from scatterloom.bulk import schema
-from scatterloom.bulk.build import Population
+from scatterloom.bulk.population import Population
 from scatterloom.errors import IntegrityError
 from scatterloom.store.atomic import sweep_abandoned
 from scatterloom.store.commit import COMMIT, commit_record, publish, staging, verify_folder

@@ -9,13 +9,19 @@ import numpy as np
 
 from scatterloom.bulk.schema import FLAGS
 
+NOTHING = "–"
 SHOWN = (
     ("extinction_cross_section", "extinction (µm²)"),
+    ("extinction_per_volume", "extinction per volume (1/µm)"),
+    ("extinction_per_mass", "extinction per mass (m²/g)"),
     ("single_scattering_albedo", "single-scattering albedo"),
     ("asymmetry_parameter", "asymmetry parameter"),
     ("lidar_ratio", "lidar ratio (sr)"),
     ("linear_depolarization_ratio", "linear depolarization"),
     ("circular_depolarization_ratio", "circular depolarization"),
+    ("backscatter_per_volume", "backscatter per volume (1/µm sr)"),
+    ("extinction_angstrom_exponent", "Ångström exponent to next"),
+    ("colour_ratio", "colour ratio to next"),
 )
 
 
@@ -28,7 +34,7 @@ def with_half_width(value: float, half_width: float) -> str:
         NaN is written as a dash.
     """
     if not np.isfinite(value):
-        return "–"
+        return NOTHING
     if not (np.isfinite(half_width) and half_width > 0):
         return f"{value:.5g}"
     # Two digits of the half width, but never more than six digits of the value.
@@ -83,6 +89,7 @@ def listing(columns: Mapping[str, Any]) -> list[str]:
     lines = []
     for row in rows(columns):
         lines.append(f"{row['population']} at {row['wavelength_um']} µm")
-        lines += [f"  {label:<26}{text}" for label, text in row["values"].items()]
+        shown = {label: text for label, text in row["values"].items() if text != NOTHING}
+        lines += [f"  {label:<34}{text}" for label, text in shown.items()]
         lines += [f"  flagged: {warning}" for warning in row["warnings"]]
     return lines

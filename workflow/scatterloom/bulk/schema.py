@@ -15,21 +15,98 @@ FLAGS = {
     "cases_with_warning": 4,
     "truncated_by_table": 8,
     "coarse_size_grid": 16,
+    "not_covered": 32,
 }
 """Bits of `warning_flags`: what was wrong with the sizes that an average had to use."""
 
 TRUNCATION_WARNING = 0.01
 """Share of extinction outside the table's sizes above which an average is flagged."""
 
+TRUNCATION_REFUSED = 0.25
+"""Share of extinction outside the table's sizes above which no average is given."""
+
 QUADRATURE_WARNING = 0.01
 """Relative change of extinction on every other size above which an average is flagged."""
 
 ERROR_MODEL = (
     "Half widths are sums of bounds: errors of the table taken as fully correlated over sizes, "
-    "particles and matrix elements (they add linearly and do not average out), the change of the "
-    "result when every other size is left out, and the estimated effect of the particles outside "
-    "the table's sizes, which the values themselves leave out."
+    "particles and matrix elements (they add linearly and do not average out), the larger change "
+    "of the result when every other size is left out, and the estimated effect of the particles "
+    "outside the table's sizes, which the values themselves leave out. Products, quotients and "
+    "comparisons of two wavelengths add relative half widths linearly."
 )
+
+
+def _sections(kind: str) -> tuple[Variable, ...]:
+    return (
+        Variable(
+            f"{kind}_cross_section",
+            GRID,
+            "f8",
+            f"mean {kind} cross section of a particle",
+            "um2",
+            error=True,
+        ),
+        Variable(
+            f"{kind}_efficiency",
+            GRID,
+            "f8",
+            f"{kind} cross section of the population over its geometric cross section",
+            comment="geometric cross section of the spheres of equal volume, all sizes",
+            error=True,
+        ),
+        Variable(
+            f"{kind}_per_volume",
+            GRID,
+            "f8",
+            f"{kind} coefficient per volume concentration of particles",
+            "um-1",
+            comment="times a concentration in um3 cm-3 it gives a coefficient in Mm-1",
+            error=True,
+        ),
+        Variable(
+            f"{kind}_per_mass",
+            GRID,
+            "f8",
+            f"{kind} coefficient per mass concentration of particles",
+            "m2 g-1",
+            comment="missing unless the density of every particle is stated",
+            error=True,
+        ),
+    )
+
+
+def _backscatter() -> tuple[Variable, ...]:
+    return (
+        Variable(
+            "backscatter_cross_section",
+            GRID,
+            "f8",
+            "mean differential scattering cross section of a particle at 180 degrees",
+            "um2 sr-1",
+            comment="scattering cross section times element 11 at 180 degrees, over 4 pi",
+            error=True,
+        ),
+        Variable(
+            "backscatter_per_volume",
+            GRID,
+            "f8",
+            "backscatter coefficient per volume concentration of particles",
+            "um-1 sr-1",
+            comment="times a concentration in um3 cm-3 it gives a coefficient in Mm-1 sr-1",
+            error=True,
+        ),
+        Variable(
+            "backscatter_per_mass",
+            GRID,
+            "f8",
+            "backscatter coefficient per mass concentration of particles",
+            "m2 g-1 sr-1",
+            comment="missing unless the density of every particle is stated",
+            error=True,
+        ),
+    )
+
 
 _VALUES = (
     Variable(
@@ -49,30 +126,8 @@ _VALUES = (
         "scales all elements alike does not change it",
         error=True,
     ),
-    Variable(
-        "extinction_cross_section",
-        GRID,
-        "f8",
-        "mean extinction cross section of a particle",
-        "um2",
-        error=True,
-    ),
-    Variable(
-        "scattering_cross_section",
-        GRID,
-        "f8",
-        "mean scattering cross section of a particle",
-        "um2",
-        error=True,
-    ),
-    Variable(
-        "absorption_cross_section",
-        GRID,
-        "f8",
-        "mean absorption cross section of a particle",
-        "um2",
-        error=True,
-    ),
+    *(v for kind in ("extinction", "scattering", "absorption") for v in _sections(kind)),
+    *_backscatter(),
     Variable(
         "single_scattering_albedo",
         GRID,
@@ -114,6 +169,39 @@ _VALUES = (
         comment="-F12/F11, positive across the scattering plane",
         error=True,
     ),
+    Variable(
+        "extinction_angstrom_exponent",
+        GRID,
+        "f8",
+        "Angstrom exponent of extinction between this and the next wavelength",
+        comment="-ln(C2/C1)/ln(w2/w1); missing at the last wavelength",
+        error=True,
+    ),
+    Variable(
+        "backscatter_angstrom_exponent",
+        GRID,
+        "f8",
+        "Angstrom exponent of backscattering between this and the next wavelength",
+        comment="-ln(C2/C1)/ln(w2/w1); missing at the last wavelength",
+        error=True,
+    ),
+    Variable(
+        "colour_ratio",
+        GRID,
+        "f8",
+        "backscattering at the next wavelength over that at this one",
+        comment="longer over shorter wavelength; missing at the last wavelength",
+        error=True,
+    ),
+    Variable(
+        "depolarization_spectral_ratio",
+        GRID,
+        "f8",
+        "linear depolarization ratio at the next wavelength over that at this one",
+        comment="longer over shorter wavelength; missing at the last wavelength and where "
+        "depolarization vanishes within its half width",
+        error=True,
+    ),
 )
 
 _COORDINATES = (
@@ -149,6 +237,23 @@ _OTHERS = (
         ("population",),
         "f8",
         "effective variance of the whole size distribution",
+    ),
+    Variable(
+        "mean_area",
+        ("population",),
+        "f8",
+        "mean geometric cross section of a particle",
+        "um2",
+        comment="of the sphere of equal volume, whole size distribution",
+    ),
+    Variable("mean_volume", ("population",), "f8", "mean volume of a particle", "um3"),
+    Variable(
+        "mass_density",
+        ("population",),
+        "f8",
+        "mass over volume of all particles",
+        "g cm-3",
+        comment="missing unless the density of every particle is stated",
     ),
     Variable(
         "extinction_share_below",

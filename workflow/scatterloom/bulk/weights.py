@@ -9,7 +9,7 @@ and f need be no steeper than an efficiency.
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -25,6 +25,7 @@ def size_weights(
     density: Callable[[FloatArray], FloatArray],
     log_width: float,
     power: float = 0.0,
+    breaks_um: Sequence[float] = (),
 ) -> FloatArray:
     """Weights of the nodes of a size grid.
 
@@ -38,6 +39,8 @@ def size_weights(
         Scale on which the density changes with ln r.
     power : float
         The power p of radius in the integral.
+    breaks_um : sequence of float
+        Radii at which the density jumps or has a kink [um].
 
     Returns
     -------
@@ -53,16 +56,18 @@ def size_weights(
     u = np.log(np.asarray(radius_um, dtype=np.float64))
     if u.ndim != 1 or u.size < 2 or np.any(np.diff(u) <= 0):
         raise ValueError("radii must be two or more and increase")
+    stops = np.log(np.asarray(breaks_um, dtype=np.float64))
     points = min(4, u.size)
     weights = np.zeros(u.size)
     node, weight = _GAUSS
     for interval in range(u.size - 1):
         left, right = u[interval], u[interval + 1]
         panels = max(1, math.ceil(_PANELS_PER_WIDTH * (right - left) / log_width))
-        edges = np.linspace(left, right, panels + 1)
-        half = 0.5 * (edges[1] - edges[0])
+        inner = stops[(stops > left) & (stops < right)]
+        edges = np.unique(np.concatenate([np.linspace(left, right, panels + 1), inner]))
+        half = 0.5 * np.diff(edges)[:, None]
         at = (edges[:-1, None] + half * (1.0 + node)).ravel()
-        mass = half * np.tile(weight, panels) * density(np.exp(at)) * np.exp(power * at)
+        mass = (half * weight).ravel() * density(np.exp(at)) * np.exp(power * at)
         first = min(max(interval - (points - 2) // 2, 0), u.size - points)
         near = u[first : first + points]
         for i in range(points):
@@ -72,6 +77,6 @@ def size_weights(
     return weights
 
 
-def coarse_nodes(count: int) -> NDArray[np.intp]:
-    """Every other node of a grid, both ends kept, for an estimate of the quadrature error."""
-    return np.unique(np.append(np.arange(0, count, 2), count - 1))
+def coarse_nodes(count: int, half: int = 0) -> NDArray[np.intp]:
+    """The even (half 0) or odd (half 1) nodes of a grid, both ends kept."""
+    return np.unique(np.concatenate([[0], np.arange(half, count, 2), [count - 1]]))

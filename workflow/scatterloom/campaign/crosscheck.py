@@ -11,7 +11,7 @@ from collections.abc import Iterator, Sequence
 from scatterloom.campaign.complaints import nearest
 from scatterloom.campaign.document import Document, KeyPath
 from scatterloom.campaign.grids import decimal, grid_values
-from scatterloom.campaign.model import Sizes
+from scatterloom.campaign.model import CampaignModel, Sizes
 from scatterloom.campaign.populations import Population
 from scatterloom.errors import Problem
 
@@ -112,7 +112,7 @@ def check_coverage(
     warnings = []
     for position, population in enumerate(populations):
         parts = [
-            (population.size.area_fraction(low, high), wavelength, low, high)
+            (population.area_fraction(low, high), wavelength, low, high)
             for wavelength, low, high in _radius_ranges(sizes, wavelengths_um, medium_index)
         ]
         fraction, wavelength, low, high = min(parts)
@@ -128,6 +128,22 @@ def check_coverage(
                 )
             )
     return warnings
+
+
+def check_densities(document: Document, model: CampaignModel) -> list[Problem]:
+    """Check that shares by mass have the density of every particle they name."""
+    problems = []
+    density = model.densities()
+    for position, population in enumerate(model.populations):
+        if population.shares_by != "mass":
+            continue
+        for name in population.particles:
+            if density.get(name, 1.0) is None:
+                path = ("populations", position, "particles", name)
+                message = f"shares by mass need the density of particle '{name}'"
+                hint = "give 'density_g_cm3' to the particle or to its material"
+                problems.append(document.problem(path, message, hint=hint, at_key=True))
+    return problems
 
 
 def _radius_ranges(

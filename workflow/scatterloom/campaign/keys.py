@@ -101,6 +101,8 @@ def expected(node: Node, plural: bool = False) -> str:
         return " or ".join(expected(option) for option in options.values())
     if "const" in node:
         return f"'{node['const']}'"
+    if "enum" in node:
+        return "one of " + ", ".join(f"'{word}'" for word in node["enum"])
     kind = node.get("type")
     if kind in ("number", "integer"):
         noun = {"number": "number", "integer": "whole number"}[kind]

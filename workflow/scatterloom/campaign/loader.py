@@ -18,6 +18,7 @@ from scatterloom.campaign.complaints import complaints
 from scatterloom.campaign.document import Document, read
 from scatterloom.campaign.grids import grid_values
 from scatterloom.campaign.model import CampaignModel
+from scatterloom.campaign.size_tables import read_size_tables, with_points
 from scatterloom.campaign.spectra import Spectrum
 from scatterloom.errors import BadInput, Problem
 
@@ -102,6 +103,8 @@ def load(path: str | Path) -> Campaign:
     problems += crosscheck.check_names(document)
     spectra, faults = optics.read_tables(document, Path(path).parent)
     problems += faults
+    size_tables, faults = read_size_tables(document, Path(path).parent)
+    problems += faults
     indices, faults = _indices(document, sections, spectra)
     problems += faults
     if {"particles", "wavelengths_um", "sizes"} <= sections.keys():
@@ -111,8 +114,11 @@ def load(path: str | Path) -> Campaign:
             len(sections["wavelengths_um"]),
             sections["sizes"],
         )
+    if model is not None and not problems:
+        problems += crosscheck.check_densities(document, model)
     if problems or model is None:
         raise BadInput(_in_order(problems, document))
+    model = with_points(model, size_tables)
     warnings = [
         *crosscheck.unused_materials(document),
         *crosscheck.doubtful_wavelengths(document, model.wavelengths_um),

@@ -18,6 +18,7 @@ from scatterloom.campaign.shapes import Shape
 Wavelength = Annotated[float, setting("One wavelength.", unit="um", ge=1e-3, le=1e6)]
 _N: dict[str, Any] = {"unit": "1", "ge": 0.01, "le": 10.0}
 _K: dict[str, Any] = {"unit": "1", "ge": 0.0, "le": 10.0}
+_DENSITY = "1 g/cm3 is 1000 kg/m3"
 THINNEST = 0.02
 """Smallest radius of a core, and smallest thickness of a coating, over the particle's radius."""
 _ABSORBS = "absorption is a positive k: the index is n + ik"
@@ -59,6 +60,9 @@ class Material(Section):
     )
     spectrum: list[SpectrumPoint] | None = setting(
         "The same as `table`, written out here.", None, min_length=1
+    )
+    density_g_cm3: float | None = setting(
+        "Density, for results per mass.", None, unit="g cm-3", ge=0.001, le=30.0, advice=_DENSITY
     )
 
     @model_validator(mode="after")
@@ -138,6 +142,15 @@ class Particle(Section):
     shape: Shape = setting("Shape of the particle; a core has the same shape.")
     coating: Coating | None = setting(
         "Coating around the core; sizes are those of the whole particle, coating included.", None
+    )
+
+    density_g_cm3: float | None = setting(
+        "Density of the particle, for results per mass; from those of its materials if missing.",
+        None,
+        unit="g cm-3",
+        ge=0.001,
+        le=30.0,
+        advice=_DENSITY,
     )
 
     @model_validator(mode="after")
@@ -291,6 +304,25 @@ class Solver(Section):
         return value
 
 
+class Exchange(Section):
+    """What the files for radiative transfer hold."""
+
+    streams: int = setting(
+        "Number of streams, an even number: the delta-M scaled series has as many terms.",
+        16,
+        unit="1",
+        ge=2,
+        le=1000,
+    )
+
+    @field_validator("streams")
+    @classmethod
+    def _check_streams(cls, value: int) -> int:
+        if value % 2:
+            raise wrong(f"{value} is odd", "give an even number of streams")
+        return value
+
+
 class Provenance(Section):
     """Who made the table and how it may be used; copied into its attributes (ACDD 1.3)."""
 
@@ -328,7 +360,23 @@ class CampaignModel(Section):
     accuracy: AccuracyGoal = setting("Accuracy asked; the defaults suit most uses.", AccuracyGoal())
     populations: list[Population] = setting("Mixtures for the bulk table.", [], max_length=1000)
     solver: Solver = setting("Expert overrides.", Solver())
+    exchange: Exchange = setting("Files for radiative transfer.", Exchange())
     provenance: Provenance = setting("Origin and licence of the table.", Provenance())
+
+    def densities(self) -> dict[str, float | None]:
+        """Return the density [g cm-3] of every particle by name, None where not stated."""
+        stated = {name: material.density_g_cm3 for name, material in self.materials.items()}
+
+        def density(particle: Particle) -> float | None:
+            core = stated.get(particle.material)
+            if particle.density_g_cm3 is not None or particle.coating is None:
+                return particle.density_g_cm3 or core
+            shell, volume = stated.get(particle.coating.material), particle.coating.core_scale**3
+            if core is None or shell is None:
+                return None
+            return volume * core + (1.0 - volume) * shell
+
+        return {particle.name: density(particle) for particle in self.particles}
 
     @field_validator("wavelengths_um")
     @classmethod

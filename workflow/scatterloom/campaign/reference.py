@@ -47,6 +47,13 @@ Between rows n and k are interpolated linearly in the logarithm of wavelength; o
 nothing is extrapolated, so the rows must enclose every wavelength of the campaign. Metals
 (k not below n) are refused: the averaging of permittivity in the cells that a boundary cuts
 is not reliable for them.
+
+## Tables of size distributions
+
+The file that the `table` of a tabulated distribution names is CSV with the header
+`radius_um,density`; radii ascend, densities are zero or more, on any scale. Densities are taken
+per unit of the logarithm of radius unless `per: radius` is given, and count particles unless `by`
+says otherwise. Between rows the density per ln r is linear in ln r; outside them there is nothing.
 """
 
 
@@ -62,8 +69,13 @@ def page_text() -> str:
     """Return the reference page as Markdown."""
     top = follow(schema())
     lines = [_INTRODUCTION, "## Top level\n", *_table(top)]
+    kinds: set[str] = set()
     for name, node in top["properties"].items():
         for path, section in _sections(name, follow(node)):
+            # What one of several keys may hold is the same for all of them: say it once.
+            if section["title"] in kinds and (".NAME" in path or "(kind" in path):
+                continue
+            kinds.add(section["title"])
             lines += [f"## `{path}`\n", _sentence(section), "", *_table(section)]
     lines.append(_TABLES)
     return "\n".join(lines)
@@ -76,6 +88,10 @@ def _sections(path: str, node: Node) -> Iterator[tuple[str, Node]]:
         key = node["discriminator"]["propertyName"]
         for tag, option in options.items():
             yield f"{path} ({key}: {tag})", option
+            for name, raw in option["properties"].items():
+                listed = follow(raw)
+                if listed.get("type") == "array":
+                    yield from _sections(f"{path}.{name}", listed)
         return
     for option in options.values() if options else [node]:
         if option.get("type") == "array":
@@ -136,6 +152,8 @@ def _unit(node: Node) -> str:
 def _range(node: Node) -> str:
     if "const" in node:
         return f"`{node['const']}`"
+    if "enum" in node:
+        return ", ".join(f"`{word}`" for word in node["enum"])
     if "discriminator" in node:
         return "kinds " + ", ".join(f"`{tag}`" for tag in choices(node))
     if "form" in node:

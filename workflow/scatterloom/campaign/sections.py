@@ -16,10 +16,11 @@ UNIT_NAMES = {
     "um": "um",
     "deg": "degrees",
     "s": "seconds",
-    "min": "minutes",
-    "GiB": "GiB",
+    "g cm-3": "g/cm3",
     "1": "",
     "size": "",
+    "min": "minutes",
+    "GiB": "GiB",
 }
 """Units of the configuration and how they read in a sentence; a size is in um or has no unit."""
 

@@ -16,6 +16,8 @@ COMMANDS = {
     "unpack": "unpack a campaign from somebody else, and run it if wanted",
     "figures": "draw the figures of a campaign",
     "bulk": "average the table over the populations of a campaign",
+    "exchange": "write the populations' expansion coefficients for radiative transfer",
+    "compare": "compare a measured scattering matrix with a campaign",
     "report": "write the report of a campaign as one HTML page",
     "audit": "check the table against the laws of physics",
 }

@@ -19,9 +19,10 @@ def configure(parser: argparse.ArgumentParser) -> None:
 
 def execute(args: argparse.Namespace) -> int:
     """Write bulk.zarr and print its main values; 1 if an average failed or is flagged."""
-    from scatterloom.bulk.build import build, populations_of
+    from scatterloom.bulk.build import build
     from scatterloom.bulk.bulkfile import COMMIT_FILE, write_bulk
     from scatterloom.bulk.listing import listing
+    from scatterloom.bulk.population import populations_of
     from scatterloom.campaign import load
     from scatterloom.errors import BadInput
     from scatterloom.store.layout import Layout, results_root

@@ -19,8 +19,8 @@ def configure(parser: argparse.ArgumentParser) -> None:
 
 def execute(args: argparse.Namespace) -> int:
     """Draw everything that can be drawn; what was left out is said on standard error."""
-    from scatterloom.bulk.build import populations_of
     from scatterloom.bulk.bulkfile import bulk_of
+    from scatterloom.bulk.population import populations_of
     from scatterloom.campaign import load
     from scatterloom.figures.make import make_figures
     from scatterloom.store.layout import Layout, results_root

@@ -18,8 +18,8 @@ def configure(parser: argparse.ArgumentParser) -> None:
 
 def execute(args: argparse.Namespace) -> int:
     """Write report.html from the table, the audit and the figures."""
-    from scatterloom.bulk.build import populations_of
     from scatterloom.bulk.bulkfile import bulk_of
+    from scatterloom.bulk.population import populations_of
     from scatterloom.campaign import load
     from scatterloom.figures.picture import read_index
     from scatterloom.figures.report import report

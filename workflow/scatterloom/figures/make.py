@@ -9,10 +9,12 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from scatterloom.bulk.build import Population
+from scatterloom.bulk.population import Population
 from scatterloom.figures.curves import matrix_curves
 from scatterloom.figures.effort import product_counts
 from scatterloom.figures.maps import size_angle_map
+from scatterloom.figures.overlay import lidar_scatter, polar_intensity, populations_matrix
+from scatterloom.figures.overview import FEWEST_WAVELENGTHS, audit_map, size_wavelength_map
 from scatterloom.figures.picture import ENDINGS, INDEX, Picture, save, style, write_index
 from scatterloom.figures.population import population_panel
 from scatterloom.figures.selection import load_ladder
@@ -20,6 +22,7 @@ from scatterloom.figures.selection import load_ladder
 if TYPE_CHECKING:
     import xarray
 
+WAVELENGTHS_SHOWN = 3
 LADDERS_SHOWN = 12
 """Pairs of particle and wavelength that are drawn; a report with more would not be read."""
 
@@ -37,7 +40,7 @@ def make_figures(
     table : xarray.Dataset
         An opened table.
     folder : Path
-        Where PNG, SVG, CSV and `figures.json` go. The index is taken away first, so
+        Where PNG, SVG, PDF, CSV and `figures.json` go. The index is taken away first, so
         that it never names figures of two tables; figures it no longer names are removed.
     bulk : xarray.Dataset, optional
         Bulk properties of the table.
@@ -47,7 +50,7 @@ def make_figures(
     Returns
     -------
     entries : list of dict
-        As in the index: name, png, svg, csv, title, caption, alt.
+        As in the index: name, png, svg, pdf, csv, title, caption, alt.
     notes : list of str
         What was not drawn, and why.
 
@@ -78,6 +81,17 @@ def make_figures(
     return entries, notes
 
 
+def _asked(table: xarray.Dataset) -> tuple[float, float] | None:
+    """Half widths that the campaign asked for, as its configuration in the table says."""
+    from ruamel.yaml import YAML
+
+    config = YAML(typ="safe", pure=True).load(str(table.attrs.get("config", ""))) or {}
+    accuracy = config.get("accuracy") or {}
+    if {"f11_relative", "ratio_absolute"} <= set(accuracy):
+        return float(accuracy["f11_relative"]), float(accuracy["ratio_absolute"])
+    return None
+
+
 def _plans(
     table: xarray.Dataset,
     bulk: xarray.Dataset | None,
@@ -96,10 +110,23 @@ def _plans(
     particles = table.sizes["particle"]
     if particles > LADDERS_SHOWN:
         notes.append(f"products are drawn for the first {LADDERS_SHOWN} of {particles} particles")
+    if table.sizes["wavelength"] >= FEWEST_WAVELENGTHS:
+        for particle in range(min(particles, LADDERS_SHOWN)):
+            yield partial(size_wavelength_map, table, particle)
     for particle in range(min(particles, LADDERS_SHOWN)):
         yield partial(product_counts, table, particle)
+    yield partial(audit_map, table, _asked(table))
     if bulk is None:
         return
+    waves = bulk.sizes["wavelength"]
+    if waves > WAVELENGTHS_SHOWN:
+        notes.append(f"populations are drawn at {WAVELENGTHS_SHOWN} of {waves} wavelengths")
+    for w in np.unique(np.linspace(0, waves - 1, min(waves, WAVELENGTHS_SHOWN)).astype(int)):
+        if bulk.sizes["population"] > 1:
+            yield partial(populations_matrix, bulk, int(w))
+        yield partial(polar_intensity, bulk, int(w))
+    if float(bulk["angle"][-1]) == 180.0:
+        yield partial(lidar_scatter, bulk)
     if len(populations) > LADDERS_SHOWN:
         notes.append(f"the first {LADDERS_SHOWN} of {len(populations)} populations are drawn")
     radius = table["radius_um"].values

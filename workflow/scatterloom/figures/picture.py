@@ -19,7 +19,7 @@ from scatterloom.errors import IntegrityError
 from scatterloom.store.atomic import atomic_write
 
 INDEX = "figures.json"
-ENDINGS = ("png", "svg", "csv")
+ENDINGS = ("png", "svg", "pdf", "csv")
 BAND = "Bands are 95 % half widths."
 
 SERIES = (
@@ -69,7 +69,7 @@ def style() -> Iterator[None]:
 
 
 def save(picture: Picture, folder: Path) -> dict[str, str]:
-    """Write PNG, SVG and the numbers as CSV; equal input gives equal bytes.
+    """Write PNG, SVG, PDF and the numbers as CSV; equal input gives equal bytes.
 
     Parameters
     ----------
@@ -86,15 +86,21 @@ def save(picture: Picture, folder: Path) -> dict[str, str]:
     OSError
         From the file system; no file is left half written.
     """
-    png, svg = io.BytesIO(), io.BytesIO()
+    png, svg, pdf = io.BytesIO(), io.BytesIO(), io.BytesIO()
     picture.figure.savefig(png, format="png", metadata={"Software": None})
     nothing = dict.fromkeys(("Creator", "Date", "Format", "Type"))
     picture.figure.savefig(svg, format="svg", metadata=nothing)
+    picture.figure.savefig(pdf, format="pdf", metadata={"CreationDate": None, "Producer": None})
     text = io.StringIO()
     writer = csv.writer(text, lineterminator="\n")
     writer.writerow(picture.header)
     writer.writerows([[_plain(value) for value in row] for row in picture.rows])
-    contents = {"png": png.getvalue(), "svg": svg.getvalue(), "csv": text.getvalue().encode()}
+    contents = {
+        "png": png.getvalue(),
+        "svg": svg.getvalue(),
+        "pdf": pdf.getvalue(),
+        "csv": text.getvalue().encode(),
+    }
     for ending, content in contents.items():
         with atomic_write(folder / f"{picture.stem}.{ending}") as stream:
             stream.write(content)

@@ -8,7 +8,7 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
-from scatterloom.bulk.build import Population
+from scatterloom.bulk.population import Population
 from scatterloom.figures.axes import ANGLE_LABEL, angle_axis, plain_log_ticks, ratio_axis
 from scatterloom.figures.curves import LABELS, draw_band, series_legend
 from scatterloom.figures.picture import BAND, Picture
@@ -94,15 +94,14 @@ def population_panel(
         for name, share in zip(part["particle"].values, part["number_fraction"].values, strict=True)
         if share > 0
     )
-    distribution = population.distribution
     outside = part["extinction_share_below"].values + part["extinction_share_above"].values
     return Picture(
         stem=f"population-{population.name}",
         title=f"Population: {population.name}",
         caption=(
             f"Population {population.name} ({mixture} by number; effective radius "
-            f"{distribution.effective_radius_um:.3g} µm, effective variance "
-            f"{distribution.effective_variance:.3g}). First panel: its particles by number and by "
+            f"{population.effective_radius_um:.3g} µm, effective variance "
+            f"{population.effective_variance:.3g}). First panel: its particles by number and by "
             f"geometric cross section; shaded: sizes of the table, outside of which lies an "
             f"estimated {100 * float(np.nanmax(outside)):.2g} % of the extinction. {BAND} They add "
             "the table's errors as fully correlated over sizes, the quadrature error and the "
@@ -116,14 +115,17 @@ def population_panel(
 
 
 def _draw_sizes(axes: Axes, population: Population, radius_range_um: tuple[float, float]) -> None:
-    d = population.distribution
-    spread = 4.0 * d.log_width
-    peak = np.log(d.effective_radius_um)
-    low = min(peak - spread - 2.5 * d.log_width**2, np.log(radius_range_um[0]))
-    high = max(peak + spread, np.log(radius_range_um[1]))
-    radius = np.exp(np.linspace(low, high, 241))
+    spans = [population.distribution_of(name).span_um for name in population.numbers]
+    low = min(*(span[0] for span in spans), radius_range_um[0])
+    high = max(*(span[1] for span in spans), radius_range_um[1])
+    # Beyond three decades a wide distribution would squeeze the table into a corner.
+    low = max(low, high / 1e4)
+    radius = np.geomspace(low, high, 301)
     axes.axvspan(*radius_range_um, color="#e4e4e4", linewidth=0, zorder=0)
-    number, area = d.density(radius), d.density(radius) * radius**2
+    shares = population.number_fractions().items()
+    parts = [share * population.distribution_of(name).density(radius) for name, share in shares]
+    number = np.sum(parts, axis=0)
+    area = number * radius**2
     for values, text, grey, line in (
         (number, "number", "#222222", "-"),
         (area, "area", "#777777", "--"),

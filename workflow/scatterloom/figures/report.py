@@ -13,7 +13,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from jinja2 import Environment, StrictUndefined
 
-from scatterloom.bulk.listing import SHOWN
+from scatterloom.bulk.listing import NOTHING, SHOWN
 from scatterloom.bulk.listing import rows as bulk_rows
 from scatterloom.scattering.record import SOLVED, SOLVED_WITH_WARNING, has_result
 
@@ -59,10 +59,10 @@ def report(
         autoescape=True, undefined=StrictUndefined, trim_blocks=True, lstrip_blocks=True
     )
     text = (files("scatterloom.figures") / TEMPLATE).read_text(encoding="utf-8")
-    populations = []
+    populations: list[dict[str, Any]] = []
     if bulk is not None:
         columns = {str(name): bulk[name].values for name in bulk.variables}
-        populations = bulk_rows(columns)
+        populations = _by_population(bulk_rows(columns))
     return environment.from_string(text).render(
         title=str(table.attrs.get("title", "")),
         campaign=str(table.attrs.get("campaign", "")),
@@ -72,10 +72,19 @@ def report(
         figures=[_figure(folder, entry) for entry in index["figures"]],
         notes=index["notes"],
         populations=populations,
-        population_labels=[label for _, label in SHOWN],
         provenance=_provenance(table),
         config=str(table.attrs.get("config", "")),
     )
+
+
+def _by_population(rows: list[dict[str, Any]]) -> list[dict[str, Any]]:
+    """Rows of one population together, with the labels of what is known of it."""
+    groups = []
+    for name in dict.fromkeys(row["population"] for row in rows):
+        own = [row for row in rows if row["population"] == name]
+        known = [label for _, label in SHOWN if any(row["values"][label] != NOTHING for row in own)]
+        groups.append({"name": name, "rows": own, "labels": known})
+    return groups
 
 
 def effort_rows(table: xarray.Dataset) -> list[dict[str, Any]]:

@@ -125,6 +125,16 @@ class Layout:
         return self.folder / "bulk.zarr"
 
     @property
+    def exchange(self) -> Path:
+        """Files for radiative transfer and their index."""
+        return self.folder / "exchange"
+
+    @property
+    def comparisons(self) -> Path:
+        """Comparisons with measurements, one folder each."""
+        return self.folder / "compare"
+
+    @property
     def figures(self) -> Path:
         """Figures and their index."""
         return self.folder / "figures"
