@@ -41,7 +41,21 @@ ROOMS = (
 )
 FREE = {"errors"}
 """Modules beside the rooms that every room may import."""
-ABOVE = {"attempts", "cli", "commands", "graph", "jobs", "__main__"}
+ABOVE = {
+    "attempts",
+    "cli",
+    "commands",
+    "crate",
+    "graph",
+    "jobs",
+    "limits",
+    "mending",
+    "outline",
+    "pace",
+    "resolve",
+    "unpacking",
+    "__main__",
+}
 """Modules beside the rooms that may import all of them."""
 
 PAGES = sorted(

@@ -140,8 +140,8 @@ def small_jobs():
 
 
 def stripped(case):
-    """A record without the time it took."""
-    return replace(case, wall_seconds=0.0).to_arrays()
+    """A record without the time and memory it took."""
+    return replace(case, wall_seconds=0.0, memory_bytes=0.0).to_arrays()
 
 
 def assert_same_records(one, other):
@@ -280,6 +280,8 @@ def test_damaged_fields_stop_the_span_and_are_named(undisturbed, damage):
         path.write_bytes(content)
     case_file = layout.case_file(span.name)
     case_file.unlink()
+    # Only a size that is still to be solved needs the fields.
+    layout.solved_case(span.cases[0][0]).unlink()
     with pytest.raises(IntegrityError, match=str(path)):
         jobs.solve(spec_of(span), folder)
     assert not case_file.exists()
@@ -291,6 +293,7 @@ def test_anchors_that_are_not_in_their_file(undisturbed):
     path = layout.field_file(anchors.name)
     entries = read_fields(path)
     write_fields(path, entries[1:])
+    layout.solved_case(span.cases[0][0]).unlink()
     with pytest.raises(IntegrityError, match="fields of 1 anchors are missing"):
         jobs.solve(spec_of(span), folder)
 

@@ -152,12 +152,16 @@ def test_larger_sizes_leave_anchors_as_they_were():
     assert choose_anchors(sizes, lambda x: 0.3)[: len(short) - 1] == short[:-1]
 
 
-def test_jobs_are_about_as_long_as_asked(grid_of):
+def test_jobs_are_about_as_long_as_asked(grid_of, monkeypatch):
     grid = grid_of(*FINE)
     jobs = plan(grid)
     assert max(job.seconds for job in jobs) <= 20.0
     assert len(jobs) < 2 * sum(job.seconds for job in jobs) / 20.0 + 8
-    long = plan(grid_of(*FINE, "job_seconds: 20", "job_seconds: 2000"))
+    # A campaign of minutes is shared out whatever is asked, and not if it may be one job.
+    asked = grid_of(*FINE, "job_seconds: 20", "job_seconds: 2000")
+    assert [job.name for job in plan(asked)] == [job.name for job in jobs]
+    monkeypatch.setattr(plans, "SHARES", 1)
+    long = plan(asked)
     # Two ladders of two segments, each with one job of anchors and one of spans.
     assert len(long) == 8
 

@@ -9,6 +9,7 @@ from snakemake.exceptions import WorkflowError
 
 from scatterloom.errors import ScatterloomError
 from scatterloom.graph import Graph
+from scatterloom.outline import Outline
 
 
 def find_config():
@@ -25,12 +26,12 @@ def find_config():
 
 def open_graph():
     try:
-        graph = Graph.open(find_config(), config.get("results"))
+        # `scatterloom run` has prepared the campaign; the engine alone does it here.
+        if workflow.is_main_process and not config.get("prepared"):
+            Graph.open(find_config(), config.get("results")).prepare()
+        return Outline.open(find_config(), config.get("results"))
     except ScatterloomError as error:
         raise WorkflowError(str(error)) from None
-    if workflow.is_main_process:
-        graph.prepare()
-    return graph
 
 
 GRAPH = open_graph()

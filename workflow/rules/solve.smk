@@ -5,6 +5,15 @@ ONE_POOL = " ".join(
     f"{name}_NUM_THREADS={{threads}}" for name in ("OMP", "OPENBLAS", "MKL", "NUMBA")
 )
 
+# No parameters: what a job may take or reuse must not decide what is rerun.
+OPTIONS = " ".join(map(shlex.quote, GRAPH.solver_options()))
+
+
+def memory_needed(wildcards):
+    """Return MiB: the engine starts no more jobs at once than memory has room for."""
+    most = int(config.get("memory_mb", 1 << 40))
+    return min(GRAPH.jobs[wildcards.job].memory_mb, most)
+
 
 def fields_needed(wildcards):
     return ancient([f"fields/{name}.npz" for name in GRAPH.jobs[wildcards.job].needs])
@@ -19,12 +28,14 @@ rule solve_anchors:
     wildcard_constraints:
         job=r"anchors-[^/]+",
     threads: 1
+    resources:
+        mem_mb=memory_needed,
     params:
         digest=lambda wildcards: GRAPH.job_digest(wildcards.job),
     # exec: the solver is then the engine's own child and can end with it.
     shell:
         "exec env " + ONE_POOL + " {SCATTERLOOM} solve-job jobs/{wildcards.job}.json"
-        " --threads {threads} --parent $PPID > {log} 2>&1"
+        " {OPTIONS} --threads {threads} --parent $PPID > {log} 2>&1"
 
 
 rule solve_span:
@@ -37,8 +48,10 @@ rule solve_span:
     wildcard_constraints:
         job=r"span-[^/]+",
     threads: 1
+    resources:
+        mem_mb=memory_needed,
     params:
         digest=lambda wildcards: GRAPH.job_digest(wildcards.job),
     shell:
         "exec env " + ONE_POOL + " {SCATTERLOOM} solve-job jobs/{wildcards.job}.json"
-        " --threads {threads} --parent $PPID > {log} 2>&1"
+        " {OPTIONS} --threads {threads} --parent $PPID > {log} 2>&1"

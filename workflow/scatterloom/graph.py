@@ -15,13 +15,12 @@ from functools import cached_property
 from pathlib import Path
 from typing import Any
 
-import scatterloom
 from scatterloom import campaign as campaigns
-from scatterloom.bulk.coefficients import FEWEST_ANGLES
 from scatterloom.campaign.effort import NUMERICS_REVISION
 from scatterloom.campaign.expand import Grid, expand
 from scatterloom.campaign.plan import Job, plan
 from scatterloom.errors import IntegrityError
+from scatterloom.outline import exchange_possible, outline_of, table_digest
 from scatterloom.store.atomic import sweep_abandoned, write_if_changed
 from scatterloom.store.commit import commit_record, verify_folder
 from scatterloom.store.layout import Layout, results_root
@@ -63,7 +62,11 @@ class Graph:
         EnvironmentProblem
             If there is no folder for the results.
         """
-        campaign = campaigns.load(Path(config))
+        return cls.plan(campaigns.load(Path(config)), results)
+
+    @classmethod
+    def plan(cls, campaign: campaigns.Campaign, results: Path | str | None = None) -> Graph:
+        """Expand and plan a campaign that is read already."""
         grid = expand(campaign)
         layout = Layout(results_root(results) / campaign.name)
         return cls(campaign, layout, grid, {job.name: job for job in plan(grid)})
@@ -80,9 +83,7 @@ class Graph:
     @cached_property
     def table_digest(self) -> str:
         """Digest of everything, besides the cases, that the table depends on."""
-        return canonical_digest(
-            [self.campaign.merged_yaml(), scatterloom.__version__, NUMERICS_REVISION]
-        )
+        return table_digest(self.campaign)
 
     @property
     def has_populations(self) -> bool:
@@ -92,9 +93,7 @@ class Graph:
     @property
     def has_exchange(self) -> bool:
         """Whether populations can be expanded: scattering angles over the whole sphere."""
-        angles = self.campaign.angles_deg
-        whole = len(angles) >= FEWEST_ANGLES and angles[0] == 0.0 and angles[-1] == 180.0
-        return self.has_populations and bool(whole)
+        return exchange_possible(self.campaign)
 
     @property
     def cases_of(self) -> dict[str, int]:
@@ -123,6 +122,7 @@ class Graph:
         for path in layout.jobs.glob("*.json"):
             if path.stem not in self.jobs:
                 path.unlink(missing_ok=True)
+        outline_of(self).write()
         if not receipt_holds(layout):
             layout.receipt.unlink(missing_ok=True)
 

@@ -13,23 +13,33 @@ import sys
 import time
 from collections.abc import Mapping
 from dataclasses import replace
+from functools import cached_property
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 from threadpoolctl import threadpool_limits
 
-from scatterloom.attempts import Task, solve_case
+from scatterloom.attempts import Task, forget_checkpoint, solve_case
 from scatterloom.errors import IntegrityError
+from scatterloom.limits import Limits, peak_bytes
 from scatterloom.particle.shapes import from_spec
 from scatterloom.scattering.case import Asked
-from scatterloom.scattering.record import CaseRecord
+from scatterloom.scattering.record import FAILED, CaseRecord
 from scatterloom.store.casefile import read_records, write_records
+from scatterloom.store.failures import write_failure
 from scatterloom.store.fields import FieldFile, read_fields, write_fields
 from scatterloom.store.layout import Layout
+from scatterloom.store.library import CaseLibrary
 from scatterloom.store.progress import DONE, RUNNING, Heartbeat, write_heartbeat
 
 _HEARTBEAT_S = 0.5
+
+_SAVED_BY_START = 0.6
+"""Share of a cold solve that a start from neighbours saves (`campaign.effort.cost`)."""
+
+KEPT, REUSED, SOLVED_NOW = "kept", "reused", "solved"
+"""Where a record came from: this campaign before, the case library, this job."""
 
 
 class _Reporter:
@@ -51,20 +61,33 @@ class _Reporter:
     def solving(self, size_parameter: float, residual: float) -> None:
         self._write(size_parameter=size_parameter, residual=residual)
 
-    def finished_case(self, case: CaseRecord) -> None:
+    def finished_case(self, case: CaseRecord, how: str) -> None:
+        beat = self._beat
+        new = how == SOLVED_NOW
         self._write(
             force=True,
-            cases_done=self._beat.cases_done + 1,
+            cases_done=beat.cases_done + 1,
             size_parameter=case.size_parameter,
             residual=case.residual if np.isfinite(case.residual) else None,
-            products=self._beat.products + case.products,
+            products=beat.products + case.products,
+            solved=beat.solved + new,
+            seconds=beat.seconds + (case.wall_seconds if new else 0.0),
+            reused=beat.reused + (how == REUSED),
+            cases_failed=beat.cases_failed + (case.status == FAILED),
+            peak_bytes=max(beat.peak_bytes, peak_bytes()),
         )
 
     def done(self) -> None:
         self._write(force=True, state=DONE)
 
 
-def solve(spec: Mapping[str, Any], folder: Path, threads: int = 1) -> None:
+def solve(
+    spec: Mapping[str, Any],
+    folder: Path,
+    threads: int = 1,
+    limits: Limits | None = None,
+    library: CaseLibrary | None = None,
+) -> None:
     """Solve all cases of a job and publish its case file (and, for anchors, its fields).
 
     Parameters
@@ -75,6 +98,10 @@ def solve(spec: Mapping[str, Any], folder: Path, threads: int = 1) -> None:
         Folder of the campaign.
     threads : int
         Threads for transforms and linear algebra.
+    limits : Limits, optional
+        What a case may take; no bounds if missing.
+    library : CaseLibrary, optional
+        Solved cases of other campaigns; none are reused if missing.
 
     Raises
     ------
@@ -84,63 +111,97 @@ def solve(spec: Mapping[str, Any], folder: Path, threads: int = 1) -> None:
         From the file system.
     """
     with threadpool_limits(threads):
-        _Job(spec, folder, threads).run()
+        _Job(spec, folder, threads, limits or Limits(), library).run()
+
+
+def task_of(
+    spec: Mapping[str, Any],
+    threads: int = 1,
+    limits: Limits | None = None,
+    state: Path | None = None,
+) -> Task:
+    """Return what all cases of a job share, from its specification."""
+    accuracy = spec["accuracy"]
+    return Task(
+        name=spec["name"],
+        kind=spec["kind"],
+        shape=from_spec(spec["shape"]),
+        shape_json=json.dumps(spec["shape"], sort_keys=True),
+        index=complex(*spec["index"]),
+        cells=tuple(int(n) for n in spec["levels"]),
+        refinements=int(spec["refinements"]),
+        tolerance=float(spec["tolerance"]),
+        asked=Asked(
+            accuracy["f11_relative"],
+            accuracy["ratio_absolute"],
+            accuracy["efficiency_relative"],
+        ),
+        threads=threads,
+        limits=limits or Limits(),
+        state=state,
+        inner_indices=tuple(complex(*m) for m in spec.get("inner_indices", ())),
+    )
 
 
 class _Job:
-    def __init__(self, spec: Mapping[str, Any], folder: Path, threads: int) -> None:
+    def __init__(
+        self,
+        spec: Mapping[str, Any],
+        folder: Path,
+        threads: int,
+        limits: Limits,
+        library: CaseLibrary | None,
+    ) -> None:
         self.spec = spec
+        self.library = library
         self.layout = Layout(folder)
-        shape = from_spec(spec["shape"])
-        cells = tuple(int(n) for n in spec["levels"])
-        accuracy = spec["accuracy"]
-        self.task = Task(
-            name=spec["name"],
-            kind=spec["kind"],
-            shape=shape,
-            shape_json=json.dumps(spec["shape"], sort_keys=True),
-            index=complex(*spec["index"]),
-            cells=cells,
-            refinements=int(spec["refinements"]),
-            tolerance=float(spec["tolerance"]),
-            asked=Asked(
-                accuracy["f11_relative"],
-                accuracy["ratio_absolute"],
-                accuracy["efficiency_relative"],
-            ),
-            threads=threads,
-            inner_indices=tuple(complex(*m) for m in spec.get("inner_indices", ())),
-        )
+        self.task = task_of(spec, threads, limits, self.layout.checkpoints)
         self.cases: list[tuple[str, float]] = [(d, float(x)) for d, x in spec["cases"]]
         self.report = _Reporter(folder, self.task, len(self.cases))
 
     def run(self) -> None:
         keep_fields = self.task.kind == "anchors"
-        anchors = self._anchor_fields()
         records = []
         fields: list[FieldFile] = []
         for digest, x in self.cases:
-            kept = self._kept(digest)
+            kept, how = self._kept(digest), KEPT
+            if kept is None and (kept := self._reused(digest, x)) is not None:
+                how = REUSED
             own = self._kept_fields(digest) if keep_fields else None
-            if kept is None or (keep_fields and own is None):
+            if kept is None or (keep_fields and own is None and self._fields_pay):
+                anchors = [] if keep_fields else self._anchors
                 solved, levels = solve_case(self.task, digest, x, anchors, self.report.solving)
                 if keep_fields:
                     own = FieldFile(digest, x, solved.products, [lv.fields for lv in levels])
                     write_fields(self.layout.solved_fields(digest), [own])
                 if kept is None:
                     # A record published before stays as it is: only its fields were wanting.
-                    kept = solved
-                    write_records(self.layout.solved_case(digest), [kept])
+                    kept, how = solved, SOLVED_NOW
+                    self._keep(kept)
+                forget_checkpoint(self.task, digest)
             records.append(kept)
-            if own is not None:
-                fields.append(own)
-            self.report.finished_case(kept)
+            if keep_fields:
+                # An entry without levels says that nobody needs the fields of this anchor.
+                fields.append(own or FieldFile(digest, x, kept.products, []))
+            self.report.finished_case(kept, how)
         if keep_fields:
             write_fields(self.layout.field_file(self.task.name), fields)
         write_records(self.layout.case_file(self.task.name), records)
         for digest, _ in self.cases if keep_fields else ():
             self.layout.solved_fields(digest).unlink(missing_ok=True)
         self.report.done()
+
+    def _keep(self, case: CaseRecord) -> None:
+        """Keep a case just solved, for this campaign and for others."""
+        path = self.layout.solved_case(case.digest)
+        write_records(path, [case])
+        note = self.layout.failed / f"{case.digest}.json"
+        if case.status == FAILED:
+            write_failure(note, case, self.task.name)
+        else:
+            note.unlink(missing_ok=True)
+            if self.library is not None:
+                self.library.add(self.spec, case, path)
 
     def _kept(self, digest: str) -> CaseRecord | None:
         """Record of a case solved before, or None; an unreadable file is named and solved anew."""
@@ -149,10 +210,41 @@ class _Job:
             return None
         try:
             (kept,) = read_records(path)
+            if kept.digest != digest:
+                raise IntegrityError(f"{path}: holds case {kept.digest}, not its own")
         except (IntegrityError, ValueError) as error:
             print(f"{self.task.name}: {error}; the case is solved again", file=sys.stderr)
             return None
         return kept
+
+    def _reused(self, digest: str, x: float) -> CaseRecord | None:
+        """Record from the case library, kept in this campaign as well, or None."""
+        if self.library is None:
+            return None
+        found = self.library.find(self.spec, x, digest)
+        if found is not None:
+            write_records(self.layout.solved_case(digest), [found])
+        return found
+
+    @cached_property
+    def _fields_pay(self) -> bool:
+        """Whether to solve finished anchors again for their fields' sake.
+
+        A start saves a size `_SAVED_BY_START` of a cold solve, so a few sizes that are new
+        between many finished anchors are cheaper solved from nothing.
+        """
+        specs = [json.loads(path.read_bytes()) for path in self.layout.jobs.glob("span-*.json")]
+        if not specs:
+            return True  # a job run by hand: nothing is known of those that depend on it
+        lacking = sum(self._kept_fields(digest) is None for digest, _ in self.cases)
+        wanting = sum(
+            not self.layout.solved_case(digest).exists()
+            and (self.library is None or self.library.find(spec, float(x), digest) is None)
+            for spec in specs
+            if self.task.name in spec["needs"]
+            for digest, x in spec["cases"]
+        )
+        return _SAVED_BY_START * wanting > lacking
 
     def _kept_fields(self, digest: str) -> FieldFile | None:
         """Fields of an anchor solved before this job was interrupted, or None."""
@@ -170,7 +262,9 @@ class _Job:
                 print(f"{self.task.name}: {error}; the case is solved again", file=sys.stderr)
         return None
 
-    def _anchor_fields(self) -> list[FieldFile]:
+    @cached_property
+    def _anchors(self) -> list[FieldFile]:
+        """Anchors with fields to start from, read when the first size needs them."""
         wanted = {digest for digest, _, _ in self.spec["anchors"]}
         found = {
             entry.digest: entry
@@ -184,4 +278,5 @@ class _Job:
                 f"fields of {len(missing)} anchors are missing from {self.layout.fields}; "
                 "delete the fields files named in the job file and run again"
             )
-        return sorted(found.values(), key=lambda entry: entry.size_parameter)
+        with_fields = [entry for entry in found.values() if entry.levels]
+        return sorted(with_fields, key=lambda entry: entry.size_parameter)

@@ -5,7 +5,7 @@ from __future__ import annotations
 import hashlib
 import json
 from collections.abc import Mapping
-from dataclasses import asdict, dataclass
+from dataclasses import dataclass
 from functools import cached_property
 from typing import Any
 
@@ -74,8 +74,8 @@ class Case:
             "shape": dict(self.shape),
             **indices_content(self.index, self.inner_indices),
             "size_parameter": self.size_parameter,
-            "accuracy": asdict(self.accuracy),
-            "overrides": asdict(self.overrides),
+            "accuracy": vars(self.accuracy),  # asdict takes ten times as long
+            "overrides": vars(self.overrides),
             "numerics_revision": effort.NUMERICS_REVISION,
         }
         return hashlib.sha256(canonical_json(content).encode()).hexdigest()[:20]

@@ -256,11 +256,42 @@ class Solver(Section):
         le=1e-2,
     )
     job_seconds: float = setting(
-        "Predicted time of one job; smaller cases are put together up to it.",
-        20.0,
+        "Predicted time of one job; smaller cases are put together up to it, in small "
+        "campaigns to less. Never alters a result.",
+        1200.0,
         unit="s",
         ge=1.0,
         le=86_400.0,
+    )
+    case_reuse: bool = setting(
+        "Whether cases solved by other campaigns in the same folder of results are taken from "
+        "the case library instead of being solved again. The environment variable "
+        "SCATTERLOOM_CASE_REUSE (on or off) goes first.",
+        True,
+    )
+    memory_gib: float | None = setting(
+        "Memory allowed to one job. A case that needs more is recorded as failed before it "
+        "starts; nine tenths of the machine's memory if missing.",
+        None,
+        unit="GiB",
+        ge=0.1,
+        le=1e5,
+    )
+    case_minutes: float | None = setting(
+        "Time allowed to one case. A case that takes longer is recorded as failed; no limit "
+        "if missing.",
+        None,
+        unit="min",
+        ge=0.01,
+        le=1e6,
+    )
+    checkpoint_minutes: float = setting(
+        "Time between savings of the best iterate of a case that takes long: what a kill can "
+        "lose at most.",
+        5.0,
+        unit="min",
+        ge=0.0,
+        le=1440.0,
     )
 
     @field_validator("levels")

@@ -9,9 +9,8 @@ from dataclasses import dataclass
 from scatterloom.campaign import effort
 from scatterloom.campaign.expand import Grid
 from scatterloom.campaign.geometry import extents, mirror_planes
+from scatterloom.campaign.memory import case_bytes
 from scatterloom.campaign.plan import Job
-
-_COMPLEX64_BYTES = 8
 
 
 @dataclass(frozen=True)
@@ -19,7 +18,8 @@ class Outlook:
     """Size and predicted cost of a campaign.
 
     `largest_job_bytes` is what the largest job holds at once; `core_hours` counts every
-    case as new.
+    case as new and is for the machine that the cost model was fitted to. `table_bytes` and
+    `case_bytes` are compressed sizes on disk, of the table and of all case files.
     """
 
     cells: int
@@ -30,10 +30,21 @@ class Outlook:
     largest_size_parameter: float
     finest_cells_across: int
     largest_job_bytes: int
+    table_bytes: int
+    case_bytes: int
 
 
-def outlook(grid: Grid, jobs: Sequence[Job]) -> Outlook:
-    """Return the outlook of a grid and its jobs."""
+_MATRIX_BYTES_A_CELL_AND_ANGLE = 110.0
+"""Sixteen elements with two half widths each, compressed."""
+
+_CASE_BYTES_A_DEGREE = 420.0
+_CASE_BYTES = 1500.0
+"""A record is a header and, per degree of its expansion, compressed coefficients of all
+variants."""
+
+
+def outlook(grid: Grid, jobs: Sequence[Job], angles: int = 181) -> Outlook:
+    """Return the outlook of a grid and its jobs for a table of so many angles."""
     anchors = [job for job in jobs if job.kind == "anchors"]
     return Outlook(
         cells=int(grid.where.size),
@@ -44,28 +55,28 @@ def outlook(grid: Grid, jobs: Sequence[Job]) -> Outlook:
         largest_size_parameter=float(grid.size_parameter.max()),
         finest_cells_across=max(max(job.levels) for job in jobs),
         largest_job_bytes=max(job_bytes(job) for job in jobs),
+        table_bytes=round(_MATRIX_BYTES_A_CELL_AND_ANGLE * angles * grid.where.size),
+        # Each record lies twice: by itself, and in the file of its job.
+        case_bytes=2 * sum(_record_bytes(job) for job in jobs),
     )
 
 
-def job_bytes(job: Job) -> int:
-    """Return the predicted memory of a job [bytes], beside that of the program itself.
+def _record_bytes(job: Job) -> int:
+    """Disk space of the records of a job [bytes]."""
+    radii = extents(job.shape).radii
+    middle = job.cases[len(job.cases) // 2][1]
+    degrees = 2 * effort.n_max(radii, middle, job.accuracy.f11_relative) + 1
+    return round(len(job.cases) * (_CASE_BYTES + _CASE_BYTES_A_DEGREE * degrees))
 
-    Counted are, on the finest lattice and in single precision: the incident block, the
-    fields and residuals, search directions and their images (about two of each for every
-    wave), one octant of cells standing for all (more with fewer mirror planes); the kernel
-    and the padded grids of one product; and for a span the fields of the anchors on all
-    lattices.
-    """
-    reach = extents(job.shape)
-    axes = reach.half
-    order = effort.n_max(reach.radii, max(x for _, x in job.cases), job.accuracy.f11_relative)
-    waves = 2 * order * (order + 2)
-    finest = max(job.levels)
-    spacing = 2.0 * max(axes) / finest
-    filled = 4.0 * math.pi / 3.0 / spacing**3
-    fields = 3.0 * filled / 2 ** mirror_planes(job.shape) * waves
-    box = math.prod(2.0 * axis / spacing + 1.0 for axis in axes)
-    blocks = 7.0
-    if job.kind == "span":
-        blocks += len(job.anchors) * sum((n / finest) ** 3 for n in job.levels)
-    return round((blocks * fields + 6.0 * box + 8 * 3 * 2.0 * box) * _COMPLEX64_BYTES)
+
+def job_bytes(job: Job) -> int:
+    """Return the predicted peak memory of a job, that of its largest case [bytes]."""
+    return case_bytes(
+        extents(job.shape).half,
+        extents(job.shape).radii,
+        mirror_planes(job.shape),
+        max(x for _, x in job.cases),
+        job.levels,
+        job.accuracy.f11_relative,
+        len(job.anchors),
+    )

@@ -23,6 +23,10 @@ from scatterloom.errors import BadInput
 MOST_JOBS = 10_000
 """The workflow engine takes 9 s for a graph of this many jobs, and linearly more beyond."""
 
+SHORTEST_JOB_S = 20.0
+SHARES = 200
+"""Jobs are no longer than one of so many parts of the whole campaign, solved cold."""
+
 ANCHORS_EACH_SIDE = 2
 
 T = TypeVar("T")
@@ -93,8 +97,9 @@ class _Segment:
 def plan(grid: Grid) -> list[Job]:
     """Return the jobs that solve every case of the grid once, anchors before their spans.
 
-    Cases are batched to jobs of about `grid.job_seconds`, and to longer ones if there would
-    be more than `MOST_JOBS` otherwise.
+    Cases are batched to jobs of at most about `grid.job_seconds`; to shorter ones in a small
+    campaign, so that it can use many cores; to longer ones if there would be more than
+    `MOST_JOBS` otherwise.
 
     Raises
     ------
@@ -102,8 +107,11 @@ def plan(grid: Grid) -> list[Job]:
         If even the longest jobs are too many.
     """
     segments = [segment for ladder in _ladders(grid) for segment in _segments(ladder, grid)]
-    seconds = grid.job_seconds
     longest = math.fsum(size.cold for segment in segments for size in segment.sizes)
+    # A small campaign is shared out too, down to jobs whose start-up still does not matter.
+    # In powers of two, so that a few more sizes or particles seldom lay out all jobs anew.
+    doublings = max(0, math.ceil(math.log2(max(longest, 1.0) / SHARES / SHORTEST_JOB_S)))
+    seconds = min(grid.job_seconds, SHORTEST_JOB_S * 2.0**doublings)
     while _count(segments, seconds) > MOST_JOBS:
         if seconds > longest:
             raise BadInput(

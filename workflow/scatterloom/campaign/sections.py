@@ -12,7 +12,16 @@ from typing import Annotated, Any
 from pydantic import BaseModel, ConfigDict, Field
 from pydantic_core import PydanticCustomError
 
-UNIT_NAMES = {"um": "um", "deg": "degrees", "s": "seconds", "g cm-3": "g/cm3", "1": "", "size": ""}
+UNIT_NAMES = {
+    "um": "um",
+    "deg": "degrees",
+    "s": "seconds",
+    "g cm-3": "g/cm3",
+    "1": "",
+    "size": "",
+    "min": "minutes",
+    "GiB": "GiB",
+}
 """Units of the configuration and how they read in a sentence; a size is in um or has no unit."""
 
 

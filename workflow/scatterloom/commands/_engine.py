@@ -17,6 +17,7 @@ from pathlib import Path
 from scatterloom.commands._parent import ask_kernel
 from scatterloom.errors import EnvironmentProblem
 from scatterloom.graph import Graph
+from scatterloom.limits import SHARE_OF_MEMORY, machine_bytes
 from scatterloom.store.layout import checkout
 
 GRACE_S = 10.0
@@ -69,6 +70,7 @@ class Engine:
             raise EnvironmentProblem(
                 "a campaign runs from a checkout of scatterloom (its Snakefile is not found)"
             )
+        memory = max(1, int(SHARE_OF_MEMORY * machine_bytes() / 2**20))
         self.log = _new_log(graph.layout.logs)
         command = [
             *(sys.executable, "-m", "snakemake"),
@@ -80,6 +82,9 @@ class Engine:
             *("--cores", str(cores)),
             *("--nolock", "--rerun-incomplete", "--nocolor"),
             *("--config", f"campaign={_yaml(config)}", f"results={_yaml(_results(graph))}"),
+            *("prepared=true", f"memory_mb={memory if profile == 'laptop' else 1 << 40}"),
+            # On a cluster the nodes have the memory, and the requests of the jobs count.
+            *(("--resources", f"mem_mb={memory}") if profile == "laptop" else ()),
         ]
         with open(self.log, "wb") as stream:
             self._process = subprocess.Popen(

@@ -43,6 +43,12 @@ def configure(parser: argparse.ArgumentParser) -> None:
         "--cores", type=_positive, metavar="N", help="processor cores to use (default: all)"
     )
     parser.add_argument(
+        "--retry-failed", action="store_true", help="take up the cases that failed before"
+    )
+    parser.add_argument(
+        "--verify", action="store_true", help="read every finished file first, mend what is damaged"
+    )
+    parser.add_argument(
         "--profile", choices=("laptop", "slurm"), default="laptop", help="where the jobs run"
     )
 
@@ -58,6 +64,7 @@ def execute(args: argparse.Namespace) -> int:
     """Run; 0 done, 1 some cases failed or flagged, and the codes of the errors."""
     from scatterloom.commands._engine import Engine, check_profile
     from scatterloom.graph import Graph
+    from scatterloom.mending import take_up_failed
     from scatterloom.store.held import hold
     from scatterloom.store.progress import Meter
 
@@ -68,20 +75,37 @@ def execute(args: argparse.Namespace) -> int:
     check_profile(args.profile)
     with hold(graph.layout.lock) as lock, _terminable():
         graph.sweep()
+        _mend(graph, digests=args.verify)
+        if args.retry_failed:
+            print(f"{take_up_failed(graph)} failed cases are taken up again", file=sys.stderr)
         graph.prepare()
         meter = Meter(graph.layout, graph.cases_of)
-        meter.forget_failures()
-        engine = Engine(graph, config, args.cores or _cores(), args.profile, lock)
-        try:
-            code = _attend(engine, graph, meter)
-        finally:
-            # Silent if it has ended; otherwise an interrupt, or a fault of this program.
-            engine.stop()
+        for attempt in range(2):
+            meter.forget_failures()
+            engine = Engine(graph, config, args.cores or _cores(), args.profile, lock)
+            try:
+                code = _attend(engine, graph, meter)
+            finally:
+                # Silent if it has ended; otherwise an interrupt, or a fault of this program.
+                engine.stop()
+            # A reader that meets a damaged file stops the run; what is lost is solved again.
+            if code == 0 or attempt or not _mend(graph, digests=True):
+                break
         if code == 0:
             graph.drop_fields()
     if code != 0:
         return _explain(engine, graph, meter.measure())
     return _conclude(graph)
+
+
+def _mend(graph: Graph, *, digests: bool) -> bool:
+    """Put damaged results aside and say so; return whether there were any."""
+    from scatterloom.mending import put_damaged_aside
+
+    damaged = put_damaged_aside(graph, digests=digests)
+    for text in damaged:
+        print(f"warning: {text}; made again, solving only what is lost", file=sys.stderr)
+    return bool(damaged)
 
 
 def _demo() -> Path:

@@ -7,8 +7,12 @@ import json
 import os
 import sys
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from scatterloom.commands import COMMANDS
+
+if TYPE_CHECKING:
+    from scatterloom.limits import Limits
 
 NAME = "solve-job"
 HELP = COMMANDS[NAME]
@@ -18,6 +22,12 @@ def configure(parser: argparse.ArgumentParser) -> None:
     """Add the arguments."""
     parser.add_argument("spec", metavar="JOB.json", help="job file in the campaign's jobs/ folder")
     parser.add_argument("--threads", type=int, default=1, metavar="N", help="threads to use")
+    parser.add_argument("--library", metavar="DIR", help="case library to reuse cases from")
+    parser.add_argument("--memory-gib", type=float, metavar="X", help="memory allowed")
+    parser.add_argument("--case-minutes", type=float, metavar="X", help="time allowed to a case")
+    parser.add_argument(
+        "--checkpoint-minutes", type=float, default=5.0, metavar="X", help="time between savings"
+    )
     parser.add_argument("--parent", type=int, metavar="PID", help="end when this process ends")
 
 
@@ -42,13 +52,25 @@ def execute(args: argparse.Namespace) -> int:
         raise BadInput(f"{args.spec}: not a job file ({error})") from None
     try:
         from scatterloom import jobs
+        from scatterloom.store.library import CaseLibrary
 
-        jobs.solve(spec, folder, args.threads)
+        shared = CaseLibrary(Path(args.library)) if args.library else None
+        jobs.solve(spec, folder, args.threads, _limits(args), shared)
     except Exception as error:
         _report(folder, spec, cases, error)
         raise
     print(f"{spec['name']}: {cases} cases done", file=sys.stderr)
     return 0
+
+
+def _limits(args: argparse.Namespace) -> Limits:
+    from scatterloom.limits import SHARE_OF_MEMORY, Limits, machine_bytes
+
+    return Limits(
+        SHARE_OF_MEMORY * machine_bytes() if args.memory_gib is None else args.memory_gib * 2**30,
+        float("inf") if args.case_minutes is None else args.case_minutes * 60.0,
+        args.checkpoint_minutes * 60.0,
+    )
 
 
 def _report(folder: Path, spec: dict[str, object], cases: int, error: Exception) -> None:

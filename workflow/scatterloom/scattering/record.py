@@ -27,10 +27,13 @@ FLAGS: dict[str, tuple[int, str]] = {
     "arithmetic_cells": (32, "negative real permittivity: arithmetic mean in boundary cells"),
     "start_dropped": (64, "the start from neighbouring sizes was poor and was dropped"),
     "no_memory": (128, "the case needs more memory than allowed"),
+    "reused": (256, "solved by another campaign and taken from the case library"),
+    "no_time": (512, "the case takes longer than allowed"),
+    "breakdown": (1024, "the numbers of the solve broke down (not finite, or singular)"),
 }
 """Warning flags: bit and meaning."""
 
-INFORMATIVE = 64
+INFORMATIVE = 64 | 256
 """Flags that do not make a case "solved with warning": the result is as good as any."""
 
 SCALARS = (

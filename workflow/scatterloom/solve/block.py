@@ -78,6 +78,7 @@ def solve_block(
     start: Sequence[NDArray] | None = None,
     max_steps: int = 60,
     progress: Callable[[float, float], None] | None = None,
+    checkpoint: Callable[[Callable[[], list[NDArray]], float], None] | None = None,
     sectors: Sectors | None = None,
 ) -> BlockSolution:
     """Solve ``A X = B`` for every sector until the amplitudes are good enough.
@@ -100,6 +101,8 @@ def solve_block(
         Largest number of blocks of products.
     progress : callable(error, residual), optional
         Called after every block of products.
+    checkpoint : callable(fields, products), optional
+        Called likewise; `fields()` makes the best fields so far, as a later start.
     sectors : Sectors, optional
         Those of `incident`; the parity classes if not given.
 
@@ -177,6 +180,10 @@ def solve_block(
             progress(error, residual)
         if error <= tolerance:
             break
+        if checkpoint is not None:
+            checkpoint(
+                lambda: [iterate.fields + iterate.residual for iterate in iterates], used / n_wave
+            )
         if len(history) > 8 and error > 0.9 * history[-5]:
             break
     if not fresh:

@@ -15,6 +15,7 @@ breaks the signature, a cut breaks the length, any changed bit breaks the digest
 
 from __future__ import annotations
 
+import errno
 import hashlib
 import json
 import struct
@@ -84,6 +85,10 @@ def read_records(path: Path | str) -> list[CaseRecord]:
         content = path.read_bytes()
     except FileNotFoundError:
         raise IntegrityError(f"{path}: the case file is missing") from None
+    except OSError as error:
+        if error.errno != errno.EIO:
+            raise
+        raise IntegrityError(f"{path}: the medium fails ({error.strerror})") from None
     payload = _checked_payload(path, content)
     try:
         return [CaseRecord.from_arrays(arrays) for arrays in _decode(zlib.decompress(payload))]
@@ -92,6 +97,34 @@ def read_records(path: Path | str) -> list[CaseRecord]:
         raise IntegrityError(
             f"{path}: the content is whole but is no set of case records ({error})"
         ) from error
+
+
+def check_file(path: Path, *, digest: bool = True) -> None:
+    """Check that a case file is whole and as it was written, without decoding it.
+
+    Parameters
+    ----------
+    path : Path
+    digest : bool
+        Whether to read all of it, or only its first bytes and its length.
+
+    Raises
+    ------
+    IntegrityError
+        Naming the file and what is wrong.
+    """
+    if digest:
+        _checked_payload(path, path.read_bytes())
+        return
+    head = len(SIGNATURE) + _FIXED.size
+    with open(path, "rb") as stream:
+        content = stream.read(head)
+    expected = 0
+    if len(content) == head and content.startswith(SIGNATURE):
+        expected = head + _FIXED.unpack_from(content, len(SIGNATURE))[1]
+    if path.stat().st_size != expected:
+        # Rare: the whole check finds the words.
+        _checked_payload(path, path.read_bytes())
 
 
 def _checked_payload(path: Path, content: bytes) -> bytes:

@@ -75,6 +75,26 @@ class Layout:
         return self.folder / "state"
 
     @property
+    def outline(self) -> Path:
+        """The plan in short, for those who need not expand the campaign."""
+        return self.state / "plan.json"
+
+    @property
+    def failed(self) -> Path:
+        """One note for every case that gave no result, by digest."""
+        return self.state / "failed"
+
+    @property
+    def checkpoints(self) -> Path:
+        """Best iterates of cases that take long."""
+        return self.state / "checkpoints"
+
+    @property
+    def library(self) -> Path:
+        """Solved cases of all campaigns in the same folder of results."""
+        return self.folder.parent / ".case_library"
+
+    @property
     def progress(self) -> Path:
         """Heartbeats of the solver jobs."""
         return self.state / "progress"

@@ -38,6 +38,14 @@ class Heartbeat:
     pid, host : int, str
     exit_code, message : int or None, str
         Of a failed job.
+    solved, seconds : int, float
+        Cases that this job solved, and the time they took [s].
+    reused : int
+        Cases taken from the case library.
+    cases_failed : int
+        Cases without a result.
+    peak_bytes : int
+        Largest memory in use while a case was solved [bytes].
     """
 
     job: str
@@ -53,6 +61,11 @@ class Heartbeat:
     host: str = ""
     exit_code: int | None = None
     message: str = ""
+    solved: int = 0
+    seconds: float = 0.0
+    reused: int = 0
+    cases_failed: int = 0
+    peak_bytes: int = 0
 
     @property
     def alive(self) -> bool:
@@ -139,6 +152,8 @@ class Meter:
         self._cases_of = dict(cases_of)
         # A finished job reports no more: its heartbeat is read once.
         self._finished: dict[str, float] = {}
+        self.beats: dict[str, Heartbeat] = {}
+        """The last report of every job that has reported, at the last look."""
         self._cases_done: dict[str, int] = {}
 
     def measure(self) -> Progress:
@@ -154,6 +169,8 @@ class Meter:
                 continue
             path = self._layout.progress / f"{job}.json"
             heartbeat = read_heartbeat(path) if job in reported else None
+            if heartbeat is not None:
+                self.beats[job] = heartbeat
             if job in published:
                 self._finished[job] = heartbeat.products if heartbeat else 0.0
                 self._cases_done[job] = count
@@ -178,6 +195,10 @@ class Meter:
             failed=tuple(failed),
             products=products + sum(self._finished.values()),
         )
+
+    def cases_done_of(self, job: str) -> int:
+        """Cases of a job that were done at the last look."""
+        return self._cases_done.get(job, 0)
 
     def share_done(self, seconds: Mapping[str, float]) -> float:
         """Return the share, 0 to 1, of the predicted work that was done at the last look.

@@ -69,6 +69,7 @@ def solve_level(
     dtype: type = np.complex64,
     threads: int = 1,
     progress: Callable[[float, float], None] | None = None,
+    checkpoint: Callable[[Callable[[], StoredFields], float], None] | None = None,
 ) -> LevelResult:
     """Solve all incident waves of one case on one lattice.
 
@@ -88,6 +89,9 @@ def solve_level(
     dtype : complex64 (default) or complex128
     threads : int
     progress : callable(error, residual), optional
+    checkpoint : callable(fields, products), optional
+        Called after every block of products but the last; `fields()` makes a start from
+        which the solve can go on, `products` is how many a wave have been used.
     """
     kd = size_parameter * lattice.spacing
     materials = indices if isinstance(indices, Sequence) else [indices]
@@ -96,8 +100,26 @@ def solve_level(
     sectors = Sectors(matrix, exchange_of_cells(lattice, tensors))
     incident = incident_block(lattice, matrix, size_parameter, wave_basis(n_max), sectors)
     first = None if start is None else start(incident.norms)
+
+    def per_norm(blocks: list[NDArray]) -> StoredFields:
+        rows = [
+            block / norm[:, None].astype(block.real.dtype)
+            for block, norm in zip(blocks, incident.norms, strict=True)
+        ]
+        return StoredFields(size_parameter, rows)
+
+    def keep(blocks: Callable[[], list[NDArray]], products: float) -> None:
+        if checkpoint is not None:
+            checkpoint(lambda: per_norm(blocks()), products)
+
     solution = solve_block(
-        matrix, incident.rows, tolerance, first, progress=progress, sectors=sectors
+        matrix,
+        incident.rows,
+        tolerance,
+        first,
+        progress=progress,
+        checkpoint=keep,
+        sectors=sectors,
     )
     raw = _of_particle(lattice, n_max, incident, solution.amplitudes)
     transition = project(raw, lattice.symmetry)
@@ -110,13 +132,7 @@ def solve_level(
         asymmetry=float(lost),
         absorption_efficiency=_absorption(sectors, solution.fields, size_parameter),
         solution=solution,
-        fields=StoredFields(
-            size_parameter,
-            [
-                (rows / norm[:, None].astype(rows.real.dtype))
-                for rows, norm in zip(solution.fields, incident.norms, strict=True)
-            ],
-        ),
+        fields=per_norm(solution.fields),
         cells=len(lattice.cell),
         memory_bytes=matrix.nbytes + 3 * sum(rows.nbytes for rows in incident.rows),
         arithmetic_cells=tensors.arithmetic,

@@ -1,0 +1,68 @@
+"""What one case may take, and what this machine has."""
+
+from __future__ import annotations
+
+import os
+import resource
+import sys
+from dataclasses import dataclass
+from pathlib import Path
+
+SHARE_OF_MEMORY = 0.9
+_NO_LIMIT = 1 << 60
+
+
+@dataclass(frozen=True)
+class Limits:
+    """Bounds on a single case.
+
+    Attributes
+    ----------
+    memory_bytes : float
+        A case predicted to need more is not started.
+    seconds : float
+        A case that takes longer is given up.
+    checkpoint_seconds : float
+        Time between savings of the best iterate.
+    """
+
+    memory_bytes: float = float("inf")
+    seconds: float = float("inf")
+    checkpoint_seconds: float = 300.0
+
+
+class OutOfTime(Exception):
+    """The case takes longer than allowed."""
+
+
+def machine_bytes() -> int:
+    """Memory of this machine [bytes], or of the control group that bounds this process."""
+    whole = os.sysconf("SC_PAGE_SIZE") * os.sysconf("SC_PHYS_PAGES")
+    for name in ("memory.max", "memory/memory.limit_in_bytes"):
+        try:
+            text = (Path("/sys/fs/cgroup") / name).read_text().strip()
+        except OSError:
+            continue
+        if text.isdigit() and int(text) < _NO_LIMIT:
+            whole = min(whole, int(text))
+    return whole
+
+
+def forget_peak() -> None:
+    """Start the measurement of this process's peak memory anew, where the system can."""
+    try:
+        Path("/proc/self/clear_refs").write_text("5")
+    except OSError:
+        return
+
+
+def peak_bytes() -> int:
+    """Peak memory of this process [bytes] since `forget_peak`, or since it began."""
+    try:
+        for line in Path("/proc/self/status").read_text().splitlines():
+            if line.startswith("VmHWM:"):
+                return int(line.split()[1]) * 1024
+    except OSError:
+        pass
+    unit = 1 if sys.platform == "darwin" else 1024
+    return resource.getrusage(resource.RUSAGE_SELF).ru_maxrss * unit
