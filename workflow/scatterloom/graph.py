@@ -16,12 +16,11 @@ from pathlib import Path
 from typing import Any
 
 from scatterloom import campaign as campaigns
-from scatterloom.bulk.coefficients import FEWEST_ANGLES
 from scatterloom.campaign.effort import NUMERICS_REVISION
 from scatterloom.campaign.expand import Grid, expand
 from scatterloom.campaign.plan import Job, plan
 from scatterloom.errors import IntegrityError
-from scatterloom.outline import outline_of, table_digest
+from scatterloom.outline import exchange_possible, outline_of, table_digest
 from scatterloom.store.atomic import sweep_abandoned, write_if_changed
 from scatterloom.store.commit import commit_record, verify_folder
 from scatterloom.store.layout import Layout, results_root
@@ -94,9 +93,7 @@ class Graph:
     @property
     def has_exchange(self) -> bool:
         """Whether populations can be expanded: scattering angles over the whole sphere."""
-        angles = self.campaign.angles_deg
-        whole = len(angles) >= FEWEST_ANGLES and angles[0] == 0.0 and angles[-1] == 180.0
-        return self.has_populations and bool(whole)
+        return exchange_possible(self.campaign)
 
     @property
     def cases_of(self) -> dict[str, int]:

@@ -18,6 +18,7 @@ from typing import TYPE_CHECKING
 
 import scatterloom
 from scatterloom import campaign as campaigns
+from scatterloom.bulk.coefficients import FEWEST_ANGLES
 from scatterloom.campaign.case import canonical_json
 from scatterloom.campaign.effort import NUMERICS_REVISION
 from scatterloom.campaign.outlook import job_bytes
@@ -106,6 +107,11 @@ class Outline:
         return bool(self.campaign.model.populations)
 
     @property
+    def has_exchange(self) -> bool:
+        """Whether populations can be expanded: scattering angles over the whole sphere."""
+        return exchange_possible(self.campaign)
+
+    @property
     def cases_of(self) -> dict[str, int]:
         """Number of cases of every job."""
         return {name: job.cases for name, job in self.jobs.items()}
@@ -158,6 +164,13 @@ def outline_of(graph: Graph) -> Outline:
 
 def _ladder(owner: Case | Job) -> tuple[str, tuple[complex, ...]]:
     return canonical_json(dict(owner.shape)), (owner.index, *owner.inner_indices)
+
+
+def exchange_possible(campaign: campaigns.Campaign) -> bool:
+    """Whether a campaign has populations, and scattering angles over the whole sphere."""
+    angles = campaign.angles_deg
+    whole = len(angles) >= FEWEST_ANGLES and angles[0] == 0.0 and angles[-1] == 180.0
+    return bool(campaign.model.populations) and bool(whole)
 
 
 def table_digest(campaign: campaigns.Campaign) -> str:
