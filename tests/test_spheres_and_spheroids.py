@@ -80,7 +80,8 @@ def check_matrix(case, angles, exact):
         assert np.abs(difference).max() < 0.01, name
         # what is exactly zero or one is known to rounding, as the exact values are
         inside.append(np.abs(difference) <= ratio_width[:, row, column] + 1e-7)
-    # half widths are 95 % ones; a single case may fall somewhat short of that
+    # half widths are 95 % ones over many cases; a single one may fall well short of that
+    # (column "worst case" of the calibration benchmark)
     return np.concatenate(inside)
 
 
@@ -102,7 +103,7 @@ def test_sphere(solved, x):
         name: sign * matrix[:, row, column] / matrix[:, 0, 0]
         for name, (row, column, sign) in RATIOS.items()
     }
-    assert np.mean(check_matrix(case, angles, exact)) > 0.8
+    assert np.mean(check_matrix(case, angles, exact)) > 0.75
     assert case.scalars["extinction_efficiency"][0] == pytest.approx(
         ball.extinction_efficiency, rel=5e-3
     )
@@ -129,7 +130,7 @@ def test_spheroid(solved, which):
     rows = MATRICES[which]
     angles = np.array([float(r["angle_deg"]) for r in rows])
     exact = {name: np.array([float(r[name]) for r in rows]) for name in ("F11", *RATIOS)}
-    assert np.mean(check_matrix(case, angles, exact)) > 0.8
+    assert np.mean(check_matrix(case, angles, exact)) > 0.75
 
 
 def test_bars_hold_over_all_spheroids(solved):

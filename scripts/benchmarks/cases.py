@@ -7,11 +7,13 @@ from collections.abc import Mapping, Sequence
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from scatterloom.attempts import Task
 from scatterloom.attempts import solve_case as solve_attempts
 from scatterloom.campaign import effort
-from scatterloom.particle.lattice import Lattice
+from scatterloom.campaign.geometry import extents
+from scatterloom.particle.lattice import Lattice, lattice
 from scatterloom.particle.shapes import Shape, from_spec
 from scatterloom.scattering.case import Asked, combine_levels
 from scatterloom.scattering.record import CaseRecord
@@ -25,7 +27,7 @@ ASKED = Asked(f11_relative=0.02, ratio_absolute=0.01, efficiency_relative=0.005)
 def solve_case(
     shape: Shape,
     lattices: Sequence[Lattice],
-    index: complex,
+    index: complex | Sequence[complex],
     x: float,
     anchors: Sequence[Sequence[LevelResult]] = (),
     threads: int = 1,
@@ -39,7 +41,7 @@ def solve_case(
                 grid,
                 index,
                 x,
-                effort.n_max(tuple(shape.half_axes), x),
+                effort.n_max((*shape.half_extents, shape.circumscribed_radius), x),
                 effort.operator_tolerance(ASKED.ratio_absolute),
                 start=interpolated_start(neighbours, x) if neighbours else None,
                 threads=threads,
@@ -52,7 +54,7 @@ def record_of(
     shape: Shape,
     cells: Sequence[int],
     lattices: Sequence[Lattice],
-    index: complex,
+    index: complex | Sequence[complex],
     x: float,
     levels: Sequence[LevelResult],
 ) -> CaseRecord:
@@ -74,20 +76,74 @@ def record_of(
     )
 
 
-def cold_record(spec: Mapping[str, Any], index: complex, x: float, threads: int = 1) -> CaseRecord:
-    """The record of a case solved from nothing at the default accuracy, as a job does it."""
-    shape = from_spec(spec)
+def first_levels(
+    spec: Mapping[str, Any], indices: Sequence[complex], x: float, f11_relative: float
+) -> tuple[int, ...]:
+    """The lattices a campaign begins such a case with."""
+    return effort.levels(extents(spec).lengths, max(indices, key=abs), x, f11_relative)
+
+
+def predicted_seconds(
+    spec: Mapping[str, Any], indices: Sequence[complex], x: float, f11_relative: float
+) -> float:
+    """Seconds on one core for the first lattices of a case."""
+    reach = extents(spec)
+    index = max(indices, key=abs)
+    default = effort.levels(reach.lengths, index, x)
+    asked = first_levels(spec, indices, x, f11_relative)
+    more = sum(n**3 for n in asked) / sum(n**3 for n in default)
+    return more * effort.cost(reach.half, index, x, cold=True)
+
+
+def cold_record(
+    spec: Mapping[str, Any],
+    indices: Sequence[complex],
+    x: float,
+    threads: int = 1,
+    asked: Asked = ASKED,
+) -> CaseRecord:
+    """The record of a case solved from nothing, refined as a job does it.
+
+    Parameters
+    ----------
+    spec : mapping
+        Shape, as a campaign describes it.
+    indices : sequence of complex
+        From outside inwards.
+    x : float
+        Size parameter.
+    threads : int
+    asked : Asked
+        Accuracy.
+    """
+    index, *inner = indices
     task = Task(
         name="benchmark",
         kind="anchors",
-        shape=shape,
+        shape=from_spec(spec),
         shape_json=json.dumps(spec),
         index=index,
-        cells=effort.levels(shape.axes, index, x, ASKED.f11_relative),
+        inner_indices=tuple(inner),
+        cells=first_levels(spec, indices, x, asked.f11_relative),
         refinements=effort.MOST_REFINEMENTS,
-        tolerance=effort.operator_tolerance(ASKED.ratio_absolute),
-        asked=ASKED,
+        tolerance=effort.operator_tolerance(asked.ratio_absolute),
+        asked=asked,
         threads=threads,
     )
     record, _ = solve_attempts(task, "", x, (), lambda size, residual: None)
     return record
+
+
+def turned_record(
+    spec: Mapping[str, Any],
+    indices: Sequence[complex],
+    x: float,
+    rotation: NDArray[np.float64],
+    threads: int = 1,
+) -> CaseRecord:
+    """The record of a case on the first lattices, turned against the particle; not refined."""
+    shape = from_spec(spec)
+    cells = first_levels(spec, indices, x, ASKED.f11_relative)
+    lattices = [lattice(shape, n, rotation) for n in cells]
+    levels = solve_case(shape, lattices, indices, x, threads=threads)
+    return record_of(shape, cells, lattices, indices, x, levels)

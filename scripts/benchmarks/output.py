@@ -23,11 +23,14 @@ class Result:
         What a reader must know to judge the figures.
     draw : callable(path) or None
         Draws the picture.
+    more : mapping of str to list of dict
+        Further tables by title.
     """
 
     rows: Sequence[Mapping[str, Any]]
     notes: Sequence[str] = ()
     draw: Callable[[Path], None] | None = field(default=None, repr=False)
+    more: Mapping[str, Sequence[Mapping[str, Any]]] = field(default_factory=dict)
 
 
 def table(rows: Sequence[Mapping[str, Any]]) -> list[str]:
@@ -49,6 +52,16 @@ def _text(value: Any) -> str:
     return str(value)
 
 
+def markdown_table(rows: Sequence[Mapping[str, Any]]) -> list[str]:
+    """Lines of a table in Markdown; a bar in a text must not end its cell."""
+    names = list(rows[0])
+    lines = ["| " + " | ".join(key.replace("_", " ") for key in names) + " |"]
+    lines.append("|" + "---:|" * len(names))
+    for row in rows:
+        lines.append("| " + " | ".join(_text(row[k]).replace("|", "\\|") for k in names) + " |")
+    return lines
+
+
 def page(
     name: str, title: str, machine: Mapping[str, Any], result: Result, picture: bool
 ) -> list[str]:
@@ -60,10 +73,9 @@ def page(
         f"{title[0].upper()}{title[1:]}.",
         "",
     ]
-    names = list(result.rows[0])
-    lines.append("| " + " | ".join(key.replace("_", " ") for key in names) + " |")
-    lines.append("|" + "---:|" * len(names))
-    lines += ["| " + " | ".join(_text(row[key]) for key in names) + " |" for row in result.rows]
+    lines += markdown_table(result.rows)
+    for heading, rows in result.more.items():
+        lines += ["", f"## {heading[0].upper()}{heading[1:]}", "", *markdown_table(rows)]
     lines += ["", *(f"- {note}" for note in result.notes), ""]
     if picture:
         lines += [f"![{title}]({name}.png)", ""]
@@ -88,9 +100,17 @@ def write_result(
 ) -> None:
     """Print a result; write NAME.json, NAME.md and, where there is something to see, NAME.png."""
     print("\n".join(table(result.rows)))
+    for heading, rows in result.more.items():
+        print(f"\n{heading}", *table(rows), sep="\n")
     for note in result.notes:
         print(f"- {note}")
-    content = {"benchmark": name, "machine": machine, "rows": result.rows, "notes": result.notes}
+    content = {
+        "benchmark": name,
+        "machine": machine,
+        "rows": result.rows,
+        "more": result.more,
+        "notes": result.notes,
+    }
     text = json.dumps(content, indent=1, allow_nan=False) + "\n"
     listed = "\n".join(page(name, title, machine, result, result.draw is not None)) + "\n"
     for suffix, body in (("json", text), ("md", listed)):

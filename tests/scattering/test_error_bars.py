@@ -61,7 +61,8 @@ def test_a_deviation_that_crosses_zero_is_not_small_there_by_merit():
     raw = SCALE[CAUSES[0]] * np.abs(matrices[1] - matrices[0])[:, 0, 0]
     crossing = np.argmin(raw[20:160]) + 20
     assert raw[crossing] < 0.05 * raw.max()
-    assert element[crossing, 0, 0] > 5 * raw[crossing]
+    # The window is one degree to either side here, where the deviation is three times larger.
+    assert element[crossing, 0, 0] > 2.5 * raw[crossing]
 
 
 def test_half_widths_at_any_angle():
