@@ -4,7 +4,7 @@ import math
 
 import numpy as np
 import pytest
-from hypothesis import given, settings
+from hypothesis import example, given, settings
 from hypothesis import strategies as st
 from scipy import integrate
 from scipy.spatial import ConvexHull, HalfspaceIntersection
@@ -38,6 +38,8 @@ VECTORS = st.tuples(*[st.floats(-3.0, 3.0)] * 3)
 
 @settings(max_examples=60, deadline=None)
 @given(spec=SPECS, turn=VECTORS, shift=VECTORS, cells=st.integers(1, 14), core=st.floats(0.1, 0.95))
+@example(spec=SPHERE, turn=(0.0, 0.0, 0.0), shift=(1.5, 0.5, 0.5), cells=1, core=0.5)
+@example(spec=SPHERE, turn=(0.0, 0.0, 2.0), shift=(0.5, 0.25, 1.5), cells=2, core=0.25)
 def test_volumes_and_closed_surfaces(spec, turn, shift, cells, core):
     shape = from_spec({**spec, "core_radius_fraction": core})
     rotation = Rotation.from_rotvec(turn).as_matrix()
@@ -55,8 +57,8 @@ def test_volumes_and_closed_surfaces(spec, turn, shift, cells, core):
     for part in ((0, -1), (1, 0)):
         chosen = [i for i, pair in enumerate(grid.interfaces) if pair == part]
         total = grid.area_vector[chosen].sum(axis=(0, 1))
-        # (a core within one cell has no mean normal at all)
-        assert np.abs(total).max() <= 1e-6 * np.abs(grid.area_vector[chosen]).sum()
+        # (a core within one cell has no mean normal at all: what is left is rounding)
+        assert np.abs(total).max() <= 1e-6 * np.abs(grid.area_vector[chosen]).sum() + 1e-13
 
 
 @pytest.mark.parametrize("spec", [SPHERE, OBLATE, TRIAXIAL], ids=lambda s: s["kind"])

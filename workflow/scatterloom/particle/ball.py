@@ -115,7 +115,8 @@ def _cells(edges, origin, box):  # type: ignore[no-untyped-def]
             half = 0.5 * (a * edges[0] + b * edges[1] + edges[2])
             reach2 = max(reach2, np.dot(half, half))
     farthest = (1.0 + math.sqrt(reach2)) ** 2
-    nearest = max(0.0, 1.0 - math.sqrt(reach2)) ** 2
+    # A cell that reaches beyond the ball is never full, not even around its centre.
+    nearest = (1.0 - math.sqrt(reach2)) ** 2 if reach2 < 1.0 else -1.0
     wet = np.empty(2)
     for i in range(box[0]):
         for j in range(box[1]):
