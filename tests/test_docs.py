@@ -27,6 +27,7 @@ PACKAGE = ROOT / "workflow" / "scatterloom"
 RESULTS = ROOT / "workflow" / "docs" / "benchmarks"
 UNSEEN = {".venv", ".git", ".snakemake", "results", ".pytest_cache", ".hypothesis"}
 ROOMS = (
+    "solids",
     "campaign",
     "particle",
     "dipole",

@@ -1,0 +1,1 @@
+"""Geometry of particles as closed surfaces, before any lattice."""
