@@ -3,6 +3,7 @@
 import math
 
 import numpy as np
+
 from scatterloom.solids.mesh import MEDIUM, Interface, Mesh, Solid
 
 CORNERS = np.array([[0.0, 0.0, 0.0], [1.0, 0.0, 0.0], [0.0, 2.0, 0.0], [0.0, 0.0, 3.0]])
