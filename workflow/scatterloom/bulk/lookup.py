@@ -121,11 +121,11 @@ class Table:
         self._index = n + 1j * k
         self._core = _cores(self.dataset)
         self._shapes = _shapes(self.dataset.attrs, self.particles)
-        # The same at every wavelength and size: 2 pi r n_medium / wavelength.
-        x, r = (np.asarray(self.dataset[v].values)[0, 0] for v in ("size_parameter", "radius_um"))
+        # Of the medium at every wavelength, from x = 2 pi r n / wavelength.
+        x, r = (np.asarray(self.dataset[v].values)[:, 0] for v in ("size_parameter", "radius_um"))
         steps = np.diff(np.log(np.asarray(self.dataset["size_parameter"].values)), axis=1)
         self._step = float(np.median(steps)) if steps.size else 0.0
-        self._medium = float(x * self.wavelength_um[0] / (2.0 * np.pi * r))
+        self._medium = x * self.wavelength_um / (2.0 * np.pi * r)
 
     def at(
         self,
@@ -165,7 +165,9 @@ class Table:
         core = self._core_at(particle, wavelength_um)
         m = index if index is not None else self._index_at(particle, wavelength_um)
         if radius_um is not None and wavelength_um is not None:
-            x = 2.0 * np.pi * radius_um * self._medium / wavelength_um
+            logs = np.log([wavelength_um, *self.wavelength_um])
+            medium = float(np.interp(logs[0], logs[1:], self._medium))
+            x = 2.0 * np.pi * radius_um * medium / wavelength_um
         else:
             x = float(size_parameter or 0.0)
         return self._interpolate(particle, x, complex(m), core)

@@ -51,7 +51,7 @@ def check_names(document: Document) -> list[Problem]:
 
 
 def unused_materials(document: Document) -> list[Problem]:
-    """Warn of materials that no particle is made of."""
+    """Warn of materials that nothing is made of."""
     used = {name for _, name in _materials(document)}
     return [
         document.problem(
@@ -102,7 +102,7 @@ def check_coverage(
     populations: Sequence[Population],
     sizes: Sizes,
     wavelengths_um: Sequence[float],
-    medium_index: float,
+    medium_index: Sequence[float],
 ) -> list[Problem]:
     """Warn of populations that reach beyond the sizes of the table.
 
@@ -147,7 +147,7 @@ def check_densities(document: Document, model: CampaignModel) -> list[Problem]:
 
 
 def _radius_ranges(
-    sizes: Sizes, wavelengths_um: Sequence[float], medium_index: float
+    sizes: Sizes, wavelengths_um: Sequence[float], medium_index: Sequence[float]
 ) -> Iterator[tuple[float, float, float]]:
     if sizes.radius_um is not None:
         values = grid_values(sizes.radius_um)
@@ -155,8 +155,8 @@ def _radius_ranges(
         return
     assert sizes.size_parameter is not None
     values = grid_values(sizes.size_parameter)
-    for wavelength in wavelengths_um:
-        scale = decimal(wavelength) / decimal(6.283185307179586 * medium_index)
+    for wavelength, index in zip(wavelengths_um, medium_index, strict=True):
+        scale = decimal(wavelength) / decimal(6.283185307179586 * index)
         yield wavelength, float(values[0] * scale), float(values[-1] * scale)
 
 
@@ -177,13 +177,31 @@ def _texts(document: Document, section: str, key: str) -> list[tuple[KeyPath, st
 
 
 def _materials(document: Document) -> list[tuple[KeyPath, str]]:
-    """Return the material of every particle and of every coating."""
+    """Return every place that names a material: particles, coatings, the medium, mixtures."""
     found = _texts(document, "particles", "material")
     for position, entry in enumerate(_entries(document, "particles")):
         coating = entry.get("coating")
         name = coating.get("material") if isinstance(coating, dict) else None
         if isinstance(name, str):
             found.append((("particles", position, "coating", "material"), name))
+    medium = document.tree.get("medium")
+    if isinstance(medium, dict) and isinstance(medium.get("material"), str):
+        found.append((("medium", "material"), medium["material"]))
+    return found + _parts_of_mixtures(document)
+
+
+def _parts_of_mixtures(document: Document) -> list[tuple[KeyPath, str]]:
+    found: list[tuple[KeyPath, str]] = []
+    materials = document.tree.get("materials")
+    for owner, entry in materials.items() if isinstance(materials, dict) else ():
+        mix = entry.get("mix") if isinstance(entry, dict) else None
+        if not isinstance(mix, dict):
+            continue
+        if isinstance(mix.get("host"), str):
+            found.append((("materials", owner, "mix", "host"), mix["host"]))
+        inclusions = mix.get("inclusions")
+        for name in inclusions if isinstance(inclusions, dict) else ():
+            found.append((("materials", owner, "mix", "inclusions", name), name))
     return found
 
 

@@ -83,7 +83,7 @@ def expand(campaign: Campaign) -> Grid:
         materials = particle.materials
         for w in range(n_wavelength):
             indices = tuple(
-                _relative(campaign.indices[name][w], model.medium.index) for name in materials
+                _relative(campaign.indices[name][w], campaign.medium_index[w]) for name in materials
             )
             shape, indices = _body(particle, indices)
             outer[p, w] = indices[0]
@@ -127,20 +127,20 @@ def _sizes(campaign: Campaign) -> tuple[NDArray[np.float64], NDArray[np.float64]
     model = campaign.model
     with localcontext(prec=DIGITS):
         wavelengths = [decimal(w) for w in model.wavelengths_um]
-        scale = TWO_PI * decimal(model.medium.index)
+        scales = [TWO_PI * decimal(index) for index in campaign.medium_index]
         if model.sizes.radius_um is not None:
             radii = [grid_values(model.sizes.radius_um)] * len(wavelengths)
             # The ratio r / wavelength comes first: it is the same decimal for equal sizes.
             sizes = [
                 [scale * (r / wavelength) for r in row]
-                for wavelength, row in zip(wavelengths, radii, strict=True)
+                for scale, wavelength, row in zip(scales, wavelengths, radii, strict=True)
             ]
         else:
             assert model.sizes.size_parameter is not None
             sizes = [grid_values(model.sizes.size_parameter)] * len(wavelengths)
             radii = [
                 [x * wavelength / scale for x in row]
-                for wavelength, row in zip(wavelengths, sizes, strict=True)
+                for scale, wavelength, row in zip(scales, wavelengths, sizes, strict=True)
             ]
         return _rounded(sizes), _rounded(radii)
 

@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from pydantic import TypeAdapter, ValidationError
 from ruamel.yaml import YAML
 
-from scatterloom.campaign import crosscheck, optics
+from scatterloom.campaign import crosscheck, database, optics
 from scatterloom.campaign.complaints import complaints
 from scatterloom.campaign.document import Document, read
 from scatterloom.campaign.grids import grid_values
@@ -35,6 +35,8 @@ class Campaign:
         Its content with all defaults filled in.
     indices : mapping of str to tuple of complex
         Index n + ik of each material in use, one value a wavelength (not relative).
+    medium_index : tuple of float
+        Index of the host medium, one value a wavelength.
     warnings : tuple of Problem
         What is allowed but probably not meant.
     """
@@ -42,6 +44,7 @@ class Campaign:
     path: Path
     model: CampaignModel
     indices: Mapping[str, tuple[complex, ...]]
+    medium_index: tuple[float, ...]
     warnings: tuple[Problem, ...]
     spectra: Mapping[str, Spectrum] = field(repr=False)
 
@@ -64,8 +67,13 @@ class Campaign:
         content: dict[str, Any] = self.model.model_dump(by_alias=True, exclude_none=True)
         lines = [f"# Campaign {self.name} with all defaults, as it was run."]
         for name, spectrum in self.spectra.items():
-            table = content["materials"][name].pop("table")
-            lines.append(f"# The spectrum of '{name}' was read from {Path(table).name!r}.")
+            material = content["materials"][name]
+            if "table" in material:
+                origin = repr(Path(material.pop("table")).name)
+            else:
+                origin = database.described(material.pop("database"))
+                material.pop("k", None)
+            lines.append(f"# The spectrum of '{name}' was read from {origin}.")
             content["materials"][name]["spectrum"] = [
                 {"wavelength_um": wavelength, "n": n, "k": k}
                 for wavelength, n, k in zip(
@@ -105,8 +113,8 @@ def load(path: str | Path) -> Campaign:
     problems += faults
     size_tables, faults = read_size_tables(document, Path(path).parent)
     problems += faults
-    indices, faults = _indices(document, sections, spectra)
-    problems += faults
+    constants = _constants(document, sections, spectra)
+    problems += constants.problems
     if {"particles", "wavelengths_um", "sizes"} <= sections.keys():
         problems += crosscheck.check_extent(
             document,
@@ -119,14 +127,19 @@ def load(path: str | Path) -> Campaign:
     if problems or model is None:
         raise BadInput(_in_order(problems, document))
     model = with_points(model, size_tables)
+    assert constants.medium is not None  # else there were problems
     warnings = [
+        *constants.warnings,
+        *optics.mixing_warnings(document, model.materials),
         *crosscheck.unused_materials(document),
         *crosscheck.doubtful_wavelengths(document, model.wavelengths_um),
         *crosscheck.check_coverage(
-            document, model.populations, model.sizes, model.wavelengths_um, model.medium.index
+            document, model.populations, model.sizes, model.wavelengths_um, constants.medium
         ),
     ]
-    return Campaign(Path(path), model, indices, tuple(_in_order(warnings, document)), spectra)
+    spectra = {**spectra, **constants.looked_up}
+    told = tuple(_in_order(warnings, document))
+    return Campaign(Path(path), model, constants.indices, constants.medium, told, spectra)
 
 
 def _sections(
@@ -147,24 +160,18 @@ def _sections(
     return sections
 
 
-def _indices(
+def _constants(
     document: Document, sections: dict[str, Any], spectra: Mapping[str, Spectrum]
-) -> tuple[dict[str, tuple[complex, ...]], list[Problem]]:
+) -> optics.Constants:
     if not {"materials", "wavelengths_um"} <= sections.keys():
-        return {}, []
+        return optics.Constants({}, None, {}, [], [])
     materials = sections["materials"]
     used = list(materials)
     if "particles" in sections:
         wanted = {name for particle in sections["particles"] for name in particle.materials}
         used = [name for name in materials if name in wanted]
-    medium = sections.get("medium")
     return optics.resolve(
-        document,
-        materials,
-        used,
-        spectra,
-        sections["wavelengths_um"],
-        medium.index if medium is not None else None,
+        document, materials, used, spectra, sections["wavelengths_um"], sections.get("medium")
     )
 
 

@@ -6,83 +6,19 @@ the reference page are made from them.
 
 from __future__ import annotations
 
-from typing import Annotated, Any, Literal
+from typing import Annotated, Literal
 
 from pydantic import field_validator, model_validator
 
 from scatterloom.campaign.grids import AngleGrid, SizeGrid, ascending
+from scatterloom.campaign.materials import DENSITY_ADVICE, Material, Medium, density
 from scatterloom.campaign.populations import Population
 from scatterloom.campaign.sections import NAME_FORM, Name, Section, check_names, setting, wrong
 from scatterloom.campaign.shapes import Shape
 
 Wavelength = Annotated[float, setting("One wavelength.", unit="um", ge=1e-3, le=1e6)]
-_N: dict[str, Any] = {"unit": "1", "ge": 0.01, "le": 10.0}
-_K: dict[str, Any] = {"unit": "1", "ge": 0.0, "le": 10.0}
-_DENSITY = "1 g/cm3 is 1000 kg/m3"
 THINNEST = 0.02
 """Smallest radius of a core, and smallest thickness of a coating, over the particle's radius."""
-_ABSORBS = "absorption is a positive k: the index is n + ik"
-
-
-class Medium(Section):
-    """The host medium around the particles."""
-
-    index: float = setting(
-        "Refractive index of the medium at every wavelength; real, since it must not absorb.",
-        1.0,
-        unit="1",
-        ge=1.0,
-        le=5.0,
-        advice="the medium must not absorb, so its index is real",
-    )
-
-
-class SpectrumPoint(Section):
-    """Optical constants at one wavelength."""
-
-    wavelength_um: float = setting("Wavelength in vacuum.", unit="um", ge=1e-3, le=1e6)
-    n: float = setting("Real part of the refractive index.", **_N)
-    k: float = setting("Imaginary part of the refractive index.", **_K, advice=_ABSORBS)
-
-
-class Material(Section):
-    """Optical constants: `n` and `k`, or a `table` file, or a `spectrum` written out."""
-
-    n: float | None = setting("Real part of the refractive index.", None, **_N)
-    k: float | None = setting(
-        "Imaginary part of the refractive index.", None, **_K, advice=_ABSORBS
-    )
-    table: str | None = setting(
-        "CSV file with the columns wavelength_um, n, k, named relative to this file; n and k "
-        "are interpolated linearly in the logarithm of wavelength and never extrapolated.",
-        None,
-        min_length=1,
-    )
-    spectrum: list[SpectrumPoint] | None = setting(
-        "The same as `table`, written out here.", None, min_length=1
-    )
-    density_g_cm3: float | None = setting(
-        "Density, for results per mass.", None, unit="g cm-3", ge=0.001, le=30.0, advice=_DENSITY
-    )
-
-    @model_validator(mode="after")
-    def _check(self) -> Material:
-        given = [
-            name for name in ("n", "k", "table", "spectrum") if getattr(self, name) is not None
-        ]
-        if given not in (["n", "k"], ["table"], ["spectrum"]):
-            raise wrong(
-                f"a material cannot be made from {' and '.join(given) or 'nothing'}",
-                "give 'n' and 'k' (k: 0 if it does not absorb), or 'table', or 'spectrum'",
-            )
-        return self
-
-    @field_validator("spectrum")
-    @classmethod
-    def _check_spectrum(cls, value: list[SpectrumPoint] | None) -> list[SpectrumPoint] | None:
-        if value is not None:
-            ascending("spectrum", [point.wavelength_um for point in value])
-        return value
 
 
 class Coating(Section):
@@ -150,7 +86,7 @@ class Particle(Section):
         unit="g cm-3",
         ge=0.001,
         le=30.0,
-        advice=_DENSITY,
+        advice=DENSITY_ADVICE,
     )
 
     @model_validator(mode="after")
@@ -365,9 +301,9 @@ class CampaignModel(Section):
 
     def densities(self) -> dict[str, float | None]:
         """Return the density [g cm-3] of every particle by name, None where not stated."""
-        stated = {name: material.density_g_cm3 for name, material in self.materials.items()}
+        stated = {name: density(name, self.materials) for name in self.materials}
 
-        def density(particle: Particle) -> float | None:
+        def of_particle(particle: Particle) -> float | None:
             core = stated.get(particle.material)
             if particle.density_g_cm3 is not None or particle.coating is None:
                 return particle.density_g_cm3 or core
@@ -376,7 +312,7 @@ class CampaignModel(Section):
                 return None
             return volume * core + (1.0 - volume) * shell
 
-        return {particle.name: density(particle) for particle in self.particles}
+        return {particle.name: of_particle(particle) for particle in self.particles}
 
     @field_validator("wavelengths_um")
     @classmethod

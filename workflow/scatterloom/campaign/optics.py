@@ -3,10 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass
 from pathlib import Path
 
 from scatterloom.campaign.document import Document
-from scatterloom.campaign.model import Material
+from scatterloom.campaign.index_maker import IndexMaker, listed
+from scatterloom.campaign.materials import Material, Medium
 from scatterloom.campaign.spectra import Spectrum, read_spectrum
 from scatterloom.errors import BadInput, Problem
 
@@ -19,8 +21,8 @@ def read_tables(document: Document, folder: Path) -> tuple[dict[str, Spectrum], 
     materials = document.tree.get("materials")
     spectra: dict[str, Spectrum] = {}
     problems: list[Problem] = []
-    for name, entry in materials.items() if isinstance(materials, dict) else ():
-        table = entry.get("table") if isinstance(entry, dict) else None
+    for name, given in materials.items() if isinstance(materials, dict) else ():
+        table = given.get("table") if isinstance(given, dict) else None
         if not isinstance(table, str) or not table:
             continue
         try:
@@ -41,13 +43,30 @@ def read_tables(document: Document, folder: Path) -> tuple[dict[str, Spectrum], 
     return spectra, problems
 
 
-def spectrum_of(material: Material) -> Spectrum | None:
-    """Return the spectrum written out in the configuration, if that is how it is given."""
-    if material.spectrum is None:
-        return None
-    rows = [(point.wavelength_um, point.n, point.k) for point in material.spectrum]
-    wavelength, n, k = zip(*rows, strict=True)
-    return Spectrum(wavelength, n, k)
+MOST_MEDIUM_K = 1e-5
+"""Largest k of a host medium that is left out: it weakens light by 1 % over 80 wavelengths."""
+
+
+@dataclass(frozen=True)
+class Constants:
+    """Optical constants of a campaign.
+
+    Attributes
+    ----------
+    indices : mapping of str to tuple of complex
+        Index n + ik of each material in use, one value a wavelength (not relative).
+    medium : tuple of float or None
+        Index of the host medium, one value a wavelength; None if it is not known.
+    looked_up : mapping of str to Spectrum
+        What was taken from the database, at the wavelengths of the campaign.
+    problems, warnings : list of Problem
+    """
+
+    indices: dict[str, tuple[complex, ...]]
+    medium: tuple[float, ...] | None
+    looked_up: dict[str, Spectrum]
+    problems: list[Problem]
+    warnings: list[Problem]
 
 
 def resolve(
@@ -56,51 +75,93 @@ def resolve(
     used: Iterable[str],
     spectra: Mapping[str, Spectrum],
     wavelengths_um: Sequence[float],
-    medium_index: float | None,
-) -> tuple[dict[str, tuple[complex, ...]], list[Problem]]:
+    medium: Medium | None,
+) -> Constants:
     """Return the index n + ik of each used material at each wavelength, and what is wrong.
 
-    A material whose table could not be read is left out: its faults are reported already.
+    A material whose table could not be read, or that is mixed from such, is left out: the
+    faults are reported already.
     """
+    maker = IndexMaker(document, materials, spectra, wavelengths_um)
+    host, warnings = _medium(maker, medium)
     indices: dict[str, tuple[complex, ...]] = {}
-    problems: list[Problem] = []
     for name in used:
-        material = materials[name]
-        if material.n is not None and material.k is not None:
-            values = [complex(material.n, material.k)] * len(wavelengths_um)
-        else:
-            spectrum = spectra.get(name) or spectrum_of(material)
-            if spectrum is None:
-                continue
-            outside = [w for w in wavelengths_um if not spectrum.covers(w)]
-            if outside:
-                problems.append(_uncovered(document, name, material, spectrum, outside))
-                continue
-            values = [complex(*spectrum.at(w)) for w in wavelengths_um]
-        indices[name] = tuple(values)
-        problems += _unsuitable(document, name, values, wavelengths_um, medium_index)
-    return indices, problems
+        values = maker.index(name)
+        if values is not None:
+            indices[name] = values
+            maker.problems += _unsuitable(document, name, values, wavelengths_um, host)
+    return Constants(indices, host, maker.looked_up, maker.problems, warnings)
 
 
-def _uncovered(
-    document: Document, name: str, material: Material, spectrum: Spectrum, outside: list[float]
-) -> Problem:
-    key = "table" if material.table is not None else "spectrum"
-    rows = spectrum.wavelength_um
-    return document.problem(
-        ("materials", name, key),
-        f"materials.{name}.{key} does not cover {_listed(outside)}",
-        f"rows from {rows[0]:g} to {rows[-1]:g} um",
-        "add rows or drop these wavelengths: optical constants are never extrapolated",
-    )
+def _medium(
+    maker: IndexMaker, medium: Medium | None
+) -> tuple[tuple[float, ...] | None, list[Problem]]:
+    """Index of the medium at every wavelength, and warnings."""
+    if medium is None:
+        return None, []
+    if medium.material is None:
+        return (medium.index or 1.0,) * len(maker.wavelengths_um), []
+    values = maker.index(medium.material)
+    if values is None:
+        return None, []
+    pairs = list(zip(maker.wavelengths_um, values, strict=True))
+    absorbing = [(w, m) for w, m in pairs if m.imag > MOST_MEDIUM_K]
+    below = [(w, m) for w, m in pairs if m.real < 1.0]
+    for faulty, what in ((absorbing, "absorbs"), (below, "has an index below 1")):
+        if faulty:
+            wavelength, index = faulty[0]
+            maker.complain(
+                ("medium", "material"),
+                f"the medium {medium.material} {what} at {listed([w for w, _ in faulty])}",
+                f"n = {index.real:g}, k = {index.imag:g} at {wavelength:g} um",
+                f"light must reach the particles: leave out wavelengths where k is above "
+                f"{MOST_MEDIUM_K:g}, or give a constant 'index'",
+            )
+            return None, []
+    weak = max((m.imag, w) for w, m in pairs)
+    warnings = []
+    if weak[0] > 0.0:
+        warnings.append(
+            maker.document.problem(
+                ("medium", "material"),
+                f"the absorption of the medium {medium.material} is left out",
+                f"k = {weak[0]:.3g} at {weak[1]:g} um at most",
+                "results are those of particles in a clear medium of the same n",
+            )
+        )
+    return tuple(m.real for m in values), warnings
+
+
+def mixing_warnings(document: Document, materials: Mapping[str, Material]) -> list[Problem]:
+    """Warn of a Maxwell Garnett mixture whose inclusions are too many to stay apart."""
+    warnings = []
+    for name, material in materials.items():
+        mix = material.mix
+        if mix is None or mix.rule != "maxwell_garnett":
+            continue
+        total = sum(mix.inclusions.values())
+        if total > MOST_SEPARATE:
+            warnings.append(
+                document.problem(
+                    ("materials", name, "mix", "inclusions"),
+                    f"the inclusions of '{name}' take {100 * total:.3g} % of the volume",
+                    hint=f"maxwell_garnett is meant for up to about {100 * MOST_SEPARATE:g} %: "
+                    "above, 'bruggeman' may suit better",
+                )
+            )
+    return warnings
+
+
+MOST_SEPARATE = 0.3
+"""Share of the volume up to which inclusions count as separate: common practice, no source."""
 
 
 def _unsuitable(
     document: Document,
     name: str,
-    values: list[complex],
+    values: Sequence[complex],
     wavelengths_um: Sequence[float],
-    medium_index: float | None,
+    medium: tuple[float, ...] | None,
 ) -> list[Problem]:
     problems = []
     path = ("materials", name)
@@ -110,7 +171,7 @@ def _unsuitable(
     if metallic:
         wavelength, index = metallic[0]
         message = (
-            f"materials.{name} is metallic at {_listed([w for w, _ in metallic])}: "
+            f"materials.{name} is metallic at {listed([w for w, _ in metallic])}: "
             "the real part of its permittivity, n^2 - k^2, is not positive"
         )
         found = f"n = {index.real:g}, k = {index.imag:g} at {wavelength:g} um"
@@ -119,15 +180,13 @@ def _unsuitable(
             "that a boundary cuts is not reliable for metals"
         )
         problems.append(document.problem(path, message, found, hint, at_key=True))
-    invisible = [w for w, m in pairs if m == medium_index]
+    hosts = zip(pairs, medium or (), strict=medium is not None)
+    invisible = [(w, m) for (w, m), host in hosts if m == host]
     if invisible:
-        message = f"materials.{name} has the index of the medium at {_listed(invisible)}"
-        found = f"n = {medium_index:g}, k = 0"
+        message = (
+            f"materials.{name} has the index of the medium at {listed([w for w, _ in invisible])}"
+        )
+        found = f"n = {invisible[0][1].real:g}, k = 0"
         hint = "give another index: a particle like this scatters nothing"
         problems.append(document.problem(path, message, found, hint, at_key=True))
     return problems
-
-
-def _listed(wavelengths: Sequence[float]) -> str:
-    text = ", ".join(f"{w:g}" for w in wavelengths[:4])
-    return text + (f" and {len(wavelengths) - 4} more" if len(wavelengths) > 4 else "") + " um"
