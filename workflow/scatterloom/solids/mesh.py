@@ -4,11 +4,14 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
 
 Floats = NDArray[np.float64]
+
+Symmetry = Literal["sphere", "axial", "mirrors", "none"]
 
 MEDIUM = -1
 """Stands for the host medium where materials are numbered."""
@@ -86,9 +89,15 @@ class Solid:
     Attributes
     ----------
     interfaces : tuple of Interface
+    symmetry : str or None
+        Symmetry about the origin of the body that the triangles stand for, where it is known:
+        ``sphere``, ``axial`` (rotation about z, and mirrors), ``mirrors`` (x, y, z) or ``none``.
+        It is believed, and the origin stays the centre; None to find centre and mirror planes
+        from the corners.
     """
 
     interfaces: tuple[Interface, ...]
+    symmetry: Symmetry | None = None
 
     @property
     def volume(self) -> float:
@@ -110,5 +119,6 @@ class Solid:
             tuple(
                 Interface(face.mesh.moved(-centre, scale), face.inside, face.outside)
                 for face in self.interfaces
-            )
+            ),
+            self.symmetry,
         )
