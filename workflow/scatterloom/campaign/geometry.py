@@ -7,6 +7,11 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
+import numpy as np
+
+from scatterloom.solids import placing
+from scatterloom.solids.registry import GENERATORS
+
 
 @dataclass(frozen=True)
 class Extents:
@@ -51,9 +56,13 @@ def extents(spec: Mapping[str, Any]) -> Extents:
     Raises
     ------
     ValueError
-        If the kind is unknown.
+        If the kind is unknown or the body cannot be made.
     """
     core = spec.get("core_radius_fraction")
+    if spec["kind"] in GENERATORS:
+        solid = placing.placed(spec)
+        a, b, c = (float(length) for length in placing.half_extents(solid))
+        return Extents((a, b, c), placing.circumscribed_radius(solid), core)
     match spec["kind"]:
         case "sphere":
             return Extents((1.0, 1.0, 1.0), 1.0, core)
@@ -86,6 +95,9 @@ def extents(spec: Mapping[str, Any]) -> Extents:
 
 def mirror_planes(spec: Mapping[str, Any]) -> int:
     """Return how many of the planes x = 0, y = 0, z = 0 are mirror planes of a shape."""
+    if spec["kind"] in GENERATORS:
+        solid = placing.placed(spec)
+        return sum(placing.is_mirrored(solid, axis) for axis in np.eye(3))
     return 2 if spec["kind"] == "prism" and spec["sides"] % 2 else 3
 
 
@@ -102,6 +114,9 @@ def canonical(spec: Mapping[str, Any]) -> dict[str, Any]:
 
 
 def _plain(spec: Mapping[str, Any]) -> dict[str, Any]:
+    if spec["kind"] in GENERATORS:
+        own = {key: value for key, value in spec.items() if key != "core_radius_fraction"}
+        return {key: _digits(value) for key, value in own.items() if value is not None}
     match spec["kind"]:
         case "spheroid":
             ratio = _rounded(spec["equatorial_to_polar"])
@@ -121,6 +136,15 @@ def _plain(spec: Mapping[str, Any]) -> dict[str, Any]:
             ratio = _rounded(spec["height_to_width"])
             return {"kind": "prism", "sides": spec["sides"], "height_to_width": ratio}
     return {"kind": spec["kind"]}
+
+
+def _digits(value: Any) -> Any:
+    """A value of a specification with every float in it to twelve significant digits."""
+    if isinstance(value, float):
+        return _rounded(value)
+    if isinstance(value, Mapping):
+        return {key: _digits(part) for key, part in value.items() if part is not None}
+    return [_digits(part) for part in value] if isinstance(value, list | tuple) else value
 
 
 def _rounded(value: float) -> float:

@@ -60,6 +60,10 @@ class Mesh:
         sixfold = np.einsum("ij,ij->i", a, np.cross(b, c))
         return (sixfold @ (a + b + c)) / (4.0 * sixfold.sum())
 
+    def turned(self, rotation: Floats) -> Mesh:
+        """The same surface with every corner multiplied by a rotation, float64 (3, 3)."""
+        return Mesh(self.corners @ rotation.T, self.triangles, self.piece)
+
     def moved(self, shift: Floats, scale: float = 1.0) -> Mesh:
         """The same surface shifted, then scaled about the origin."""
         return Mesh((self.corners + shift) * scale, self.triangles, self.piece)
