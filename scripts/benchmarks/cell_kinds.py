@@ -28,13 +28,12 @@ def _inside(shape: Shape, scale: float, points: NDArray[np.float64]) -> NDArray[
 
 def _mixed(grid: Lattice, fraction: NDArray[np.float64]) -> Lattice:
     """Cells without interfaces: the arithmetic mean of their materials."""
-    none = np.zeros((0, len(grid.cell), 3))
     return replace(
         grid,
         fill=fraction.sum(axis=0),
         normal=np.zeros_like(grid.normal),
         area=np.zeros_like(grid.area),
-        composition=Composition(fraction=fraction, interfaces=(), area_vector=none),
+        composition=Composition(fraction=fraction, surfaces=()),
     )
 
 

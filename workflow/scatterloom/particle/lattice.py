@@ -122,7 +122,7 @@ class Lattice:
         """
         if self.composition is None:
             return (self.normal * self.area[:, None])[None]
-        out = []
+        out = [np.zeros((0, len(self.cell), 3))]
         for surface in self.composition.surfaces:
             table = np.zeros((surface.pieces, len(self.cell), 3))
             table[surface.piece, surface.cell] = surface.vector
