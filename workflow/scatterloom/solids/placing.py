@@ -18,7 +18,8 @@ Floats = NDArray[np.float64]
 
 _CLEARLY_SMALLER = 0.98
 """The centre of mass is the centre unless another one makes the sphere around smaller than
-this: wave bases grow with that sphere."""
+this: wave bases grow with that sphere. Cut at the same degree, they lose as much about either
+centre for cones, and a tenth as much about the sphere's for a rod on a block (measured)."""
 
 _SAME_PLACE = 1e-9
 """Distance of corners that count as one, over the radius of the sphere around."""
