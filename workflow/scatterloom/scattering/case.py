@@ -12,10 +12,9 @@ from numpy.typing import NDArray
 
 from scatterloom.scattering import error_bars, record
 from scatterloom.scattering.error_bars import SOLVER, TRUNCATION
-from scatterloom.scattering.extrapolate import Fit, combine, fits
-from scatterloom.scattering.observables import Observables, observe
+from scatterloom.scattering.extrapolate import combine, fits
+from scatterloom.scattering.observables import Observables, observe_combinations
 from scatterloom.transition.level import LevelResult
-from scatterloom.transition.matrix import TransitionMatrix
 
 
 @dataclass(frozen=True)
@@ -49,28 +48,27 @@ def _variants(
     levels: Sequence[LevelResult], cells: Sequence[int], symmetry: str, size_parameter: float
 ) -> list[_Variant]:
     rivals = fits(cells)
-    corrected = [level.transition for level in levels]
-    plain = [level.uncorrected for level in levels]
+    best = rivals[0].weights
+    # Amplitudes of the levels, and of two more matrices, serve all variants.
+    sources = [level.transition for level in levels]
+    names = [(fit.name, fit.cause) for fit in rivals]
+    weights = [fit.weights for fit in rivals]
+    sources.append(combine([level.uncorrected for level in levels], rivals[0]))
+    names.append(("without the last correction", SOLVER))
+    if sources[0].n_max > 1:
+        sources.append(combine(sources[: len(levels)], rivals[0]).cut(sources[0].n_max - 1))
+        names.append(("one degree less", TRUNCATION))
+    factors = np.zeros((len(names), len(sources)))
+    factors[: len(rivals), : len(levels)] = weights
+    for extra in range(len(sources) - len(levels)):
+        factors[len(rivals) + extra, len(levels) + extra] = 1.0
+    results = observe_combinations(sources, factors, symmetry, size_parameter)
     absorption = np.array([level.absorption_efficiency for level in levels])
-
-    def variant(
-        name: str, cause: str, fit: Fit, transitions: Sequence[TransitionMatrix], cut: int = 0
-    ) -> _Variant:
-        transition = combine(transitions, fit)
-        if cut:
-            transition = transition.truncated(transition.n_max - cut)
-        return _Variant(
-            name,
-            cause,
-            observe(transition, symmetry, size_parameter),
-            float(fit.weights @ absorption),
-        )
-
-    out = [variant(fit.name, fit.cause, fit, corrected) for fit in rivals]
-    out.append(variant("without the last correction", SOLVER, rivals[0], plain))
-    if corrected[0].n_max > 1:
-        out.append(variant("one degree less", TRUNCATION, rivals[0], corrected, 1))
-    return out
+    absorbed = [*(w @ absorption for w in weights), *[best @ absorption] * 2]
+    return [
+        _Variant(name, cause, result, float(power))
+        for (name, cause), result, power in zip(names, results, absorbed, strict=False)
+    ]
 
 
 def _scalar_values(variant: _Variant) -> dict[str, float]:
@@ -114,12 +112,7 @@ def _scalars(
 
 
 def _expansions(variants: Sequence[_Variant]) -> NDArray[np.float64]:
-    """Coefficients of all variants, padded with zeros to one length."""
-    longest = max(v.result.expansion.shape[0] for v in variants)
-    out = np.zeros((len(variants), longest, 4, 4))
-    for i, variant in enumerate(variants):
-        out[i, : variant.result.expansion.shape[0]] = variant.result.expansion
-    return out
+    return np.stack([variant.result.expansion for variant in variants])
 
 
 def _flags(
