@@ -94,7 +94,7 @@ def frustum(lower: float, upper: float, height: float) -> Mesh:
     return revolved(outlines)
 
 
-def capsule(radius: float, length: float, steps: int = 100) -> Mesh:
+def capsule(radius: float, length: float, steps: int = 64) -> Mesh:
     """A cylinder with half a sphere on either end, about z = 0.
 
     Rings of the caps lie where every ring of surface between two of them holds the volume of
