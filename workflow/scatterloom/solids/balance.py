@@ -35,11 +35,13 @@ def balanced(corners: Floats, triangles: NDArray[np.int32], between: Between) ->
     a, b, c = (corners[triangles[:, i]] for i in range(3))
     vector = 0.5 * np.cross(b - a, c - a)
     area = np.linalg.norm(vector, axis=1)
-    above = np.zeros(len(triangles))  # area times the mean rise
-    for i, j in ((0, 1), (1, 2), (2, 0)):
-        low, high = np.sort(triangles[:, [i, j]], axis=1).astype(np.int64).T
-        middle = 0.5 * (corners[low] + corners[high])
-        above += np.sum((between(low, high) - middle) * vector, axis=1) / 3.0
+    edges = np.sort(triangles[:, [[0, 1], [1, 2], [2, 0]]].reshape(-1, 2), axis=1)
+    key = edges[:, 0].astype(np.int64) * len(corners) + edges[:, 1]
+    unique, which = np.unique(key, return_inverse=True)
+    low, high = unique // len(corners), unique % len(corners)
+    missed = between(low, high) - 0.5 * (corners[low] + corners[high])
+    # area times the mean rise
+    above = np.sum(missed[which.reshape(-1, 3)].sum(axis=1) * vector, axis=1) / 3.0
     normal, weight, rise = np.zeros_like(corners), np.zeros(len(corners)), np.zeros(len(corners))
     for i in range(3):
         np.add.at(normal, triangles[:, i], vector)

@@ -111,7 +111,7 @@ class _Builder:
     def __init__(self, body: Rounded, parts: int) -> None:
         self.body, self.parts = body, parts
         self.number: dict[tuple[object, ...], int] = {}
-        self.place: list[int] = []
+        self.place: list[Floats] = []
         self.direction: list[Floats] = []
         self.triangles: list[tuple[int, int, int]] = []
 
@@ -125,28 +125,30 @@ class _Builder:
             mixed = np.zeros(3)
             for face, weight in key[1:]:  # type: ignore[misc]
                 mixed += weight * (centre if face == -1 else self.body.normals[face])
-            self.number[key] = len(self.place)
-            self.place.append(corner)
-            self.direction.append(mixed / np.linalg.norm(mixed))
+            self.number[key] = self.add(self.body.corners[corner], mixed)
         return self.number[key]
+
+    def add(self, place: Floats, direction: Floats) -> int:
+        self.place.append(place)
+        self.direction.append(direction / np.linalg.norm(direction))
+        return len(self.place) - 1
 
     def mesh(self) -> Mesh:
         body, m = self.body, self.parts
         for number, face in enumerate(body.faces):
             ring = [self.at(corner, {number: m}) for corner in face]
-            self.triangles += [(ring[0], ring[i], ring[i + 1]) for i in range(1, len(ring) - 1)]
+            self._around(ring)
         for (i, j), (f, g) in body.edges.items():
             # g lies on the right of i -> j
             for step in range(m):
                 here, there = {f: m - step, g: step}, {f: m - step - 1, g: step + 1}
-                a, b = self.at(i, here), self.at(j, here)
-                c, d = self.at(i, there), self.at(j, there)
-                self.triangles += [(a, c, d), (a, d, b)]
+                self._around([self.at(i, here), self.at(i, there),
+                              self.at(j, there), self.at(j, here)])  # fmt: skip
         for corner in range(len(body.corners)):
             self._patch(corner)
         triangles = np.array(self.triangles, dtype=np.int32)
         direction = np.array(self.direction)
-        place = body.corners[self.place]
+        place = np.array(self.place)
         corners = place + body.radius * direction
 
         def between(i: NDArray[np.int64], j: NDArray[np.int64]) -> Floats:
@@ -157,6 +159,15 @@ class _Builder:
         looks = direction[triangles].sum(axis=1)
         piece = np.argmax(looks @ body.normals.T - 1e-9 * np.arange(len(body.normals)), axis=1)
         return Mesh(balanced(corners, triangles, between), triangles, piece.astype(np.int32))
+
+    def _around(self, ring: list[int]) -> None:
+        """Triangles between a ring of points and their middle, which favour no diagonal."""
+        count = len(ring)
+        middle = self.add(
+            sum(self.place[p] for p in ring) / count,  # type: ignore[arg-type]
+            sum(self.direction[p] for p in ring),  # type: ignore[arg-type]
+        )
+        self.triangles += [(ring[k], ring[(k + 1) % count], middle) for k in range(count)]
 
     def _patch(self, corner: int) -> None:
         """The part of a sphere around a corner, a fan of triangles about its middle."""
