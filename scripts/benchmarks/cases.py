@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from scatterloom.attempts import Task
 from scatterloom.attempts import solve_case as solve_attempts
 from scatterloom.campaign import effort
-from scatterloom.campaign.geometry import extents, mirror_planes
+from scatterloom.campaign.geometry import extents
 from scatterloom.particle.lattice import Lattice, lattice
 from scatterloom.particle.shapes import Shape, from_spec
 from scatterloom.scattering.case import Asked, combine_levels
@@ -92,7 +92,7 @@ def predicted_seconds(
     default = effort.levels(reach.lengths, index, x)
     asked = first_levels(spec, indices, x, f11_relative)
     more = sum(n**3 for n in asked) / sum(n**3 for n in default)
-    return more * effort.cost(reach.half, index, x, True, mirror_planes(spec))
+    return more * effort.cost(reach.half, index, x, True, reach.mirror_planes)
 
 
 def cold_record(

@@ -17,7 +17,7 @@ from typing import Any, TypeVar
 from scatterloom.campaign import effort
 from scatterloom.campaign.case import Accuracy, Case, canonical_json, indices_content
 from scatterloom.campaign.expand import Grid
-from scatterloom.campaign.geometry import Extents, extents, mirror_planes
+from scatterloom.campaign.geometry import Extents, extents
 from scatterloom.errors import BadInput
 
 MOST_JOBS = 10_000
@@ -157,8 +157,7 @@ def _predict(case: Case, reach: Extents) -> tuple[tuple[int, ...], _Size]:
     # The cost counts waves for the half extents; corners reach farther.
     scale *= (effort.n_max(reach.radii, x) / effort.n_max(axes, x)) ** 2
     cold, warm = (
-        scale * effort.cost(axes, index, x, cold, mirror_planes(case.shape))
-        for cold in (True, False)
+        scale * effort.cost(axes, index, x, cold, reach.mirror_planes) for cold in (True, False)
     )
     return levels, _Size(case.digest, x, cold, warm)
 
