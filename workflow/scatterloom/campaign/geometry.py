@@ -124,7 +124,9 @@ def canonical(spec: Mapping[str, Any]) -> dict[str, Any]:
 
 def _plain(spec: Mapping[str, Any]) -> dict[str, Any]:
     if spec["kind"] in GENERATORS:
-        own = {key: value for key, value in spec.items() if key != "core_radius_fraction"}
+        # What a file holds counts, not where it lies.
+        apart = ("core_radius_fraction", *(("file",) if "content" in spec else ()))
+        own = {key: value for key, value in spec.items() if key not in apart}
         return {key: _digits(value) for key, value in own.items() if value is not None}
     match spec["kind"]:
         case "spheroid":
