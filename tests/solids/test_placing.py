@@ -7,7 +7,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from scatterloom.campaign.geometry import canonical, extents, mirror_planes
+from scatterloom.campaign.geometry import canonical, extents
 from scatterloom.particle.polyhedron import prism
 from scatterloom.particle.shapes import from_spec
 from scatterloom.solids import placing
@@ -138,7 +138,7 @@ def test_shapes_of_the_registry(lump):
     assert reach.half == pytest.approx(shape.half_extents, rel=1e-14)
     assert reach.circumscribed_radius == shape.circumscribed_radius
     assert reach.half[0] / reach.half[1] == pytest.approx(1.5, rel=1e-12)
-    assert mirror_planes(spec) == 3 and shape.symmetry == "mirrors"
+    assert extents(spec).mirror_planes == 3 and shape.symmetry == "mirrors"
     # generators see the shape alone, once
     assert lump == [{"kind": "lump", "axes": [3.0, 2.0, 1.0]}]
     outer, core = (face.mesh for face in shape.solid.interfaces)

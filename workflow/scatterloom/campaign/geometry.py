@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import json
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import Any
 
 import numpy as np
@@ -25,11 +27,14 @@ class Extents:
         Radius of the smallest sphere about the centre that holds the particle.
     core_radius_fraction : float or None
         Size of the core relative to the particle, as a ratio of lengths.
+    mirror_planes : int
+        How many of the planes x = 0, y = 0, z = 0 are mirror planes.
     """
 
     half: tuple[float, float, float]
     circumscribed_radius: float
     core_radius_fraction: float | None = None
+    mirror_planes: int = 3
 
     @property
     def lengths(self) -> tuple[float, ...]:
@@ -60,9 +65,7 @@ def extents(spec: Mapping[str, Any]) -> Extents:
     """
     core = spec.get("core_radius_fraction")
     if spec["kind"] in GENERATORS:
-        solid = placing.placed(spec)
-        a, b, c = (float(length) for length in placing.half_extents(solid))
-        return Extents((a, b, c), placing.circumscribed_radius(solid), core)
+        return _of_solid(json.dumps(dict(spec), sort_keys=True))
     match spec["kind"]:
         case "sphere":
             return Extents((1.0, 1.0, 1.0), 1.0, core)
@@ -89,16 +92,22 @@ def extents(spec: Mapping[str, Any]) -> Extents:
             radius = (4.0 * math.pi / 3.0 / (base * ratio)) ** (1.0 / 3.0)
             lateral = max(math.sin(2.0 * math.pi * i / sides) for i in range(sides))
             half = (radius, radius * lateral, radius * ratio)
-            return Extents(half, math.hypot(radius, radius * ratio), core)
+            planes = 2 if sides % 2 else 3
+            return Extents(half, math.hypot(radius, radius * ratio), core, planes)
     raise ValueError(f"unknown shape kind {spec['kind']!r}")
 
 
-def mirror_planes(spec: Mapping[str, Any]) -> int:
-    """Return how many of the planes x = 0, y = 0, z = 0 are mirror planes of a shape."""
-    if spec["kind"] in GENERATORS:
-        solid = placing.placed(spec)
-        return sum(placing.is_mirrored(solid, axis) for axis in np.eye(3))
-    return 2 if spec["kind"] == "prism" and spec["sides"] % 2 else 3
+@lru_cache(maxsize=256)
+def _of_solid(text: str) -> Extents:
+    spec = json.loads(text)
+    solid = placing.placed(spec)
+    a, b, c = (float(length) for length in placing.half_extents(solid))
+    return Extents(
+        (a, b, c),
+        placing.circumscribed_radius(solid),
+        spec.get("core_radius_fraction"),
+        sum(placing.is_mirrored(solid, axis) for axis in np.eye(3)),
+    )
 
 
 def canonical(spec: Mapping[str, Any]) -> dict[str, Any]:
@@ -115,7 +124,9 @@ def canonical(spec: Mapping[str, Any]) -> dict[str, Any]:
 
 def _plain(spec: Mapping[str, Any]) -> dict[str, Any]:
     if spec["kind"] in GENERATORS:
-        own = {key: value for key, value in spec.items() if key != "core_radius_fraction"}
+        # What a file holds counts, not where it lies.
+        apart = ("core_radius_fraction", *(("file",) if "content" in spec else ()))
+        own = {key: value for key, value in spec.items() if key not in apart}
         return {key: _digits(value) for key, value in own.items() if value is not None}
     match spec["kind"]:
         case "spheroid":

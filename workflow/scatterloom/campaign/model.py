@@ -6,6 +6,7 @@ the reference page are made from them.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from typing import Annotated, Literal
 
 from pydantic import field_validator, model_validator
@@ -346,3 +347,13 @@ class CampaignModel(Section):
     def _check_materials(cls, value: dict[str, Material]) -> dict[str, Material]:
         check_names(list(value))
         return value
+
+
+def with_contents(model: CampaignModel, contents: Mapping[int, str]) -> CampaignModel:
+    """Write what the files of shapes hold into the model, by the particle's place in the list."""
+    particles = list(model.particles)
+    for position, digest in contents.items():
+        particle = particles[position]
+        shape = particle.shape.model_copy(update={"content": digest})
+        particles[position] = particle.model_copy(update={"shape": shape})
+    return model.model_copy(update={"particles": particles})
