@@ -186,13 +186,19 @@ def _texts(document: Document, section: str, key: str) -> list[tuple[KeyPath, st
 
 
 def _materials(document: Document) -> list[tuple[KeyPath, str]]:
-    """Return every place that names a material: particles, coatings, the medium, mixtures."""
+    """Return every place that names a material: particles and their parts, medium, mixtures."""
     found = _texts(document, "particles", "material")
     for position, entry in enumerate(_entries(document, "particles")):
         coating = entry.get("coating")
         name = coating.get("material") if isinstance(coating, dict) else None
         if isinstance(name, str):
             found.append((("particles", position, "coating", "material"), name))
+        for key in ("layers", "inclusions"):
+            parts = entry.get(key)
+            for number, part in enumerate(parts if isinstance(parts, list) else ()):
+                name = part.get("material") if isinstance(part, dict) else None
+                if isinstance(name, str):
+                    found.append((("particles", position, key, number, "material"), name))
     medium = document.tree.get("medium")
     if isinstance(medium, dict) and isinstance(medium.get("material"), str):
         found.append((("medium", "material"), medium["material"]))

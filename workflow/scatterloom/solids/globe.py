@@ -14,7 +14,7 @@ from scatterloom.solids.mesh import Mesh
 Floats = NDArray[np.float64]
 
 FINE = 64
-"""Parts of an edge of the icosahedron: 81920 triangles with sides of half a cell at 64 cells across.
+"""Parts of an edge of the icosahedron: 81920 triangles, half a cell long at 64 cells across.
 
 Cells of a ball are right to 1e-4 of a cell then (measured)."""
 

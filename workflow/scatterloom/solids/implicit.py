@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from itertools import permutations
+from itertools import permutations, product
 
 import numpy as np
 from numpy.typing import NDArray
@@ -73,10 +73,9 @@ def _march(values: Floats) -> tuple[NDArray[np.int64], NDArray[np.int32]]:
     """Edges of the grid that the surface crosses (n, 2), and its triangles by their numbers."""
     shape = values.shape
     inside = values < 0.0
-    held = sum(
-        inside[i : shape[0] - 1 + i, j : shape[1] - 1 + j, k : shape[2] - 1 + k].astype(np.int8)
-        for i in (0, 1) for j in (0, 1) for k in (0, 1)
-    )  # fmt: skip
+    held = np.zeros([n - 1 for n in shape], dtype=np.int8)
+    for i, j, k in product((0, 1), repeat=3):
+        held += inside[i : shape[0] - 1 + i, j : shape[1] - 1 + j, k : shape[2] - 1 + k]
     cut = np.stack(np.nonzero((held > 0) & (held < 8)), axis=1)
     flat = inside.reshape(-1)
     edges: list[NDArray[np.int64]] = []  # (n, 3 corners of a triangle, 2 ends)
@@ -91,7 +90,9 @@ def _march(values: Floats) -> tuple[NDArray[np.int64], NDArray[np.int32]]:
         number = flat[four].sum(axis=1)
         for many, pairs in _CASES.items():
             some = four[number == many]
-            edges += [np.stack([some[:, list(pair)] for pair in triple], axis=1) for triple in pairs]
+            edges += [
+                np.stack([some[:, list(pair)] for pair in triple], axis=1) for triple in pairs
+            ]
     ends = np.concatenate(edges)
     # Outwards is from the ends inside to those outside.
     where = np.stack(np.unravel_index(ends, shape), axis=-1).astype(float)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 from itertools import product
 
 import numpy as np
@@ -27,7 +28,8 @@ def regular_corners(faces: int) -> Floats:
     faces : int
         4, 6, 8, 12 or 20.
     """
-    cube = list(product((-1.0, 1.0), repeat=3))
+    points: list[Sequence[float] | Floats]
+    cube: list[Sequence[float] | Floats] = list(product((-1.0, 1.0), repeat=3))
     match faces:
         case 4:
             root = math.sqrt(2.0)
@@ -35,7 +37,7 @@ def regular_corners(faces: int) -> Floats:
         case 6:
             points = cube
         case 8:
-            points = [tuple(sign * row) for row in np.eye(3) for sign in (-1.0, 1.0)]
+            points = [sign * row for row in np.eye(3) for sign in (-1.0, 1.0)]
         case 12:
             plane = [(0.0, s / _GOLDEN, t * _GOLDEN) for s, t in product((-1.0, 1.0), repeat=2)]
             points = cube + [tuple(np.roll(point, k)) for k in range(3) for point in plane]
@@ -104,7 +106,9 @@ def indented_prism(sides: int, height_to_width: float, indentation: float) -> Me
     ring, half = base_ring(sides), height_to_width
     level = np.full(sides, half)
     tips = [(0.0, 0.0, -half * (1.0 - indentation)), (0.0, 0.0, half * (1.0 - indentation))]
-    corners = np.concatenate([np.column_stack([ring, -level]), np.column_stack([ring, level]), tips])
+    corners = np.concatenate(
+        [np.column_stack([ring, -level]), np.column_stack([ring, level]), tips]
+    )
     faces = _prism_faces(sides)[2:]
     for i in range(sides):
         after = (i + 1) % sides

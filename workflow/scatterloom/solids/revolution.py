@@ -38,8 +38,8 @@ def revolved(outlines: Sequence[Floats], around: int = AROUND) -> Mesh:
     x = np.concatenate([quarter, -quarter[-2::-1], -quarter[1:], quarter[-2:0:-1]]) * stretch
     y = np.roll(x, around // 4)
     corners: list[Floats] = []
-    triangles: list[Floats] = []
-    piece: list[Floats] = []
+    triangles: list[NDArray[np.int64]] = []
+    piece: list[NDArray[np.int64]] = []
     ring, used = None, 0
 
     def make(radius: float, height: float) -> NDArray[np.int64]:

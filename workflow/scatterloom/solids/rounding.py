@@ -123,8 +123,10 @@ class _Builder:
         key = (corner, *sorted((f, w) for f, w in weights.items() if w))
         if key not in self.number:
             mixed = np.zeros(3)
-            for face, weight in key[1:]:  # type: ignore[misc]
-                mixed += weight * (centre if face == -1 else self.body.normals[face])
+            for face, weight in weights.items():
+                mixed += weight * (
+                    self.body.normals[face] if face >= 0 or centre is None else centre
+                )
             self.number[key] = self.add(self.body.corners[corner], mixed)
         return self.number[key]
 

@@ -37,7 +37,10 @@ def spheres_mesh(centres: Floats, radii: Floats) -> Mesh:
     reach = float((np.linalg.norm(centres - centres.mean(axis=0), axis=1) + radii).max())
     parts = [math.ceil(FINE * math.sqrt(radius / reach)) for radius in radii]
     return joined(
-        [sphere_mesh(c, r, 2 * ((p + 1) // 2)) for c, r, p in zip(centres, radii, parts, strict=True)]
+        [
+            sphere_mesh(c, r, 2 * ((p + 1) // 2))
+            for c, r, p in zip(centres, radii, parts, strict=True)
+        ]
     )
 
 

@@ -42,7 +42,9 @@ def superellipsoid(axes: Sequence[float], vertical: float, horizontal: float) ->
         return 1.0 / (top * out ** (vertical / 2))
 
     # Tighter bends need smaller triangles.
-    sharp = max(1.0, *(1.0 / e for e in (vertical, horizontal)), *(e for e in (vertical, horizontal)))
+    sharp = max(
+        1.0, *(1.0 / e for e in (vertical, horizontal)), *(e for e in (vertical, horizontal))
+    )
     return star_mesh(radius, min(96, 8 * round(FINE * math.sqrt(sharp) / 8)))
 
 
