@@ -58,3 +58,12 @@ def shape_of(solid: Solid | Mesh, core: float | None = None) -> SolidShape:
     """A solid as a particle."""
     body = solid if isinstance(solid, Solid) else Solid((Interface(solid),))
     return SolidShape("test", body.normalized(centre(body)), core_radius_fraction=core)
+
+
+def is_closed(mesh: Mesh) -> bool:
+    """Whether every edge is passed once in either sense, and no corner is left over."""
+    edges = np.concatenate([mesh.triangles[:, [i, (i + 1) % 3]] for i in range(3)]).astype(np.int64)
+    count = len(mesh.corners)
+    there, back = edges @ [count, 1], edges @ [1, count]
+    once = len(np.unique(there)) == len(there)
+    return once and np.array_equal(np.sort(there), np.sort(back))

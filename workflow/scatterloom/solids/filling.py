@@ -8,6 +8,7 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.spatial import KDTree
 
 from scatterloom.solids.globe import FINE, sphere_mesh
 from scatterloom.solids.inside import distance_to, is_inside
@@ -19,7 +20,7 @@ Floats = NDArray[np.float64]
 GAP = 0.02
 """Smallest gap between spheres placed at random, and to the surface, over their radius."""
 
-_TRIES = 4000
+_TRIES = 3000
 
 
 def one_surface(solid: Solid, purpose: str) -> Mesh:
@@ -100,6 +101,7 @@ def _placed(
     rng = generator(seed)
     low, high = host.corners.min(axis=0), host.corners.max(axis=0)
     kept, sizes, room = centres, radii, (1.0 + GAP) * radius
+    corners = KDTree(host.corners)
     tries = 0
     while len(kept) < len(centres) + count:
         tries += 1
@@ -113,6 +115,9 @@ def _placed(
             gap = np.linalg.norm(kept - place, axis=1) - sizes - room
             if gap.min() < 0.0:
                 continue
+        # The nearest corner is no nearer than the surface: most places need nothing else.
+        if corners.query(place)[0] < room:
+            continue
         if not is_inside(host, place) or distance_to(host, place) < room:
             continue
         kept = np.concatenate([kept, [place]])

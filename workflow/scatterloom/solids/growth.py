@@ -43,6 +43,16 @@ def fractal_cluster(count: int, dimension: float, prefactor: float, seed: int) -
     def law(number: int) -> float:
         return (number / prefactor) ** (1.0 / dimension)
 
+    for number in range(3, count + 1):
+        # from the closest three to a straight chain
+        least = 2.0 / math.sqrt(3.0)
+        most = math.sqrt((number**2 - 1) / 3.0)
+        if not least <= law(number) <= most:
+            raise ValueError(
+                f"D_f = {dimension:g} and k_f = {prefactor:g} ask {number} touching spheres for a "
+                f"radius of gyration of {law(number):.4g} radii, possible are {least:.4g} to "
+                f"{most:.4g}"
+            )
     for _ in range(_BEGINNINGS):
         grown = _grow(count, law, rng)
         if grown is not None:
