@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 from scipy.integrate import quad
 
+from scatterloom.solids import growth
 from scatterloom.solids.growth import (
     ballistic_cluster,
     fractal_cluster,
@@ -57,9 +58,7 @@ def test_parts_of_a_fractal_cluster_keep_the_law_too():
 
 def test_laws_that_no_cluster_keeps_are_refused(monkeypatch):
     # 16 spheres within R_g = (16 / 3.5)^(1 / 1.8) fit, but already 3 would have to overlap
-    with pytest.raises(
-        ValueError, match=r"ask 3 touching spheres for a radius of gyration of 0\.9"
-    ):
+    with pytest.raises(ValueError, match=r"ask 3 touching spheres for a radius of gyration of"):
         fractal_cluster(16, 1.8, 3.5, 1)
     # longer than a straight chain
     with pytest.raises(ValueError, match=r"possible are 1\.155 to 1\.633"):
