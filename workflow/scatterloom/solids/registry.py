@@ -7,12 +7,12 @@ from collections.abc import Callable, Mapping
 from functools import lru_cache
 from typing import Any
 
-from scatterloom.solids.imported import mesh_solid
+from scatterloom.solids.imported import mesh_solid, voxel_solid
 from scatterloom.solids.mesh import Solid
 
 Generator = Callable[[Mapping[str, Any]], Solid]
 
-GENERATORS: dict[str, Generator] = {"mesh": mesh_solid}
+GENERATORS: dict[str, Generator] = {"mesh": mesh_solid, "voxels": voxel_solid}
 """For every kind of shape that is made of triangles, what makes them.
 
 A generator gets the canonical shape of a case, ``kind`` included and `core_radius_fraction` left
