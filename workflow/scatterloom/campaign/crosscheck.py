@@ -10,10 +10,12 @@ from collections.abc import Iterator, Sequence
 
 from scatterloom.campaign.complaints import nearest
 from scatterloom.campaign.document import Document, KeyPath
+from scatterloom.campaign.geometry import canonical, extents
 from scatterloom.campaign.grids import decimal, grid_values
 from scatterloom.campaign.model import CampaignModel, Sizes
 from scatterloom.campaign.populations import Population
 from scatterloom.errors import Problem
+from scatterloom.solids.registry import GENERATORS
 
 MOST_CELLS = 1_000_000
 """Largest number of (particle, wavelength, size) cells in one campaign."""
@@ -106,6 +108,26 @@ def check_extent(
     return [document.problem(("sizes", key), message, found, hint)]
 
 
+def check_bodies(document: Document, model: CampaignModel) -> list[Problem]:
+    """Check that every shape made of triangles can be made, with its core if it has one."""
+    problems = []
+    for position, particle in enumerate(model.particles):
+        if particle.shape.kind not in GENERATORS:
+            continue
+        spec = particle.shape.model_dump()
+        path: KeyPath = ("particles", position, "shape")
+        try:
+            extents(canonical(spec))
+            if particle.coating is not None:
+                path = ("particles", position, "coating")
+                extents(canonical(spec | {"core_radius_fraction": particle.coating.core_scale}))
+        except ValueError as error:
+            reason, _, hint = str(error).partition("; ")
+            message = f"the body of '{particle.name}' cannot be made: {reason}"
+            problems.append(document.problem(path, message, document.show(path), hint or None))
+    return problems
+
+
 def check_coverage(
     document: Document,
     populations: Sequence[Population],
@@ -193,6 +215,11 @@ def _materials(document: Document) -> list[tuple[KeyPath, str]]:
         name = coating.get("material") if isinstance(coating, dict) else None
         if isinstance(name, str):
             found.append((("particles", position, "coating", "material"), name))
+        shape = entry.get("shape")
+        more = shape.get("more_materials") if isinstance(shape, dict) else None
+        for place, name in enumerate(more if isinstance(more, list) else ()):
+            if isinstance(name, str):
+                found.append((("particles", position, "shape", "more_materials", place), name))
     medium = document.tree.get("medium")
     if isinstance(medium, dict) and isinstance(medium.get("material"), str):
         found.append((("medium", "material"), medium["material"]))

@@ -90,7 +90,7 @@ def expand(campaign: Campaign) -> Grid:
             )
             shape, indices = _body(particle, indices)
             outer[p, w] = indices[0]
-            if len(indices) > 1:
+            if "core_radius_fraction" in shape:
                 core[p, w] = indices[1]
             shape_key = canonical_json(shape)
             for s, x in enumerate(values[w]):
@@ -120,8 +120,10 @@ def _body(
 ) -> tuple[dict[str, Any], tuple[complex, ...]]:
     """Return shape and indices; a coating of the same index as the core is no coating."""
     spec = particle.shape.model_dump()
-    if particle.coating is None or indices[0] == indices[1]:
-        return canonical(spec), indices[:1]
+    if particle.coating is None:
+        return canonical(spec), indices
+    if indices[0] == indices[1]:
+        return canonical(spec), indices[1:]
     spec["core_radius_fraction"] = particle.coating.core_scale
     return canonical(spec), indices
 

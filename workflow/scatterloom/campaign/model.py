@@ -103,10 +103,15 @@ class Particle(Section):
 
     @property
     def materials(self) -> tuple[str, ...]:
-        """Names of the materials from outside inwards."""
+        """Names of the materials from outside inwards, or in the order of their labels."""
         if self.coating is None:
-            return (self.material,)
-        return self.coating.material, self.material
+            return self.material, *self.more_materials
+        return self.coating.material, self.material, *self.more_materials
+
+    @property
+    def more_materials(self) -> tuple[str, ...]:
+        """Names of materials that the shape brings beside that of the particle."""
+        return tuple(getattr(self.shape, "more_materials", ()))
 
 
 class Sizes(Section):
@@ -320,6 +325,8 @@ class CampaignModel(Section):
 
         def of_particle(particle: Particle) -> float | None:
             core = stated.get(particle.material)
+            if particle.more_materials:
+                return particle.density_g_cm3
             if particle.density_g_cm3 is not None or particle.coating is None:
                 return particle.density_g_cm3 or core
             shell, volume = stated.get(particle.coating.material), particle.coating.core_scale**3

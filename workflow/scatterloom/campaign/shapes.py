@@ -6,7 +6,7 @@ from typing import Annotated, Literal
 
 from pydantic import Field, model_validator
 
-from scatterloom.campaign.file_shapes import MeshFile
+from scatterloom.campaign.file_shapes import MeshFile, VoxelFile
 from scatterloom.campaign.sections import Section, setting, wrong
 
 LARGEST_ASPECT = 10.0
@@ -91,5 +91,6 @@ def _check_aspect(one: str, key: str, lengths: list[float]) -> None:
 
 
 Shape = Annotated[
-    Sphere | Spheroid | Ellipsoid | Cuboid | Prism | MeshFile, Field(discriminator="kind")
+    Sphere | Spheroid | Ellipsoid | Cuboid | Prism | MeshFile | VoxelFile,
+    Field(discriminator="kind"),
 ]
