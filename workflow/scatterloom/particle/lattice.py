@@ -119,6 +119,11 @@ class Lattice:
         return tuple((s.inside, s.outside) for s in surfaces for _ in range(s.pieces))
 
     @property
+    def contacts(self) -> tuple[tuple[int, int], ...]:
+        """Pairs of materials (inside, outside) that touch, -1 for the medium."""
+        return tuple(dict.fromkeys(self.interfaces))
+
+    @property
     def area_vector(self) -> Floats:
         """Outward mean normal times area of each piece, float64 (n_piece, n_cell, 3).
 

@@ -10,6 +10,7 @@ import numpy as np
 
 from scatterloom.solids import kept
 from scatterloom.solids.adjacency import with_smooth_pieces
+from scatterloom.solids.evening import evened
 from scatterloom.solids.labels import label_solid, read_labels, trimmed
 from scatterloom.solids.mesh import Interface, Mesh, Solid
 from scatterloom.solids.mesh_file import Arrays, read_mesh
@@ -59,7 +60,7 @@ def check_mesh(arrays: Arrays) -> int:
 
 def mesh_solid(spec: Mapping[str, Any]) -> Solid:
     """Solid of a shape ``{"kind": "mesh", "content": digest, "edge_angle_deg": angle}``."""
-    mesh = _mesh(kept.recall(spec["content"]))
+    mesh = evened(_mesh(kept.recall(spec["content"])))
     return Solid((Interface(with_smooth_pieces(mesh, float(spec["edge_angle_deg"]))),))
 
 

@@ -1,0 +1,51 @@
+"""Rounding of files taken back: mirror planes and faces along the lattice are found again."""
+
+import numpy as np
+import pytest
+
+from scatterloom.particle.lattice import lattice
+from scatterloom.particle.polyhedron import prism
+from scatterloom.particle.shapes import from_spec
+from scatterloom.solids.evening import evened
+from scatterloom.solids.mesh import Mesh
+from solid_kit import globe, mesh_of, shape_of
+
+
+def rounded(mesh: Mesh) -> Mesh:
+    """Away from the origin and in single precision, as an STL file holds it."""
+    corners = (mesh.corners * 0.737 + [0.211, -0.347, 0.519]).astype(np.float32)
+    return Mesh(corners.astype(np.float64), mesh.triangles, mesh.piece)
+
+
+@pytest.mark.parametrize(
+    "mesh", [mesh_of(prism(6, 1.5)), globe(3, (1.5, 1.2, 1.0))], ids=["column", "ellipsoid"]
+)
+def test_mirror_planes_are_found_again(mesh):
+    spoilt = rounded(mesh)
+    assert shape_of(spoilt).symmetry == "none"
+    even = evened(spoilt)
+    assert shape_of(even).symmetry == "mirrors"
+    assert np.abs(even.corners - spoilt.corners).max() < 4e-6 * np.ptp(spoilt.corners)
+    again = evened(even)
+    np.testing.assert_allclose(again.corners, even.corners, atol=1e-15)
+
+
+def test_faces_end_on_the_lattice_again():
+    cube = from_spec({"kind": "cuboid", "edges": [1, 1, 1]})
+    spoilt = rounded(mesh_of(cube.body))
+    assert np.any(lattice(shape_of(spoilt), 8).fill < 1.0)
+    grid = lattice(shape_of(evened(spoilt)), 8)
+    assert len(grid.cell) == 512 and np.all(grid.fill == 1.0)
+
+
+def test_a_body_without_planes_gets_none():
+    rng = np.random.default_rng(4)
+    ball = globe(2)
+    lump = Mesh(ball.corners * rng.uniform(0.9, 1.1, (len(ball.corners), 1)), ball.triangles,
+                ball.piece)  # fmt: skip
+    even = evened(lump)
+    assert shape_of(even).symmetry == "none"
+    assert np.abs(even.corners - lump.corners).max() <= 1e-6 * np.ptp(lump.corners)
+    # a body of double precision without coincidences is not touched at all
+    shaken = Mesh(np.round(lump.corners * 64) / 64, lump.triangles, lump.piece)
+    np.testing.assert_array_equal(evened(shaken).corners, shaken.corners)
