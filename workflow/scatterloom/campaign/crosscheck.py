@@ -8,14 +8,14 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 
+from scatterloom.campaign.bodies import advice, body
 from scatterloom.campaign.complaints import nearest
 from scatterloom.campaign.document import Document, KeyPath
-from scatterloom.campaign.geometry import canonical, extents
+from scatterloom.campaign.geometry import extents
 from scatterloom.campaign.grids import decimal, grid_values
 from scatterloom.campaign.model import CampaignModel, Sizes
 from scatterloom.campaign.populations import Population
 from scatterloom.errors import Problem
-from scatterloom.solids.registry import GENERATORS
 
 MOST_CELLS = 1_000_000
 """Largest number of (particle, wavelength, size) cells in one campaign."""
@@ -109,22 +109,21 @@ def check_extent(
 
 
 def check_bodies(document: Document, model: CampaignModel) -> list[Problem]:
-    """Check that every shape made of triangles can be made, with its core if it has one."""
+    """Check that particles whose shape comes from a file can be made, with all they hold."""
     problems = []
     for position, particle in enumerate(model.particles):
-        if particle.shape.kind not in GENERATORS:
+        if getattr(particle.shape, "content", None) is None:
             continue
-        spec = particle.shape.model_dump()
-        path: KeyPath = ("particles", position, "shape")
+        parts = [name for name in ("coating", "layers", "inclusions") if getattr(particle, name)]
+        path: KeyPath = ("particles", position, parts[0] if parts else "shape")
+        spec, _ = body(particle)
         try:
-            extents(canonical(spec))
-            if particle.coating is not None:
-                path = ("particles", position, "coating")
-                extents(canonical(spec | {"core_radius_fraction": particle.coating.core_scale}))
+            extents(spec)
         except ValueError as error:
             reason, _, hint = str(error).partition("; ")
             message = f"the body of '{particle.name}' cannot be made: {reason}"
-            problems.append(document.problem(path, message, document.show(path), hint or None))
+            found = document.show(path)
+            problems.append(document.problem(path, message, found, hint or advice(spec)))
     return problems
 
 
@@ -208,7 +207,7 @@ def _texts(document: Document, section: str, key: str) -> list[tuple[KeyPath, st
 
 
 def _materials(document: Document) -> list[tuple[KeyPath, str]]:
-    """Return every place that names a material: particles, coatings, the medium, mixtures."""
+    """Return every place that names a material: particles and their parts, medium, mixtures."""
     found = _texts(document, "particles", "material")
     for position, entry in enumerate(_entries(document, "particles")):
         coating = entry.get("coating")
@@ -220,6 +219,12 @@ def _materials(document: Document) -> list[tuple[KeyPath, str]]:
         for place, name in enumerate(more if isinstance(more, list) else ()):
             if isinstance(name, str):
                 found.append((("particles", position, "shape", "more_materials", place), name))
+        for key in ("layers", "inclusions"):
+            parts = entry.get(key)
+            for number, part in enumerate(parts if isinstance(parts, list) else ()):
+                name = part.get("material") if isinstance(part, dict) else None
+                if isinstance(name, str):
+                    found.append((("particles", position, key, number, "material"), name))
     medium = document.tree.get("medium")
     if isinstance(medium, dict) and isinstance(medium.get("material"), str):
         found.append((("medium", "material"), medium["material"]))

@@ -4,16 +4,14 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from decimal import Decimal, localcontext
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from scatterloom.campaign.bodies import body
 from scatterloom.campaign.case import Accuracy, Case, Overrides, canonical_json
-from scatterloom.campaign.geometry import canonical
 from scatterloom.campaign.grids import DIGITS, decimal, grid_values
 from scatterloom.campaign.loader import Campaign
-from scatterloom.campaign.model import Particle
 
 TWO_PI = 2 * Decimal("3.14159265358979323846264338327950288419716939937510")
 
@@ -88,9 +86,10 @@ def expand(campaign: Campaign) -> Grid:
             indices = tuple(
                 _relative(campaign.indices[name][w], campaign.medium_index[w]) for name in materials
             )
-            shape, indices = _body(particle, indices)
+            shape, kept = body(particle, indices)
+            indices = tuple(indices[place] for place in kept)
             outer[p, w] = indices[0]
-            if "core_radius_fraction" in shape:
+            if len(indices) > 1 and not particle.more_materials:
                 core[p, w] = indices[1]
             shape_key = canonical_json(shape)
             for s, x in enumerate(values[w]):
@@ -113,19 +112,6 @@ def expand(campaign: Campaign) -> Grid:
         anchor_spacing=model.solver.anchor_spacing,
         keep_transitions=model.solver.keep_transitions or bool(model.orientations),
     )
-
-
-def _body(
-    particle: Particle, indices: tuple[complex, ...]
-) -> tuple[dict[str, Any], tuple[complex, ...]]:
-    """Return shape and indices; a coating of the same index as the core is no coating."""
-    spec = particle.shape.model_dump()
-    if particle.coating is None:
-        return canonical(spec), indices
-    if indices[0] == indices[1]:
-        return canonical(spec), indices[1:]
-    spec["core_radius_fraction"] = particle.coating.core_scale
-    return canonical(spec), indices
 
 
 def _sizes(campaign: Campaign) -> tuple[NDArray[np.float64], NDArray[np.float64]]:

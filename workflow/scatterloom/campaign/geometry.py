@@ -129,7 +129,7 @@ def _plain(spec: Mapping[str, Any]) -> dict[str, Any]:
     if spec["kind"] in GENERATORS:
         # What a file holds counts, not where it lies; materials are known by their indices.
         own = {key: value for key, value in spec.items() if key not in _NO_GEOMETRY}
-        return {key: _digits(value) for key, value in own.items() if value is not None}
+        return _simplest({key: _digits(part) for key, part in own.items() if part is not None})
     match spec["kind"]:
         case "spheroid":
             ratio = _rounded(spec["equatorial_to_polar"])
@@ -144,11 +144,48 @@ def _plain(spec: Mapping[str, Any]) -> dict[str, Any]:
             return {"kind": "ellipsoid", "axes": axes}
         case "cuboid":
             last = spec["edges"][2]
-            return {"kind": "cuboid", "edges": [_rounded(edge / last) for edge in spec["edges"]]}
+            edges = {"edges": [_rounded(edge / last) for edge in spec["edges"]]}
+            return _edged("cuboid", "rounded_cuboid", edges, spec)
         case "prism":
-            ratio = _rounded(spec["height_to_width"])
-            return {"kind": "prism", "sides": spec["sides"], "height_to_width": ratio}
+            own = {"sides": spec["sides"], "height_to_width": _rounded(spec["height_to_width"])}
+            return _edged("prism", "shaped_prism", own, spec)
+        case "cone":
+            return _plain({**spec, "kind": "frustum", "upper_to_lower": 0.0})
+    if spec["kind"] in FACES:
+        own = {"faces": FACES[spec["kind"]]}
+        return _edged("polyhedron", "polyhedron", own, spec)
     return {"kind": spec["kind"]}
+
+
+FACES = {"tetrahedron": 4, "octahedron": 8, "dodecahedron": 12, "icosahedron": 20}
+
+
+def _simplest(spec: dict[str, Any]) -> dict[str, Any]:
+    """Bodies of triangles that are other ones at the ends of their range; else the same."""
+    match spec["kind"]:
+        case "frustum" if spec["upper_to_lower"] == 1.0:
+            return {"kind": "cylinder", "length_to_diameter": spec["height_to_diameter"]}
+        case "capsule" if spec["length_to_diameter"] == 1.0:
+            return {"kind": "sphere"}
+        case "superellipsoid":
+            axes = [_rounded(axis / spec["axes"][2]) for axis in spec["axes"]]
+            if spec["exponents"] == [1.0, 1.0]:
+                return _plain({"kind": "ellipsoid", "axes": axes})
+            return {**spec, "axes": axes}
+        case "gaussian_sphere" if "correlation_angle_deg" in spec:
+            return {key: value for key, value in spec.items() if key != "highest_degree"}
+    return spec
+
+
+def _edged(
+    sharp: str, other: str, own: Mapping[str, Any], spec: Mapping[str, Any]
+) -> dict[str, Any]:
+    """A polyhedron, of one kind as it is and of another one with rounded edges or changed ends."""
+    keys = ("edge_radius_fraction", "end_tilts_deg", "indentation")
+    changed = {key: _digits(spec[key]) for key in keys if spec.get(key) is not None}
+    if changed.get("end_tilts_deg") == [0.0, 0.0]:
+        del changed["end_tilts_deg"]
+    return {"kind": other if changed else sharp, **own, **changed}
 
 
 def _digits(value: Any) -> Any:
