@@ -66,7 +66,9 @@ def tensor(shape: Shape, grid: Lattice) -> Lattice:
     """Tensor cells between which no material moves; `without_shift` must be in force."""
     if grid.composition is None:
         return grid
-    return replace(grid, composition=replace(grid.composition, moment=None))
+    return replace(
+        grid, composition=replace(grid.composition, regions=(), moment=grid.composition.moment[:0])
+    )
 
 
 @contextmanager

@@ -135,3 +135,50 @@ def test_separate_parts_are_flagged(campaign_of, tmp_path):
     save(tmp_path / "grain.stl", apart)
     warning = load(campaign_of("{kind: mesh, file: grain.stl}")).warnings[0]
     assert "is 2 separate parts" in str(warning) and "as one particle" in str(warning)
+
+
+def voxels() -> np.ndarray:
+    labels = np.zeros((6, 5, 5), dtype=np.uint8)
+    labels[1:5, 1:4, 1:4] = 1
+    labels[3:5, 1:3, 1:3] = 2
+    return labels
+
+
+def test_label_volumes(campaign_of, tmp_path):
+    np.save(tmp_path / "a.npy", voxels())
+    path = campaign_of("{kind: voxels, file: a.npy, more_materials: [salt]}")
+    campaign = load(path)
+    case = expand(campaign).cases[0]
+    assert case.shape == {"kind": "voxels", "content": campaign.contents[0]}
+    assert case.indices == (1.53 + 0.003j, 1.5 + 0j)
+    # medium around is of no account, another order of the labels is
+    np.save(tmp_path / "a.npy", np.pad(voxels(), 3).astype(np.int64))
+    assert digests(path)[0] == case.digest
+    np.save(tmp_path / "a.npy", np.array([0, 2, 1], dtype=np.uint8)[voxels()])
+    assert digests(path)[0] != case.digest
+    graph = Graph.open(path, tmp_path / "results")
+    graph.prepare()
+    assert digests(graph.layout.config) == digests(path)
+
+
+@pytest.mark.parametrize(
+    ("shape", "line"),
+    [
+        ("{kind: voxels, file: a.npy}",
+         "11:33: 'a.npy': labels run up to 2, but 1 materials are named"),
+        ("{kind: voxels, file: a.npy, more_materials: [sand]}",
+         "11:57: material 'sand' is not defined under materials"),
+        ("{kind: voxels, file: b.npy}", "11:33: the shape's file 'b.npy' is no file"),
+        ("{kind: voxels, file: grain.stl}",
+         "11:33: 'grain.stl': the ending '.stl' is none of .npy, .nc, .zarr"),
+        ("{kind: voxels, file: .}", "11:33: the shape's file '.' is a folder"),
+        ("{kind: voxels, file: a.npy, more_materials: [salt]}\n"
+         "    coating: {material: salt, core_radius_fraction: 0.5}",
+         "12:14: the body of 'plate' cannot be made: only a body of one material"),
+    ],
+)  # fmt: skip
+def test_faults_of_label_volumes(shape, line, campaign_of, tmp_path, capsys):
+    np.save(tmp_path / "a.npy", voxels())
+    assert main(["check", str(campaign_of(shape))]) == 2
+    told = capsys.readouterr().err
+    assert f"campaign.yaml:{line}" in told and "  hint: " in told

@@ -59,7 +59,7 @@ def body(
         return canonical(
             {"kind": "filled", "host": canonical(spec), "spheres": spheres}
         ), everything
-    return canonical(spec), [0]
+    return canonical(spec), everything
 
 
 def _layered(spec: Mapping[str, Any], layers: Mapping[str, Any]) -> dict[str, Any]:

@@ -89,7 +89,7 @@ def expand(campaign: Campaign) -> Grid:
             shape, kept = body(particle, indices)
             indices = tuple(indices[place] for place in kept)
             outer[p, w] = indices[0]
-            if len(indices) > 1:
+            if len(indices) > 1 and not particle.more_materials:
                 core[p, w] = indices[1]
             shape_key = canonical_json(shape)
             for s, x in enumerate(values[w]):

@@ -122,11 +122,13 @@ def canonical(spec: Mapping[str, Any]) -> dict[str, Any]:
     return plain
 
 
+_NO_GEOMETRY = {"core_radius_fraction", "file", "variable", "more_materials"}
+
+
 def _plain(spec: Mapping[str, Any]) -> dict[str, Any]:
     if spec["kind"] in GENERATORS:
-        # What a file holds counts, not where it lies.
-        apart = ("core_radius_fraction", *(("file",) if "content" in spec else ()))
-        own = {key: value for key, value in spec.items() if key not in apart}
+        # What a file holds counts, not where it lies; materials are known by their indices.
+        own = {key: value for key, value in spec.items() if key not in _NO_GEOMETRY}
         return _simplest({key: _digits(part) for key, part in own.items() if part is not None})
     match spec["kind"]:
         case "spheroid":

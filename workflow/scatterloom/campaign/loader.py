@@ -144,10 +144,12 @@ def load(path: str | Path) -> Campaign:
             sections["sizes"],
         )
     if model is not None and not problems:
+        model = with_contents(model, contents)
+        problems += crosscheck.check_bodies(document, model)
         problems += crosscheck.check_densities(document, model)
     if problems or model is None:
         raise BadInput(_in_order(problems, document))
-    model = with_contents(with_points(model, size_tables), contents)
+    model = with_points(model, size_tables)
     assert constants.medium is not None  # else there were problems
     warnings = [
         *doubts,

@@ -72,7 +72,7 @@ class Particle(Section):
                 "give one of 'coating', 'layers' and 'inclusions'; a particle cannot have several",
                 given[1],
             )
-        if self.shape.kind != "mesh":  # its file is read later
+        if not hasattr(self.shape, "content"):  # files are read later
             self._check_body()
         return self
 
@@ -86,13 +86,18 @@ class Particle(Section):
 
     @property
     def materials(self) -> tuple[str, ...]:
-        """Names of the materials from outside inwards; of inclusions as they are listed."""
+        """Names of the materials from outside inwards; others as they are listed."""
         if self.coating is not None:
             return self.coating.material, self.material
         layers = tuple(layer.material for layer in self.layers)
         held = [group.material for group in self.inclusions if group.material is not None]
         others = tuple(name for name in dict.fromkeys(held) if name != self.material)
-        return (*layers, self.material, *others)
+        return (*layers, self.material, *others, *self.more_materials)
+
+    @property
+    def more_materials(self) -> tuple[str, ...]:
+        """Names of materials that the shape brings beside that of the particle."""
+        return tuple(getattr(self.shape, "more_materials", ()))
 
 
 class Sizes(Section):

@@ -6,7 +6,7 @@ from typing import Annotated, Literal
 
 from pydantic import Field, model_validator
 
-from scatterloom.campaign.file_shapes import MeshFile
+from scatterloom.campaign.file_shapes import MeshFile, VoxelFile
 from scatterloom.campaign.random_shapes import (
     BallisticCluster,
     FractalCluster,
@@ -151,6 +151,7 @@ Shape = Annotated[
     | FractalCluster
     | BallisticCluster
     | PackedCluster
-    | MeshFile,
+    | MeshFile
+    | VoxelFile,
     Field(discriminator="kind"),
 ]

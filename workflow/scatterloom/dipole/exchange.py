@@ -53,14 +53,14 @@ class Exchange:
 
 
 def exchanges(lattice: Lattice) -> Iterator[Exchange]:
-    """Exchanges of every material and axis; none where first moments are not known."""
+    """Exchanges of every region and axis; none where first moments are not known."""
     composition = lattice.composition
-    if composition is None or composition.moment is None:
+    if composition is None:
         return
     number = np.full(lattice.box, -1, dtype=np.int64)
     number[tuple(lattice.cell.T)] = np.arange(len(lattice.cell))
     cells = len(lattice.cell)
-    for surface, moment in zip(composition.surfaces, composition.moment, strict=True):
+    for surface, moment in zip(composition.regions, composition.moment, strict=True):
         vector = surface.vector
         size = np.linalg.norm(vector, axis=1)
         oblique = np.zeros(cells, dtype=bool)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass, replace
 from itertools import pairwise
 
@@ -14,7 +15,7 @@ from scatterloom.particle.overlap import FULL, octant_overlap
 from scatterloom.particle.polyhedron import Polyhedron
 from scatterloom.particle.shapes import Ellipsoid, Faceted, Shape, SolidShape
 from scatterloom.particle.surface_cells import SurfaceCells, surface_cells
-from scatterloom.solids.mesh import MEDIUM
+from scatterloom.solids.mesh import MEDIUM, Interface
 
 Floats = NDArray[np.float64]
 
@@ -100,16 +101,21 @@ class Cut:
     fraction : float64 (n_material,) + box
         Volume fraction of each material in every cell.
     surfaces : tuple of Surface
-        Their cells are indices into the flattened box.
-    moment : float64 (n_surface,) + box + (3,) or None
+        What lies between each pair of materials; cells are indices into the flattened box.
+    regions : tuple of Surface
+        Closed surfaces, each with one material inside, which together make up the particle. They
+        are the same but for grains in touch, whose surface is closed by what lies between
+        them. Empty where first moments are not made use of.
+    moment : float64 (n_region,) + box + (3,)
         Integral of the position from the cell's centre [cells] over the part of each cell
-        that the surface encloses; None where it is not made use of.
+        that a region encloses.
     """
 
     fill: Floats
     fraction: Floats
     surfaces: tuple[Surface, ...]
-    moment: Floats | None = None
+    regions: tuple[Surface, ...]
+    moment: Floats
 
 
 @dataclass(frozen=True, eq=False)
@@ -130,11 +136,13 @@ def cut(shape: Shape, placement: Placement) -> Cut:
     held = [bodies[0].fill, *(np.minimum(body.fill, bodies[0].fill) for body in bodies[1:])]
     held.append(np.zeros_like(held[0]))
     moments = [body.moment for body in bodies if body.moment is not None]
+    surfaces = tuple(_sparse(m, m - 1, body.vectors) for m, body in enumerate(bodies))
     return Cut(
         fill=bodies[0].fill,
         fraction=np.stack([outside - within for outside, within in pairwise(held)]),
-        surfaces=tuple(_sparse(m, m - 1, body.vectors) for m, body in enumerate(bodies)),
-        moment=np.stack(moments) if moments else None,
+        surfaces=surfaces,
+        regions=surfaces if moments else (),
+        moment=np.stack(moments) if moments else np.zeros((0, *placement.box, 3)),
     )
 
 
@@ -188,7 +196,8 @@ def _polyhedron(body: Polyhedron, placement: Placement) -> _Body:
 def _solid(shape: SolidShape, placement: Placement) -> Cut:
     """Cells of a solid: what its surfaces enclose, added up with their signs."""
     fraction = np.zeros((shape.solid.materials, *placement.box))
-    parts: dict[tuple[int, int], list[SurfaceCells]] = {}
+    between: dict[tuple[int, int], list[SurfaceCells]] = {}
+    regions: dict[tuple[int, int], list[SurfaceCells]] = {}
     moments: dict[tuple[int, int], Floats] = {}
     for face in shape.solid.interfaces:
         mesh = face.mesh.turned(placement.rotation).moved(np.zeros(3), 1.0 / placement.spacing)
@@ -196,23 +205,54 @@ def _solid(shape: SolidShape, placement: Placement) -> Cut:
         cells = surface_cells(mesh, placement.origin, placement.box, hollow)
         # Seen from the material, a hollow takes away what it encloses.
         sign = -1.0 if hollow else 1.0
-        inside, outside = (face.outside, MEDIUM) if hollow else (face.inside, face.outside)
-        fraction[inside] += sign * cells.fill
-        if outside != MEDIUM:
-            fraction[outside] -= cells.fill
-        pair = (inside, outside)
-        parts.setdefault(pair, []).append(cells)
-        moments[pair] = moments.get(pair, 0.0) + sign * cells.moment
+        pair = (face.outside, MEDIUM) if hollow else (face.inside, face.outside)
+        fraction[pair[0]] += sign * cells.fill
+        if pair[1] != MEDIUM:
+            fraction[pair[1]] -= cells.fill
+        for region, part in _regions(cells, face, pair):
+            regions.setdefault(region, []).append(part)
+            moments[region] = moments.get(region, 0.0) + sign * cells.moment
+        for neighbour, part in _by_neighbour(cells, face, pair):
+            between.setdefault((pair[0], neighbour), []).append(part)
     fraction = np.clip(fraction, 0.0, 1.0)
     fraction[fraction >= FULL] = 1.0
     fill = np.minimum(fraction.sum(axis=0), 1.0)
     fill[fill >= FULL] = 1.0
-    return Cut(
-        fill,
-        fraction,
-        tuple(_joined(*pair, part) for pair, part in parts.items()),
-        np.stack(list(moments.values())),
-    )
+    surfaces = tuple(_joined(*pair, parts) for pair, parts in between.items())
+    if all(face.beyond is None for face in shape.solid.interfaces):
+        closed = surfaces
+    else:
+        closed = tuple(_joined(*pair, parts) for pair, parts in regions.items())
+    return Cut(fill, fraction, surfaces, closed, np.stack(list(moments.values())))
+
+
+def _regions(
+    cells: SurfaceCells, face: Interface, pair: tuple[int, int]
+) -> Iterator[tuple[tuple[int, int], SurfaceCells]]:
+    """Closed surfaces that a face is, or is a part of, with the materials on either side.
+
+    Grains in touch are seen as a body of material 0 in which they replace it, so that what lies
+    between two of them is met once.
+    """
+    if face.beyond is None:
+        yield pair, cells
+        return
+    yield (0, MEDIUM), cells.only(np.array(face.beyond)[cells.piece] == MEDIUM)
+    if face.inside != 0:
+        yield (face.inside, 0), cells
+
+
+def _by_neighbour(
+    cells: SurfaceCells, face: Interface, pair: tuple[int, int]
+) -> Iterator[tuple[int, SurfaceCells]]:
+    """Parts of a surface by what is beyond, each surface between two grains only once."""
+    if face.beyond is None:
+        yield pair[1], cells
+        return
+    beyond = np.array(face.beyond)[cells.piece]
+    for neighbour in sorted(set(face.beyond)):
+        if neighbour < face.inside:
+            yield neighbour, cells.only(beyond == neighbour)
 
 
 def _joined(inside: int, outside: int, parts: list[SurfaceCells]) -> Surface:
@@ -220,7 +260,7 @@ def _joined(inside: int, outside: int, parts: list[SurfaceCells]) -> Surface:
     first, pieces = 0, []
     for part in parts:
         pieces.append(part.piece + first)
-        first = int(pieces[-1].max()) + 1
+        first = int(pieces[-1].max(initial=first - 1)) + 1
     return Surface(
         inside,
         outside,

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
@@ -29,14 +29,18 @@ class Composition:
         Volume fraction of each material in every cell; the rest is medium.
     surfaces : tuple of Surface
         What lies between each pair of materials; their cells are those of the lattice.
-    moment : float64 (n_surface, n_cell, 3) or None
+    regions : tuple of Surface
+        Closed surfaces whose insides make up the particle; none where first moments are not made
+        use of.
+    moment : float64 (n_region, n_cell, 3)
         Integral of the position from the cell's centre over the part of the cell that
-        each surface encloses [cells]; None where it is not made use of.
+        each region encloses [cells].
     """
 
     fraction: Floats
     surfaces: tuple[Surface, ...]
-    moment: Floats | None = None
+    regions: tuple[Surface, ...] = ()
+    moment: Floats = field(default_factory=lambda: np.zeros((0, 0, 3)))
 
 
 # Compared and hashed by identity: it holds arrays.
@@ -113,6 +117,11 @@ class Lattice:
             return ((0, MEDIUM),)
         surfaces = self.composition.surfaces
         return tuple((s.inside, s.outside) for s in surfaces for _ in range(s.pieces))
+
+    @property
+    def contacts(self) -> tuple[tuple[int, int], ...]:
+        """Pairs of materials (inside, outside) that touch, -1 for the medium."""
+        return tuple(dict.fromkeys(self.interfaces))
 
     @property
     def area_vector(self) -> Floats:
@@ -194,8 +203,12 @@ def lattice(
     normal[area == 0.0] = 0.0
     composition = None
     if shape.core_radius_fraction is not None or not isinstance(shape, Ellipsoid):
-        moment = None if parts.moment is None else parts.moment[:, inside]
-        composition = Composition(parts.fraction[:, inside], surfaces, moment)
+        regions = surfaces
+        if parts.regions is not parts.surfaces:
+            regions = tuple(region.within(number) for region in parts.regions)
+        composition = Composition(
+            parts.fraction[:, inside], surfaces, regions, parts.moment[:, inside]
+        )
     nx, ny, nz = place.box
     ox, oy, oz = (float(o) for o in place.origin)
     return Lattice(

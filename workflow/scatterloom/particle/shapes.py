@@ -19,7 +19,7 @@ from numpy.typing import NDArray
 
 from scatterloom.particle.polyhedron import Polyhedron, cuboid, prism
 from scatterloom.solids import placing
-from scatterloom.solids.mesh import Solid, Symmetry
+from scatterloom.solids.mesh import MEDIUM, Solid, Symmetry
 from scatterloom.solids.registry import GENERATORS
 
 
@@ -66,6 +66,11 @@ class Shape(ABC):
     def volume(self) -> float:
         """Volume in units of the cubed equal-volume-sphere radius: 4 pi / 3."""
         return 4.0 * math.pi / 3.0
+
+    @property
+    def layers(self) -> frozenset[int]:
+        """Materials that surround something: another material or a hollow."""
+        return frozenset(range(len(self.scales) - 1))
 
     @property
     def scales(self) -> tuple[float, ...]:
@@ -181,6 +186,10 @@ class SolidShape(Shape):
     @cached_property
     def symmetry(self) -> Symmetry:
         return placing.symmetry(self.solid)
+
+    @property
+    def layers(self) -> frozenset[int]:
+        return frozenset(f.outside for f in self.solid.interfaces if f.outside != MEDIUM)
 
     def bounds(self, rotation: NDArray[np.float64]) -> NDArray[np.float64]:
         turned = self._corners @ rotation.T

@@ -10,7 +10,7 @@ surface may have dents, hollows and several parts: nothing asks what is inside.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numba import njit
@@ -49,6 +49,10 @@ class SurfaceCells:
     piece: NDArray[np.int32]
     cell: NDArray[np.int64]
     vector: Floats
+
+    def only(self, kept: NDArray[np.bool_]) -> SurfaceCells:
+        """The same cells with some of the entries of pieces."""
+        return replace(self, piece=self.piece[kept], cell=self.cell[kept], vector=self.vector[kept])
 
 
 @njit(cache=True)

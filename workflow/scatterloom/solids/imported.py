@@ -1,14 +1,17 @@
-"""Solids from files: meshes."""
+"""Solids from files: meshes and label volumes."""
 
 from __future__ import annotations
 
 from collections.abc import Mapping
+from pathlib import Path
 from typing import Any
 
 import numpy as np
 
 from scatterloom.solids import kept
 from scatterloom.solids.adjacency import with_smooth_pieces
+from scatterloom.solids.evening import evened
+from scatterloom.solids.labels import label_solid, read_labels, trimmed
 from scatterloom.solids.mesh import Interface, Mesh, Solid
 from scatterloom.solids.mesh_file import Arrays, read_mesh
 from scatterloom.solids.soundness import check_closed_body
@@ -57,8 +60,29 @@ def check_mesh(arrays: Arrays) -> int:
 
 def mesh_solid(spec: Mapping[str, Any]) -> Solid:
     """Solid of a shape ``{"kind": "mesh", "content": digest, "edge_angle_deg": angle}``."""
-    mesh = _mesh(kept.recall(spec["content"]))
+    mesh = evened(_mesh(kept.recall(spec["content"])))
     return Solid((Interface(with_smooth_pieces(mesh, float(spec["edge_angle_deg"]))),))
+
+
+def label_arrays(place: Path, variable: str | None) -> Arrays:
+    """Labels of a volume that a campaign names, or of one kept beside results.
+
+    Raises
+    ------
+    ValueError
+        If there are none.
+    """
+    if place.suffix != kept.ENDING:
+        return {"labels": read_labels(place, variable)}
+    labels = kept.unpacked(place.read_bytes()).get("labels")
+    if labels is None:
+        raise ValueError("the file does not hold labels")
+    return {"labels": trimmed(labels)}
+
+
+def voxel_solid(spec: Mapping[str, Any]) -> Solid:
+    """Solid of a shape ``{"kind": "voxels", "content": digest}``."""
+    return label_solid(trimmed(kept.recall(spec["content"])["labels"]))
 
 
 def _mesh(arrays: Mapping[str, Any]) -> Mesh:

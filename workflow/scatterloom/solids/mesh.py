@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
@@ -79,11 +79,16 @@ class Interface:
     inside, outside : int
         Numbers of the materials on either side, -1 for the medium. Surfaces of one solid do
         not cross; one inside another replaces the material within.
+    beyond : tuple of int or None
+        For a grain in touch with others, what lies beyond each piece of its surface, -1 for
+        the medium; each of the others has a surface of its own, and the grain lies in the medium
+        otherwise (`outside` is -1). None if `outside` lies everywhere.
     """
 
     mesh: Mesh
     inside: int = 0
     outside: int = MEDIUM
+    beyond: tuple[int, ...] | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -120,9 +125,6 @@ class Solid:
         """The same body about this centre, with the volume 4 pi / 3."""
         scale = math.cbrt(4.0 * math.pi / 3.0 / self.volume)
         return Solid(
-            tuple(
-                Interface(face.mesh.moved(-centre, scale), face.inside, face.outside)
-                for face in self.interfaces
-            ),
+            tuple(replace(face, mesh=face.mesh.moved(-centre, scale)) for face in self.interfaces),
             self.symmetry,
         )

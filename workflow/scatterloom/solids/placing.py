@@ -47,13 +47,14 @@ def _placed(solid: Solid) -> Solid:
 
 @lru_cache(maxsize=64)
 def _cored(solid: Solid, scale: float) -> Solid:
-    if len(solid.interfaces) != 1:
-        raise ValueError("only a body of one material without hollows can hold a core of its shape")
+    if len(solid.interfaces) != 1 or solid.interfaces[0].beyond is not None:
+        raise ValueError("only a body of one material without hollows can hold a core of its "
+                         "shape; leave the coating out")  # fmt: skip
     mesh = solid.interfaces[0].mesh
     first = mesh.corners[mesh.triangles[:, 0]]
     if np.sum(mesh.area_vectors * first, axis=1).min() <= 0.0:
-        raise ValueError("a core of this shape would stick out: parts of the surface are hidden "
-                         "from the centre")  # fmt: skip
+        raise ValueError("a core of this shape would stick out, since parts of the surface are "
+                         "hidden from the centre; leave the coating out")  # fmt: skip
     core = Interface(mesh.moved(np.zeros(3), scale), 1, 0)
     return Solid((*solid.interfaces, core), solid.symmetry)
 

@@ -8,7 +8,7 @@ from functools import lru_cache
 from typing import Any
 
 from scatterloom.solids import kinds
-from scatterloom.solids.imported import mesh_solid
+from scatterloom.solids.imported import mesh_solid, voxel_solid
 from scatterloom.solids.mesh import Solid
 
 Generator = Callable[[Mapping[str, Any]], Solid]
@@ -57,6 +57,7 @@ GENERATORS: dict[str, Generator] = {
     "filled": _filled,
     "layered": _layered,
     "mesh": mesh_solid,
+    "voxels": voxel_solid,
 }
 """For every kind of shape that is made of triangles, what makes them.
 
