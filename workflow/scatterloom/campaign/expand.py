@@ -38,7 +38,8 @@ class Grid:
     refractive_index_n, refractive_index_k : float64 (n_particle, n_wavelength)
         Refractive index relative to the medium; of a coated particle that of the coating.
     core_refractive_index : complex128 (n_particle, n_wavelength)
-        That of the core of a coated particle; NaN in both parts where there is no coating.
+        That of the core of a coated particle, or the one that absorbs most of several materials
+        within or beside the first; NaN in both parts where there is one material.
     job_seconds : float
         Predicted time at which cases are batched to jobs.
     anchor_spacing : float or None
@@ -89,8 +90,8 @@ def expand(campaign: Campaign) -> Grid:
             shape, kept = body(particle, indices)
             indices = tuple(indices[place] for place in kept)
             outer[p, w] = indices[0]
-            if len(indices) > 1 and not particle.more_materials:
-                core[p, w] = indices[1]
+            if len(indices) > 1:
+                core[p, w] = max(indices[1:], key=lambda index: index.imag)
             shape_key = canonical_json(shape)
             for s, x in enumerate(values[w]):
                 position = known.setdefault((shape_key, indices, x), len(cases))
