@@ -157,7 +157,7 @@ class LatticeMatrix:
     ----------
     lattice : Lattice
     tensors : CellTensors
-        Of all cells of the lattice, in its order.
+        Of all cells of the lattice, in its order, or of the fundamental ones alone.
     kd : float
         Lattice spacing times wavenumber.
     dtype : complex64 (default) or complex128
@@ -206,8 +206,9 @@ class LatticeMatrix:
             self._target[s] = image @ self._strides
         self._signs = signs
         real = self.dtype.type(0).real.dtype
-        self.root: NDArray = np.ascontiguousarray(tensors.root[self.fundamental].T.astype(dtype))
-        self.loss = np.ascontiguousarray(tensors.loss[self.fundamental].T)
+        own = slice(None) if len(tensors.root) == self.n_cell else self.fundamental
+        self.root: NDArray = np.ascontiguousarray(tensors.root[own].T.astype(dtype))
+        self.loss = np.ascontiguousarray(tensors.loss[own].T)
         self._root = _packed(self.root.T, real)
         spectrum = octant_spectrum(lattice.box, self.half, kd, dtype)
         self._kernel = _packed_planes(spectrum, real)

@@ -7,7 +7,7 @@ waves: memory goes with the cells alone.
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -92,9 +92,9 @@ class SingleParticle:
     ) -> None:
         kd = size_parameter * lattice.spacing
         materials = indices if isinstance(indices, Sequence) else [indices]
-        self.matrix = LatticeMatrix(
-            lattice, particle_tensors(lattice, materials, kd), kd, dtype, threads
-        )
+        tensors = particle_tensors(_fundamental(lattice), materials, kd)
+        self.matrix = LatticeMatrix(lattice, tensors, kd, dtype, threads)
+        self.lattice = lattice
         self.points = size_parameter * lattice.centre()[self.matrix.fundamental]
         self.signs = images(lattice, self.matrix)
         self.cells = len(lattice.cell)
@@ -146,19 +146,42 @@ class SingleParticle:
         field = self.incident(beam, polarization)
         right = self.rooted(field)
 
-        def multiply(vector: NDArray) -> NDArray:
-            return self.matrix(vector[:, None])[:, 0]
+        # Only classes that the wave has a part in are kept; the matrix never mixes them.
+        lit = np.flatnonzero(np.any(right != 0.0, axis=(1, 2)))
+        whole = np.zeros_like(right)
 
-        found = solve_symmetric(multiply, right, tolerance, start, max_products, progress)
-        dipoles = self.rooted(found.fields)
+        def multiply(vector: NDArray) -> NDArray:
+            whole[lit] = vector
+            return self.matrix(whole[:, None])[lit, 0]
+
+        right = right[lit]
+        first = None if start is None else start[lit]
+        found = solve_symmetric(multiply, right, tolerance, first, max_products, progress)
+        whole[lit] = found.fields
+        found.fields = whole
+        dipoles = self.rooted(whole)
         copies = float(self.matrix.n_class)
         # Classes are orthogonal; each cell stands for its images.
         extinction = 4.0 * np.pi * copies * _imaginary(field, dipoles)
         absorption = 4.0 * np.pi * copies * _loss(found.fields, self.matrix.loss)
-        sums = dipole_sums(self.points, dipoles, self.signs, directions)
+        sums = dipole_sums(self.lattice, self.matrix, dipoles, directions)
         along = np.einsum("dq,dq->d", directions, sums)
         amplitude = sums - along[:, None] * directions
         return WaveResult(amplitude, extinction, absorption, found)
+
+
+def _fundamental(lattice: Lattice) -> Lattice:
+    """The lattice with its fundamental cells alone, where each cell's tensor is its own affair.
+
+    Not so where neighbours exchange material (`scatterloom.dipole.exchange`).
+    """
+    if lattice.composition is not None:
+        return lattice
+    kept = np.ones(len(lattice.cell), dtype=bool)
+    for axis in np.flatnonzero(lattice.mirrors):
+        kept &= lattice.cell[:, axis] >= lattice.box[axis] // 2
+    parts = {name: getattr(lattice, name)[kept] for name in ("cell", "fill", "normal", "area")}
+    return replace(lattice, **parts)
 
 
 def _imaginary(field: NDArray, dipoles: NDArray) -> float:
