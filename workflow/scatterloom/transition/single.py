@@ -138,8 +138,9 @@ class SingleParticle:
             Unit vectors in which the scattered field is wanted.
         tolerance : float
             Relative residual at which to stop.
-        start : complex (n_class, 3, n_cell), optional
-            First solution x, that is a^1/2 times the exciting field; overwritten.
+        start : complex (n_class or n_lit, 3, n_cell), optional
+            First solution x, that is a^1/2 times the exciting field, in all classes or in
+            those that the wave has a part in, as `progress` sees them; overwritten.
         progress : callable(iterate), optional
         max_products : int
         """
@@ -155,7 +156,7 @@ class SingleParticle:
             return self.matrix(whole[:, None])[lit, 0]
 
         right = right[lit]
-        first = None if start is None else start[lit]
+        first = start if start is None or len(start) == len(lit) else start[lit]
         found = solve_symmetric(multiply, right, tolerance, first, max_products, progress)
         whole[lit] = found.fields
         found.fields = whole
@@ -206,14 +207,18 @@ def _loss(fields: NDArray, loss: Floats) -> float:
 
 
 def amplitude_matrix(
-    theta: WaveResult, phi: WaveResult, beam: Beam, azimuth_deg: float, angles_deg: Floats
+    theta: NDArray[np.complex128],
+    phi: NDArray[np.complex128],
+    beam: Beam,
+    azimuth_deg: float,
+    angles_deg: Floats,
 ) -> NDArray[np.complex128]:
     """Amplitudes S2, S3, S4, S1 in a scattering plane (Bohren & Huffman 1983, eq. 3.12).
 
     Parameters
     ----------
-    theta, phi : WaveResult
-        Solutions for both polarizations, with amplitudes in the directions of the plane.
+    theta, phi : complex128 (n_angle, 3)
+        Amplitudes of both polarizations in the directions of the plane (`WaveResult`).
     beam : Beam
     azimuth_deg : float
         Of the scattering plane, from the beam's theta vector towards its phi vector.
@@ -230,7 +235,7 @@ def amplitude_matrix(
     seen = np.stack([along, np.broadcast_to(-out_of, along.shape)], axis=1)  # (angle, 2, 3)
     # Incident parallel and perpendicular fields from those along theta and phi.
     mix = np.array([[np.cos(a), np.sin(a)], [np.sin(a), -np.cos(a)]])
-    parts = np.stack([theta.amplitude, phi.amplitude], axis=-1) @ mix.T  # (angle, 3, 2)
+    parts = np.stack([theta, phi], axis=-1) @ mix.T  # (angle, 3, 2)
     return -1j * (seen @ parts)
 
 
