@@ -234,7 +234,7 @@ def _mueller(amplitudes: NDArray[np.complex128]) -> NDArray[np.float64]:
 
 
 def _dataset(single: Single, done: dict[Key, _Lit], needed: int, seconds: float) -> xarray.Dataset:
-    """Extrapolate over the two lattices; the whole step to zero spacing is the half width."""
+    """Extrapolate over the two lattices; half widths from the step to zero spacing."""
     import xarray
 
     coarse, fine = single.cells
@@ -248,7 +248,7 @@ def _dataset(single: Single, done: dict[Key, _Lit], needed: int, seconds: float)
     best = toward_zero(rough, good)
     area = np.pi * single.size_parameter**2
     matrix = _mueller(best)
-    matrix_error = np.abs(matrix - _mueller(good))
+    matrix_error = _STEP * _widest(np.abs(matrix - _mueller(good)))
     count = len(single.incidence_deg)
 
     def table(name: str, level: int) -> NDArray[np.float64]:
@@ -268,7 +268,7 @@ def _dataset(single: Single, done: dict[Key, _Lit], needed: int, seconds: float)
         value = toward_zero(low, high)
         words = f"{name} cross section over that of the equal-volume sphere"
         variables[f"{name}_efficiency"] = (each, value, _UNITLESS, words)
-        error = np.abs(value - high)
+        error = _STEP * np.abs(value - high)
         variables[f"{name}_efficiency_error"] = (each, error, _UNITLESS, f"half width: {words}")
     for name in ("products", "residual"):
         values = np.stack([table(name, level) for level in range(2)])
@@ -300,7 +300,10 @@ def _dataset(single: Single, done: dict[Key, _Lit], needed: int, seconds: float)
         "wavelength_um": single.wavelength_um,
         "radius_um": single.radius_um,
         "size_parameter": single.size_parameter,
-        "error_statement": "half widths are the whole step from the finest lattice to zero spacing",
+        "error_statement": (
+            f"95 % half widths: {_STEP:g} times the step from the finest lattice to zero spacing, "
+            "of matrix elements the largest at this and the neighbouring angles"
+        ),
         "converged": int(all(lit.converged for lit in done.values())),
         "memory_predicted_bytes": needed,
         "memory_used_bytes": peak_bytes(),
@@ -308,6 +311,19 @@ def _dataset(single: Single, done: dict[Key, _Lit], needed: int, seconds: float)
     }
     return xarray.Dataset(data, coords, attributes)
 
+
+def _widest(step: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Largest of each angle and its neighbours: a step through zero is not small by merit."""
+    padded = np.pad(step, [(0, 0), (0, 0), (1, 1), (0, 0), (0, 0)], mode="edge")
+    return np.maximum(np.maximum(padded[:, :, :-2], padded[:, :, 1:-1]), padded[:, :, 2:])
+
+
+_STEP = 1.5
+"""Half widths over the step of the extrapolation.
+
+Of elements of spheres of m = 1.05 and 1.33, x = 4 to 25, 98 % and more were within (measured);
+their efficiencies were within a tenth of it.
+"""
 
 _UNITLESS = "1"
 _AMPLITUDE = "S2, S3, S4, S1 of Bohren & Huffman 1983, eq. 3.12"
