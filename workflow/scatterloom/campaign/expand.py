@@ -85,7 +85,8 @@ def expand(campaign: Campaign) -> Grid:
         materials = particle.materials
         for w in range(n_wavelength):
             indices = tuple(
-                _relative(campaign.indices[name][w], campaign.medium_index[w]) for name in materials
+                relative_index(campaign.indices[name][w], campaign.medium_index[w])
+                for name in materials
             )
             shape, kept = body(particle, indices)
             indices = tuple(indices[place] for place in kept)
@@ -142,7 +143,7 @@ def _rounded(rows: list[list[Decimal]]) -> NDArray[np.float64]:
     return np.array([[float(f"{value:.11e}") for value in row] for row in rows])
 
 
-def _relative(index: complex, medium_index: float) -> complex:
+def relative_index(index: complex, medium_index: float) -> complex:
     """Return index / medium_index, both parts to twelve significant digits."""
     medium = decimal(medium_index)
     parts = [float(f"{decimal(part) / medium:.11e}") for part in (index.real, index.imag)]
