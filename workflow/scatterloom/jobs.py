@@ -22,7 +22,7 @@ import numpy as np
 from threadpoolctl import threadpool_limits
 
 from scatterloom.attempts import Task, forget_checkpoint, solve_case
-from scatterloom.errors import BadInput, IntegrityError, ScatterloomError, visible
+from scatterloom.errors import BadInput, IntegrityError, visible
 from scatterloom.limits import Limits, peak_bytes
 from scatterloom.particle.shapes import from_spec
 from scatterloom.scattering.case import Asked
@@ -111,12 +111,14 @@ def read_spec(path: Path) -> dict[str, Any]:
         if spec["kind"] not in ("anchors", "span") or not spec["cases"]:
             raise ValueError("neither anchors nor a span, or no cases")
         sizes = [float(x) for _, x in spec["cases"]] + [float(x) for _, x, _ in spec["anchors"]]
-        task = task_of(spec)
-        numbers = [*sizes, task.tolerance, *task.cells, abs(task.index)]
-        numbers += vars(task.asked).values()
+        indices = [complex(*index) for index in (spec["index"], *spec.get("inner_indices", ()))]
+        numbers = [*sizes, float(spec["tolerance"]), *map(int, spec["levels"]), *map(abs, indices)]
+        numbers += [float(spec["accuracy"][name]) for name in Asked.__dataclass_fields__]
+        if not isinstance(spec["shape"]["kind"], str) or int(spec["refinements"]) < 0:
+            raise ValueError("no shape, or no number of refinements")
         if not all(0.0 < number < _LARGEST for number in numbers):
             raise ValueError("a number is out of range")
-    except (ScatterloomError, RecursionError, ArithmeticError, *_NOT_A_JOB) as error:
+    except (RecursionError, ArithmeticError, *_NOT_A_JOB) as error:
         reason = str(error) or type(error).__name__
         raise BadInput(f"{path}: not a job file ({visible(reason[:200])})") from None
     return spec

@@ -104,11 +104,11 @@ def read_heartbeat(path: Path) -> Heartbeat | None:
 
 def _plausible(beat: Heartbeat) -> bool:
     """Whether all values are of their kind, so that whoever shows them meets no surprise."""
-    texts = (beat.job, beat.kind, beat.state, beat.host, beat.message)
-    counts = (beat.cases_done, beat.cases_total, beat.solved, beat.reused, beat.cases_failed)
-    counts += (beat.pid, beat.peak_bytes, *(() if beat.exit_code is None else (beat.exit_code,)))
-    numbers = (beat.products, beat.updated, beat.seconds)
-    numbers += tuple(v for v in (beat.size_parameter, beat.residual) if v is not None)
+    texts = [beat.job, beat.kind, beat.state, beat.host, beat.message]
+    counts = [beat.cases_done, beat.cases_total, beat.solved, beat.reused, beat.cases_failed]
+    counts += [beat.pid, beat.peak_bytes, beat.exit_code or 0]
+    numbers = [beat.products, beat.updated, beat.seconds]
+    numbers += [value for value in (beat.size_parameter, beat.residual) if value is not None]
     return (
         all(type(text) is str and _plain(text) for text in texts)
         and all(type(count) is int and 0 <= count < _LARGEST for count in counts)
