@@ -15,6 +15,7 @@ from jinja2 import Environment, StrictUndefined
 
 from scatterloom.bulk.listing import NOTHING, SHOWN
 from scatterloom.bulk.listing import rows as bulk_rows
+from scatterloom.figures.failures import failures
 from scatterloom.scattering.record import SOLVED, SOLVED_WITH_WARNING, has_result
 
 if TYPE_CHECKING:
@@ -69,6 +70,7 @@ def report(
         audit=audit,
         contents=_contents(table),
         effort=effort_rows(table),
+        failures=failures(table),
         figures=[_figure(folder, entry) for entry in index["figures"]],
         notes=index["notes"],
         populations=populations,
