@@ -17,6 +17,11 @@ from scatterloom.unpacking import unpack
 
 COUNT = 6
 CSV = "wavelength_um,n,k\n0.4,1.5,0.01\n2.0,1.5,0.01\n"
+SIZES = "radius_um,density\n0.05,1\n0.2,2\n"
+POPULATION = """\
+populations:
+  - {name: haze, particles: {plate: 1.0}, size: {kind: tabulated, table: sizes.csv}}
+"""
 
 
 @pytest.fixture(scope="module")
@@ -24,7 +29,9 @@ def packed(tmp_path_factory):
     folder = tmp_path_factory.mktemp("packed")
     path = config(folder, COUNT)
     (folder / "silt.csv").write_text(CSV)
-    path.write_text(path.read_text().replace("{n: 1.5, k: 0.01}", "{table: silt.csv}"))
+    (folder / "sizes.csv").write_text(SIZES)
+    text = path.read_text().replace("{n: 1.5, k: 0.01}", "{table: silt.csv}")
+    path.write_text(text + POPULATION)
     results = folder / "results"
     done = call("run", path, "--results", results, "--cores", 2)
     assert done.returncode == 1, done.stderr
@@ -45,6 +52,7 @@ def test_everything_that_matters_is_packed(packed):
         "campaign.yaml",
         "merged.yaml",
         "materials/silt.csv",
+        "sizes/1-sizes.csv",
         "requirements.lock",
         "code.json",
         "audit.json",
@@ -57,6 +65,7 @@ def test_everything_that_matters_is_packed(packed):
     }
     with zipfile.ZipFile(packed) as archive:
         assert archive.read("materials/silt.csv").decode() == CSV
+        assert archive.read("sizes/1-sizes.csv").decode() == SIZES
         code = json.loads(archive.read("code.json"))
         graph = json.loads(archive.read("ro-crate-metadata.json"))["@graph"]
     assert code["version"]

@@ -20,7 +20,9 @@ from typing import Any
 
 import scatterloom
 from scatterloom.campaign import Campaign
+from scatterloom.campaign.document import read as read_document
 from scatterloom.campaign.loader import KEPT_SOLIDS
+from scatterloom.campaign.size_tables import named_tables
 from scatterloom.errors import EnvironmentProblem, IntegrityError
 from scatterloom.solids import kept
 from scatterloom.store.atomic import atomic_write
@@ -121,6 +123,8 @@ def _sources(
     for name, material in campaign.model.materials.items():
         if material.table is not None:
             yield f"materials/{_safe(name)}.csv", campaign.path.parent / material.table
+    for number, table in enumerate(_size_tables(campaign), start=1):
+        yield f"sizes/{number}-{_safe(Path(table).stem)}.csv", campaign.path.parent / table
     for path in (layout.audit, layout.report):
         if path.exists():
             yield path.name, path
@@ -128,6 +132,12 @@ def _sources(
         for path in sorted(layout.table.rglob("*")):
             if path.is_file():
                 yield f"{TABLE}/{path.relative_to(layout.table).as_posix()}", path
+
+
+def _size_tables(campaign: Campaign) -> list[str]:
+    """Files that the populations name; the merged campaign holds their rows."""
+    written = read_document(campaign.path, str(campaign.path))
+    return sorted({name for _, name in named_tables(written)})
 
 
 def _safe(name: str) -> str:

@@ -24,7 +24,7 @@ def read_size_tables(document: Document, folder: Path) -> tuple[dict[str, Points
     """
     tables: dict[str, Points] = {}
     problems: list[Problem] = []
-    for path, name in _named(document):
+    for path, name in named_tables(document):
         try:
             place = folder / name
             if not place.is_file():
@@ -41,7 +41,8 @@ def read_size_tables(document: Document, folder: Path) -> tuple[dict[str, Points
     return tables, problems
 
 
-def _named(document: Document) -> Iterator[tuple[KeyPath, str]]:
+def named_tables(document: Document) -> Iterator[tuple[KeyPath, str]]:
+    """Yield the tables that populations name, each with the place where it is named."""
     populations = document.tree.get("populations")
     for position, entry in enumerate(populations if isinstance(populations, list) else ()):
         if not isinstance(entry, dict):

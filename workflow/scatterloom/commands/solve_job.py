@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import argparse
-import json
 import os
 import sys
 from pathlib import Path
@@ -41,19 +40,14 @@ def execute(args: argparse.Namespace) -> int:
         # Before the numerical libraries are loaded, which read these once.
         os.environ.setdefault(f"{library}_NUM_THREADS", str(args.threads))
 
-    from scatterloom.errors import BadInput
+    from scatterloom import jobs
+    from scatterloom.store.library import CaseLibrary
 
     path = Path(args.spec).absolute()
     folder = path.parent.parent
+    spec = jobs.read_spec(path)
+    cases = len(spec["cases"])
     try:
-        spec = json.loads(path.read_bytes())
-        cases = len(spec["cases"])
-    except (OSError, ValueError, KeyError, TypeError) as error:
-        raise BadInput(f"{args.spec}: not a job file ({error})") from None
-    try:
-        from scatterloom import jobs
-        from scatterloom.store.library import CaseLibrary
-
         shared = CaseLibrary(Path(args.library)) if args.library else None
         jobs.solve(spec, folder, args.threads, _limits(args), shared)
     except Exception as error:

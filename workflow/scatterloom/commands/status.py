@@ -18,6 +18,8 @@ NAME = "status"
 HELP = COMMANDS[NAME]
 
 WATCH_EVERY_S = 2.0
+DISK_SHARE = 20.0
+"""Looking at the sizes of a million files takes seconds: a twentieth of the time is enough."""
 FAILURES_SHOWN = 10
 
 
@@ -35,11 +37,18 @@ def execute(args: argparse.Namespace) -> int:
     """Look and print; nothing is changed, and a run at work is not disturbed."""
     from scatterloom.outline import Outline
     from scatterloom.store.progress import Meter
+    from scatterloom.store.usage import disk_use
 
     outline = Outline.open(args.config, args.results)
     meter = Meter(outline.layout, outline.cases_of)
+    disk: dict[str, int] = {}
+    measured, took = 0.0, 0.0
     while True:
-        state = _state(outline, meter)
+        began = time.monotonic()
+        if not disk or began - measured > DISK_SHARE * took:
+            disk = disk_use(outline.layout)
+            measured, took = began, time.monotonic() - began
+        state = _state(outline, meter) | {"disk_bytes": disk}
         lines = [json.dumps(state, indent=2)] if args.json else _lines(outline, state)
         if args.watch and not args.json and sys.stdout.isatty():
             # Home and clear to the end: the screen is overwritten, not scrolled.
@@ -75,6 +84,7 @@ def _state(outline: Outline, meter: Meter) -> dict[str, Any]:
         "core_seconds_left": left,
         "core_seconds_left_error": left * pace.relative_error,
         "seconds_left": left / at_work if at_work else None,
+        "seconds_left_error": left / at_work * pace.relative_error if at_work else None,
         "cases_a_core_hour": 3600.0 * solved / spent if spent else None,
         "cases_reused": sum(beat.reused for beat in meter.beats.values()),
         "cases_failed": [vars(failure) for failure in failures],
@@ -113,6 +123,10 @@ def _disk_free(outline: Outline) -> int | None:
         return None
 
 
+def _mib(size: int) -> str:
+    return f"{size / 2**20:.3g} MiB" if size < 2**30 else f"{size / 2**30:.3g} GiB"
+
+
 def _lines(outline: Outline, state: dict[str, Any]) -> list[str]:
     from scatterloom.commands._display import spoken
 
@@ -137,9 +151,16 @@ def _lines(outline: Outline, state: dict[str, Any]) -> list[str]:
     if state["cases_a_core_hour"]:
         rows["throughput"] = f"{state['cases_a_core_hour']:.3g} cases a core hour"
     if state["seconds_left"] and state["cases_left"]:
-        rows["time left"] = f"{spoken(state['seconds_left'])} with the jobs now at work"
+        rows["time left"] = (
+            f"{spoken(state['seconds_left'])} with the jobs now at work "
+            f"(give or take {spoken(state['seconds_left_error'])})"
+        )
     if state["peak_bytes"]:
         rows["memory of a job"] = f"{state['peak_bytes'] / 2**20:.0f} MiB at most so far"
+    parts = {name: size for name, size in state["disk_bytes"].items() if size}
+    if parts:
+        listed = ", ".join(f"{name} {_mib(size)}" for name, size in parts.items())
+        rows["disk used"] = listed
     if state["disk_free_bytes"] is not None:
         rows["disk free"] = f"{state['disk_free_bytes'] / 2**30:.1f} GiB"
     lines = [f"campaign {outline.campaign.name} in {layout.folder}"]

@@ -15,12 +15,14 @@ from jinja2 import Environment, StrictUndefined
 
 from scatterloom.bulk.listing import NOTHING, SHOWN
 from scatterloom.bulk.listing import rows as bulk_rows
+from scatterloom.figures.failures import failures
+from scatterloom.figures.view import embedded, view_data
 from scatterloom.scattering.record import SOLVED, SOLVED_WITH_WARNING, has_result
 
 if TYPE_CHECKING:
     import xarray
 
-TEMPLATE = "report.html"
+TEMPLATE, SCRIPT = "report.html", "report.js"
 
 
 def report(
@@ -69,10 +71,14 @@ def report(
         audit=audit,
         contents=_contents(table),
         effort=effort_rows(table),
+        failures=failures(table),
         figures=[_figure(folder, entry) for entry in index["figures"]],
         notes=index["notes"],
         populations=populations,
         provenance=_provenance(table),
+        view=embedded(view_data(table, bulk)),
+        script=(files("scatterloom.figures") / SCRIPT).read_text(encoding="utf-8"),
+        citation=_citation(table),
         config=str(table.attrs.get("config", "")),
     )
 
@@ -153,6 +159,20 @@ def _figure(folder: Path, entry: Mapping[str, str]) -> dict[str, Any]:
     header, *rows = list(csv.reader(io.StringIO(text)))
     source = "data:image/svg+xml;base64," + base64.b64encode(svg).decode()
     return {**entry, "source": source, "header": header, "rows": rows}
+
+
+def _citation(table: xarray.Dataset) -> str:
+    """A reference to the table itself, as far as its attributes go."""
+    attributes = {name: str(value) for name, value in table.attrs.items()}
+    who = attributes.get("creator_name") or attributes.get("institution") or "Unnamed creator"
+    year = attributes.get("date_created", "")[:4] or "no date"
+    version = attributes.get("version_scatterloom", "")
+    digest = attributes.get("content_digest", "")[:16]
+    return (
+        f"{who} ({year}): {attributes.get('title', '')}. Scattering table "
+        f"{attributes.get('campaign', '')}, computed with Scatterloom {version}, "
+        f"content digest {digest}."
+    )
 
 
 def _provenance(table: xarray.Dataset) -> list[tuple[str, str]]:

@@ -1,4 +1,4 @@
-"""Why a case gave no result: numbered reasons, with what to change."""
+"""Why a case gave no result, or one with a warning: numbered reasons, with what to change."""
 
 from __future__ import annotations
 
@@ -34,6 +34,23 @@ REASONS = tuple(
     for number, (flag, advice) in enumerate(_ADVICE.items(), start=1)
 )
 """All reasons, in the order of their numbers (numbers are never given anew)."""
+
+WARNING_ADVICE = {
+    "not_converged": "as for reason 1; until then trust no more digits than the error bars give",
+    "accuracy_not_met": "ask for less under 'accuracy', allow finer lattices with "
+    "'solver.memory_gib' and 'solver.case_minutes', or use the numbers with their error bars",
+    "truncation": "ask for more accuracy under 'accuracy', which lengthens the wave basis",
+    "energy_balance": "ask for more accuracy under 'accuracy'; do not use the absorption of "
+    "these cells",
+    "cells_too_coarse": "give finer lattices with 'solver.levels'",
+    "arithmetic_cells": "give finer lattices with 'solver.levels' and compare; cells cut by the "
+    "surface converge slowly for metals",
+    "no_memory": "raise 'solver.memory_gib', or run on a machine with more memory",
+    "no_time": "raise 'solver.case_minutes'",
+    "breakdown": "check the refractive index of the material",
+}
+"""What to change where a case has a result with a warning, by flag; `INFORMATIVE` flags, which
+are no warnings, are missing."""
 
 
 def reason_of(warning_flags: int) -> Reason:

@@ -42,6 +42,9 @@ _NOT_RECORDS = (
     IndexError,
     TypeError,
     AttributeError,
+    ArithmeticError,
+    MemoryError,
+    RecursionError,
 )
 _PLAIN_KINDS = "biufcSU"
 

@@ -145,7 +145,7 @@ def commit_record(path: Path) -> dict[str, Any]:
         raise IntegrityError(
             f"{path}: not committed ({COMMIT} is missing), so its writing was never finished"
         ) from None
-    except ValueError as error:
+    except (ValueError, RecursionError) as error:
         raise IntegrityError(f"{path / COMMIT}: unreadable commit record ({error})") from None
     if not isinstance(record, dict) or record.get("format_version") != FORMAT_VERSION:
         raise IntegrityError(f"{path / COMMIT}: commit record of a foreign format version")
@@ -167,7 +167,12 @@ def manifest(path: Path) -> dict[str, Listed]:
         raise IntegrityError(f"{path}: its manifest ({MANIFEST}) is missing") from None
     if hashlib.sha256(text).hexdigest() != record.get("manifest_sha256"):
         raise IntegrityError(f"{path / MANIFEST}: the manifest is not the one committed")
-    return {name: Listed(f["bytes"], f["sha256"]) for name, f in json.loads(text)["files"].items()}
+    try:
+        listed = json.loads(text)["files"].items()
+        return {name: Listed(int(f["bytes"]), str(f["sha256"])) for name, f in listed}
+    except (ValueError, KeyError, TypeError, AttributeError, ArithmeticError, RecursionError):
+        # As committed, so the writer was another program.
+        raise IntegrityError(f"{path / MANIFEST}: the manifest lists no files") from None
 
 
 def problems(path: Path, *, digests: bool = True) -> list[str]:

@@ -53,7 +53,11 @@ def read_failures(folder: Path) -> list[Failure]:
     found = []
     for path in folder.glob("*.json"):
         try:
-            found.append(Failure(**json.loads(path.read_bytes())))
-        except (OSError, ValueError, TypeError):
+            note = Failure(**json.loads(path.read_bytes()))
+        except (OSError, ValueError, TypeError, RecursionError):
             continue
+        texts = (note.digest, note.job, note.shape, note.flag, note.meaning, note.advice)
+        sound = all(isinstance(text, str) and text.isprintable() for text in texts)
+        if sound and type(note.number) is int and type(note.size_parameter) in (int, float):
+            found.append(note)
     return sorted(found, key=lambda note: (note.number, note.shape, note.size_parameter))

@@ -27,6 +27,8 @@ _NOT_FIELDS = (
     EOFError,
     TypeError,
     RuntimeError,
+    ArithmeticError,
+    AttributeError,
     zipfile.BadZipFile,
     zlib.error,
 )

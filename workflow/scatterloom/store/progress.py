@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import math
 import os
 import socket
 import time
@@ -17,6 +18,7 @@ from scatterloom.store.layout import Layout
 RUNNING, DONE, FAILED, WAITING = "running", "done", "failed", "waiting"
 SILENT_S = 600.0
 """A job of another host that has not reported for so long counts as gone [s]."""
+_LARGEST = 2**53
 
 
 @dataclass(frozen=True)
@@ -94,9 +96,29 @@ def read_heartbeat(path: Path) -> Heartbeat | None:
     try:
         text = json.loads(path.read_bytes())
         known = {field.name for field in fields(Heartbeat)}
-        return Heartbeat(**{name: value for name, value in text.items() if name in known})
-    except (OSError, ValueError, TypeError, AttributeError):
+        beat = Heartbeat(**{name: value for name, value in text.items() if name in known})
+        return beat if _plausible(beat) else None
+    except (OSError, ValueError, TypeError, AttributeError, RecursionError):
         return None
+
+
+def _plausible(beat: Heartbeat) -> bool:
+    """Whether all values are of their kind, so that whoever shows them meets no surprise."""
+    texts = [beat.job, beat.kind, beat.state, beat.host, beat.message]
+    counts = [beat.cases_done, beat.cases_total, beat.solved, beat.reused, beat.cases_failed]
+    counts += [beat.pid, beat.peak_bytes, beat.exit_code or 0]
+    numbers = [beat.products, beat.updated, beat.seconds]
+    numbers += [value for value in (beat.size_parameter, beat.residual) if value is not None]
+    return (
+        all(type(text) is str and _plain(text) for text in texts)
+        and all(type(count) is int and 0 <= count < _LARGEST for count in counts)
+        and all(type(n) in (int, float) and math.isfinite(n) for n in numbers)
+    )
+
+
+def _plain(text: str) -> bool:
+    """Whether a text can be shown and written."""
+    return text.replace("\n", "").isprintable()
 
 
 def fail_heartbeat(

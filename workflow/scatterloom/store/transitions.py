@@ -25,6 +25,9 @@ _NOT_TRANSITIONS = (
     EOFError,
     TypeError,
     RuntimeError,
+    ArithmeticError,
+    AttributeError,
+    IndexError,
     zipfile.BadZipFile,
     zlib.error,
 )
@@ -101,10 +104,12 @@ def read_transitions(path: Path) -> StoredTransitions:
         raise IntegrityError(f"{path}: the file is missing") from None
     except _NOT_TRANSITIONS as error:
         raise IntegrityError(f"{path}: not a whole file of matrices ({error})") from None
-    if not 1 <= n_max <= 200 or len(values) != len(cells) + 1:
+    if not 1 <= n_max <= 200 or values.ndim != 2 or len(values) != len(cells) + 1:
         raise IntegrityError(f"{path}: not a whole file of matrices (its header is wrong)")
     labels = complex_from_real(n_max)[1]
     size = len(labels.kind)
+    if present.shape != values.shape[1:] or (present.size and int(present.max()) >= size * size):
+        raise IntegrityError(f"{path}: not a whole file of matrices (its elements are misplaced)")
     flat = np.zeros((len(values), size * size), dtype=np.complex128)
     flat[:, present] = values
     *corrected, plain = (TransitionMatrix(m.reshape(size, size), labels) for m in flat)
