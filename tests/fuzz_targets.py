@@ -323,7 +323,7 @@ def _failure_seeds() -> list[bytes]:
 
 def _job(content: bytes, folder: Path) -> None:
     """A job file is judged before anything is solved or reported."""
-    from scatterloom.jobs import read_spec
+    from scatterloom.job_file import read_spec
 
     path = folder / "jobs" / "a.json"
     path.parent.mkdir()
