@@ -1,4 +1,4 @@
-"""The verdict of the RO-Crate validator on an unpacked crate; for `scripts/validate-crate`."""
+"""The verdict of the RO-Crate validator on an unpacked crate; for `scripts/validate_crate`."""
 
 from __future__ import annotations
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+from copy import deepcopy
 from typing import Any
 
 from hypothesis import strategies as st
@@ -45,7 +46,7 @@ def _change(draw: st.DrawFn, tree: Any) -> None:
             tree = inner
             continue
         if draw(st.integers(0, 4)):
-            tree[key] = draw(st.sampled_from(VALUES))
+            tree[key] = deepcopy(draw(st.sampled_from(VALUES)))
         else:
             del tree[key]
         return

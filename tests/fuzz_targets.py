@@ -25,10 +25,12 @@ from scatterloom.campaign.expand import expand
 from scatterloom.campaign.spectra import read_spectrum
 from scatterloom.commands.status import failed_cases
 from scatterloom.errors import ScatterloomError
+from scatterloom.job_file import read_spec
 from scatterloom.store import casefile, commit
 from scatterloom.store.failures import read_failures
 from scatterloom.store.layout import Layout
 from scatterloom.store.progress import Meter
+from scatterloom.store.transitions import read_transitions
 from scatterloom.unpacking import unpack
 
 CONFIG = """\
@@ -229,12 +231,6 @@ def _fields(path: Path) -> None:
     read_fields(path)
 
 
-def _transitions(path: Path) -> None:
-    from scatterloom.store.transitions import read_transitions
-
-    read_transitions(path)
-
-
 def _fields_seeds() -> list[bytes]:
     anchor = {"digest": "8/3", "size_parameter": 1.0, "products": 2.0, "levels": [1, 1]}
     return [json.dumps({"version": version, "anchors": [anchor]}).encode() for version in (1, 2)]
@@ -323,8 +319,6 @@ def _failure_seeds() -> list[bytes]:
 
 def _job(content: bytes, folder: Path) -> None:
     """A job file is judged before anything is solved or reported."""
-    from scatterloom.jobs import read_spec
-
     path = folder / "jobs" / "a.json"
     path.parent.mkdir()
     path.write_bytes(content)
@@ -389,8 +383,8 @@ TARGETS: dict[str, Target] = {
     "case_payload": Target(_case_payload_seeds, _case_payload),
     "fields": Target(_fields_seeds, _npz(_fields)),
     "fields_raw": Target(lambda: [b"PK\3\4", b"\x93NUMPY\1\0"], _raw("a.npz", _fields)),
-    "transitions": Target(_transitions_seeds, _npz(_transitions)),
-    "transitions_raw": Target(lambda: [b"PK\3\4"], _raw("a.npz", _transitions)),
+    "transitions": Target(_transitions_seeds, _npz(read_transitions)),
+    "transitions_raw": Target(lambda: [b"PK\3\4"], _raw("a.npz", read_transitions)),
     "commit_record": Target(lambda: [b'{"format_version": 1, "manifest_sha256": "a"}'], _commit),
     "manifest": Target(lambda: [b'{"files": {"a": {"bytes": 1, "sha256": "a"}}}'], _manifest),
     "table_metadata": Target(_table_seeds, _table_metadata),

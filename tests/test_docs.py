@@ -49,6 +49,7 @@ ABOVE = {
     "commands",
     "crate",
     "graph",
+    "job_file",
     "jobs",
     "limits",
     "mending",

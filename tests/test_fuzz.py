@@ -56,3 +56,17 @@ def test_a_job_file_names_no_other_place(tmp_path):
         folder.mkdir()
         content = json.dumps(json.loads(good) | {"name": name}).encode()
         assert attempt(TARGETS["job_file"], content, folder) == "refused"
+
+
+def test_a_column_that_comes_twice_is_refused(tmp_path):
+    content = b"angle_deg,angle_deg,wavelength_um,F11,F11_error\n5,6,0.5,3,0.1\n"
+    assert attempt(TARGETS["measurement_csv"], content, tmp_path) == "refused"
+
+
+def test_a_classic_header_that_lies_does_not_fill_the_memory(tmp_path):
+    """A count of attributes of 2^31: the C library would take as much memory as that needs."""
+    (good,) = TARGETS["measurement_netcdf"].seeds()
+    # Magic, records, then the tag of dimensions and their count.
+    assert good[:3] == b"CDF" and good[8:12] == b"\0\0\0\x0a"
+    lying = good[:12] + b"\x7f\xff\xff\xff" + good[16:]
+    assert attempt(TARGETS["measurement_netcdf"], lying, tmp_path) == "refused"

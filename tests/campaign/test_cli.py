@@ -106,6 +106,9 @@ def test_estimate(config, capsys):
     result = json.loads(capsys.readouterr().out)
     assert (result["cells"], result["cases"]) == (52, 52)
     assert result["core_hours"] > 0.0
+    # Nothing was measured: the error is all of it.
+    assert result["core_hours_error"] == result["core_hours"]
+    assert result["products"] > result["cases"]
     # The thirteenth radius is 0.1 * 1.2^12 um, the shorter wavelength 0.5 um.
     largest = 2 * math.pi * 0.1 * 1.2**12 / 0.5
     assert result["largest_size_parameter"] == pytest.approx(largest, rel=1e-11)

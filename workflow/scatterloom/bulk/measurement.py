@@ -15,7 +15,7 @@ from pathlib import Path
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterloom.campaign.csvfile import Sheet, numbers, read_sheet, wrong_header
+from scatterloom.campaign.csvfile import LARGEST_FILE, Sheet, numbers, read_sheet, wrong_header
 from scatterloom.errors import BadInput, Problem
 
 FloatArray = NDArray[np.float64]
@@ -30,6 +30,7 @@ RATIOS: dict[str, tuple[int, int]] = {
 }
 """Ratios that can be measured, and where the element stands in the matrix (from 0)."""
 
+_MOST_ROWS = 1_000_000
 _NEGATIVE = ("-F12/F11", "minus_F12_F11")
 _EXAMPLE = "angle_deg,wavelength_um,F11,F11_error,-F12/F11,-F12/F11_error"
 
@@ -99,7 +100,10 @@ def _canonical(name: str) -> tuple[str, float] | None:
 
 
 def _from_sheet(sheet: Sheet) -> Measurement:
-    problems: list[Problem] = []
+    twice = sorted({name for name in sheet.header if sheet.header.count(name) > 1})
+    problems = [
+        wrong_header(sheet, f"column {name} is given twice", "keep one of them") for name in twice
+    ]
     columns: dict[str, tuple[float, int, int]] = {}
     place = {name: i for i, name in enumerate(sheet.header)}
     known = {"angle_deg", "wavelength_um"}
@@ -168,14 +172,39 @@ def _netcdf_sheet(path: Path) -> Sheet:
     """Lay a NetCDF file out as rows: one for each combination of its dimensions."""
     import xarray
 
+    def refuse(message: str, hint: str | None = None) -> BadInput:
+        return BadInput([Problem(str(path), None, None, message, hint=hint)])
+
     try:
-        with xarray.open_dataset(path, engine="netcdf4") as dataset:
-            frame = dataset.reset_coords().load()
-    except (OSError, ValueError) as error:
-        problem = Problem(str(path), None, None, f"cannot be read as NetCDF: {error}")
-        raise BadInput([problem]) from None
+        if path.stat().st_size > LARGEST_FILE:
+            size = LARGEST_FILE // 2**20
+            raise refuse(f"the file is larger than {size} MiB", "is it the right file?")
+        with open(path, "rb") as stream:
+            kind = stream.read(4)
+        if kind == b"CDF\x05":
+            raise refuse("NetCDF of 64-bit data is not read", "save it as NetCDF-4 or classic")
+        # The C library believes the counts in a classic header and fills the memory; the
+        # reader in Python meets the end of the file first.
+        engine = "scipy" if kind.startswith(b"CDF") else "netcdf4"
+        with xarray.open_dataset(path, engine=engine) as dataset:
+            wanted = [
+                name
+                for name, variable in dataset.variables.items()
+                if variable.dtype.kind in "fiu" and _is_known(str(name))
+            ]
+            dims = {d for name in wanted for d in dataset[name].dims}
+            rows_wanted = math.prod(dataset.sizes[d] for d in dims)
+            if rows_wanted > _MOST_ROWS:
+                raise refuse(f"{rows_wanted} rows are more than {_MOST_ROWS}", "average them first")
+            frame = dataset.reset_coords()[wanted].load()
+    except BadInput:
+        raise
+    except Exception as error:
+        # Whatever the libraries raise on a damaged file.
+        reason = str(error) or type(error).__name__
+        raise refuse(f"cannot be read as NetCDF: {reason[:200]}") from None
     names = [str(n) for n, v in frame.variables.items() if v.dtype.kind in "fiu"]
-    names = [n for n in names if n in ("angle_deg", "wavelength_um") or _of_element(n)]
+    names = [name for name in names if _is_known(name)]
     flat = xarray.broadcast(*(frame[n] for n in names)) if names else ()
     columns = [np.asarray(v.values, dtype=np.float64).ravel() for v in flat]
     rows = []
@@ -188,5 +217,6 @@ def _netcdf_sheet(path: Path) -> Sheet:
     return Sheet(str(path), 1, tuple(names), tuple(rows))
 
 
-def _of_element(name: str) -> bool:
-    return _canonical(name.removesuffix("_error")) is not None
+def _is_known(name: str) -> bool:
+    known = name in ("angle_deg", "wavelength_um")
+    return known or _canonical(name.removesuffix("_error")) is not None

@@ -41,11 +41,12 @@ def execute(args: argparse.Namespace) -> int:
         os.environ.setdefault(f"{library}_NUM_THREADS", str(args.threads))
 
     from scatterloom import jobs
+    from scatterloom.job_file import read_spec
     from scatterloom.store.library import CaseLibrary
 
     path = Path(args.spec).absolute()
     folder = path.parent.parent
-    spec = jobs.read_spec(path)
+    spec = read_spec(path)
     cases = len(spec["cases"])
     try:
         shared = CaseLibrary(Path(args.library)) if args.library else None

@@ -99,12 +99,15 @@ def read_transitions(path: Path) -> StoredTransitions:
                     f"this program reads version {FORMAT_VERSION}"
                 )
             n_max, cells = int(header["n_max"]), tuple(int(n) for n in header["cells"])
+            digest, symmetry = str(header["digest"]), str(header["symmetry"])
             values, present = archive["values"], archive["present"]
     except FileNotFoundError:
         raise IntegrityError(f"{path}: the file is missing") from None
     except _NOT_TRANSITIONS as error:
         raise IntegrityError(f"{path}: not a whole file of matrices ({error})") from None
-    if not 1 <= n_max <= 200 or values.ndim != 2 or len(values) != len(cells) + 1:
+    # Lattices are told apart by their cells, which the extrapolation divides by.
+    sound = all(0 < n < 100_000 for n in cells) and len(set(cells)) == len(cells)
+    if not sound or not 1 <= n_max <= 200 or values.ndim != 2 or len(values) != len(cells) + 1:
         raise IntegrityError(f"{path}: not a whole file of matrices (its header is wrong)")
     labels = complex_from_real(n_max)[1]
     size = len(labels.kind)
@@ -114,4 +117,4 @@ def read_transitions(path: Path) -> StoredTransitions:
     flat[:, present] = values
     *corrected, plain = (TransitionMatrix(m.reshape(size, size), labels) for m in flat)
     made = variants_from(corrected, [plain], cells)
-    return StoredTransitions(str(header["digest"]), str(header["symmetry"]), cells, made)
+    return StoredTransitions(digest, symmetry, cells, made)
