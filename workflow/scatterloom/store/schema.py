@@ -231,7 +231,7 @@ INDICES = (
         GRID[:2],
         "f8",
         "real part of the refractive index of the core relative to the medium",
-        comment="of several materials beside the first that with the largest imaginary part; missing "
+        comment="of several materials beside the first that which absorbs most; missing "
         "where there is one material",
     ),
     Variable(
@@ -239,7 +239,7 @@ INDICES = (
         GRID[:2],
         "f8",
         "imaginary part of the refractive index of the core relative to the medium",
-        comment="of several materials beside the first that with the largest imaginary part; missing "
+        comment="of several materials beside the first that which absorbs most; missing "
         "where there is one material",
     ),
 )
