@@ -68,6 +68,9 @@ def _triangles(face: Interface, turn: Floats, hollow: bool) -> tuple[Floats, Flo
     normal = vectors / np.maximum(np.linalg.norm(vectors, axis=1, keepdims=True), 1e-300)
     # Of an opened body the inner side of its back is seen.
     seen = normal[:, 2] < 0.0 if hollow else normal[:, 2] > 0.0
+    # Slivers have no direction of their own.
+    area = np.linalg.norm(vectors, axis=1)
+    seen &= area > 1e-3 * np.median(area)
     corners = mesh.corners[mesh.triangles[seen]]
     facing = -normal[seen] if hollow else normal[seen]
     light = np.clip(facing @ (_LIGHT / np.linalg.norm(_LIGHT)), 0.0, 1.0)
