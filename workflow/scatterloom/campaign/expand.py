@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from decimal import Decimal, localcontext
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,6 +13,7 @@ from scatterloom.campaign.bodies import body
 from scatterloom.campaign.case import Accuracy, Case, Overrides, canonical_json
 from scatterloom.campaign.grids import DIGITS, decimal, grid_values
 from scatterloom.campaign.loader import Campaign
+from scatterloom.campaign.model import Particle
 
 TWO_PI = 2 * Decimal("3.14159265358979323846264338327950288419716939937510")
 
@@ -85,10 +87,10 @@ def expand(campaign: Campaign) -> Grid:
         materials = particle.materials
         for w in range(n_wavelength):
             indices = tuple(
-                _relative(campaign.indices[name][w], campaign.medium_index[w]) for name in materials
+                relative_index(campaign.indices[name][w], campaign.medium_index[w])
+                for name in materials
             )
-            shape, kept = body(particle, indices)
-            indices = tuple(indices[place] for place in kept)
+            shape, indices = body_of(particle, indices)
             outer[p, w] = indices[0]
             if len(indices) > 1:
                 core[p, w] = max(indices[1:], key=lambda index: index.imag)
@@ -113,6 +115,14 @@ def expand(campaign: Campaign) -> Grid:
         anchor_spacing=model.solver.anchor_spacing,
         keep_transitions=model.solver.keep_transitions or bool(model.orientations),
     )
+
+
+def body_of(
+    particle: Particle, indices: tuple[complex, ...]
+) -> tuple[dict[str, Any], tuple[complex, ...]]:
+    """Return shape and indices; a coating of the same index as the core is no coating."""
+    shape, kept = body(particle, indices)
+    return shape, tuple(indices[place] for place in kept)
 
 
 def _sizes(campaign: Campaign) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
@@ -142,7 +152,7 @@ def _rounded(rows: list[list[Decimal]]) -> NDArray[np.float64]:
     return np.array([[float(f"{value:.11e}") for value in row] for row in rows])
 
 
-def _relative(index: complex, medium_index: float) -> complex:
+def relative_index(index: complex, medium_index: float) -> complex:
     """Return index / medium_index, both parts to twelve significant digits."""
     medium = decimal(medium_index)
     parts = [float(f"{decimal(part) / medium:.11e}") for part in (index.real, index.imag)]
