@@ -13,11 +13,13 @@ from scatterloom.campaign import load
 from scatterloom.campaign.expand import expand
 from scatterloom.campaign.geometry import extents
 from scatterloom.cli import main
+from scatterloom.crate import pack
 from scatterloom.errors import BadInput, IntegrityError
 from scatterloom.graph import Graph
 from scatterloom.particle.shapes import from_spec
 from scatterloom.solids import kept, registry
 from scatterloom.solids.mesh import Mesh
+from scatterloom.unpacking import unpack
 from solid_kit import block, globe, joined, reversed_mesh
 
 PLATE = "{kind: spheroid, equatorial_to_polar: 2.0}"
@@ -105,6 +107,14 @@ def test_kept_with_the_results_and_read_from_there(campaign_of, tmp_path, monkey
         monkeypatch.setattr(kept, "_remembered", {})
         with pytest.raises(IntegrityError, match=r"not as it was written|not that of its name"):
             from_spec(graph.specs[name]["shape"] | {"edge_angle_deg": 31.0})
+
+
+def test_packed_and_unpacked(campaign_of, tmp_path):
+    path = campaign_of("{kind: mesh, file: grain.stl}")
+    graph = Graph.open(path, tmp_path / "results")
+    pack(graph.campaign, graph.layout, tmp_path / "all.zip", with_table=False)
+    unpack(tmp_path / "all.zip", tmp_path / "elsewhere")
+    assert digests(tmp_path / "elsewhere" / "merged.yaml") == digests(path)
 
 
 LUMP = globe(2)

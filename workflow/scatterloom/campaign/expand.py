@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from decimal import Decimal, localcontext
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -13,7 +12,6 @@ from scatterloom.campaign.bodies import body
 from scatterloom.campaign.case import Accuracy, Case, Overrides, canonical_json
 from scatterloom.campaign.grids import DIGITS, decimal, grid_values
 from scatterloom.campaign.loader import Campaign
-from scatterloom.campaign.model import Particle
 
 TWO_PI = 2 * Decimal("3.14159265358979323846264338327950288419716939937510")
 
@@ -90,7 +88,8 @@ def expand(campaign: Campaign) -> Grid:
                 relative_index(campaign.indices[name][w], campaign.medium_index[w])
                 for name in materials
             )
-            shape, indices = body_of(particle, indices)
+            shape, kept = body(particle, indices)
+            indices = tuple(indices[place] for place in kept)
             outer[p, w] = indices[0]
             if len(indices) > 1:
                 core[p, w] = max(indices[1:], key=lambda index: index.imag)
@@ -115,14 +114,6 @@ def expand(campaign: Campaign) -> Grid:
         anchor_spacing=model.solver.anchor_spacing,
         keep_transitions=model.solver.keep_transitions or bool(model.orientations),
     )
-
-
-def body_of(
-    particle: Particle, indices: tuple[complex, ...]
-) -> tuple[dict[str, Any], tuple[complex, ...]]:
-    """Return shape and indices; a coating of the same index as the core is no coating."""
-    shape, kept = body(particle, indices)
-    return shape, tuple(indices[place] for place in kept)
 
 
 def _sizes(campaign: Campaign) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
