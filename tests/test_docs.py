@@ -54,6 +54,7 @@ ABOVE = {
     "mending",
     "outline",
     "pace",
+    "preview",
     "resolve",
     "unpacking",
     "__main__",
