@@ -55,6 +55,7 @@ ABOVE = {
     "mending",
     "outline",
     "pace",
+    "preview",
     "resolve",
     "unpacking",
     "__main__",

@@ -163,6 +163,52 @@ EDITS = {
     "mass without density": ("{plate: 0.7, ball: 0.3}", "{plate: 1}\n    shares_by: mass"),
     "density out of range": ("k: 0.003}", "k: 0.003, density_g_cm3: 2650}"),
     "odd streams": ("", "exchange: {streams: 15}\n"),
+    # bodies
+    "ends that meet": (
+        "{kind: sphere}",
+        "{kind: prism, sides: 6, height_to_width: 0.2, end_tilts_deg: [-40, 40]}",
+    ),
+    "indented and rounded": (
+        "{kind: sphere}",
+        "{kind: prism, sides: 6, height_to_width: 1, indentation: 0.4, edge_radius_fraction: 0.2}",
+    ),
+    "fractal law of no cluster": (
+        "{kind: sphere}",
+        "{kind: fractal_cluster, monomers: 16, fractal_dimension: 1.8, fractal_prefactor: 3.5, "
+        "seed: 1}",
+    ),
+    "two correlations": (
+        "{kind: sphere}",
+        "{kind: gaussian_sphere, radius_deviation: 0.1, correlation_angle_deg: 30, "
+        "power_law_exponent: 4, seed: 1}",
+    ),
+    "inclusion at the surface": (
+        "{kind: sphere}",
+        "{kind: cuboid, edges: [1, 1, 1]}\n    inclusions: "
+        "[{material: silt, radius_fraction: 0.5, centre: [0.5, 0, 0]}]",
+    ),
+    "inclusion without place": (
+        "{kind: sphere}",
+        "{kind: sphere}\n    inclusions: [{material: silt, radius_fraction: 0.5}]",
+    ),
+    "inclusions in a coated particle": (
+        "{kind: sphere}",
+        "{kind: sphere}\n    coating: {material: silt, core_radius_fraction: 0.5}\n"
+        "    inclusions: [{count: 3, volume_fraction: 0.1, seed: 1}]",
+    ),
+    "layers that grow": (
+        "{kind: sphere}",
+        "{kind: sphere}\n    layers: [{material: silt, inner_radius_fraction: 0.5}, "
+        "{material: salt, inner_radius_fraction: 0.6}]",
+    ),
+    "layers too thick": (
+        "{kind: sphere}",
+        "{kind: cuboid, edges: [1, 1, 1]}\n    layers: [{material: silt, thickness_fraction: 0.9}]",
+    ),
+    "unknown material of a layer": (
+        "{kind: sphere}",
+        "{kind: sphere}\n    layers: [{material: slit, inner_radius_fraction: 0.5}]",
+    ),
     # checks between sections
     "unknown material": ("material: salt", "material: silk"),
     "unknown material of a coating": (

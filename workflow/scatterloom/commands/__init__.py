@@ -6,6 +6,7 @@ command, imports none of the others.
 
 COMMANDS = {
     "check": "check a campaign file and say how large its table is",
+    "preview": "draw the particles of a campaign and their lattices before anything is solved",
     "estimate": "predict cases, jobs, time and memory of a campaign",
     "run": "run a campaign, or resume it",
     "status": "show what is done, running, failed and left",

@@ -22,13 +22,13 @@ def execute(args: argparse.Namespace) -> int:
     from scatterloom.bulk.bulkfile import bulk_of
     from scatterloom.bulk.oriented_table import oriented_of
     from scatterloom.bulk.population import populations_of
-    from scatterloom.campaign import load
     from scatterloom.figures.make import make_figures
-    from scatterloom.store.layout import Layout, results_root
+    from scatterloom.graph import Graph
+    from scatterloom.preview import bodies_of
     from scatterloom.store.table import open_table
 
-    campaign = load(args.config)
-    layout = Layout(results_root(args.results) / campaign.name)
+    graph = Graph.open(args.config, args.results)
+    campaign, layout = graph.campaign, graph.layout
     table = open_table(layout.table)
     populations = populations_of(campaign.model)
     bulk = bulk_of(layout.bulk, table, populations) if populations else None
@@ -36,7 +36,9 @@ def execute(args: argparse.Namespace) -> int:
         entry.name: oriented_of(layout.oriented / f"{entry.name}.zarr", table)
         for entry in campaign.model.orientations
     }
-    entries, notes = make_figures(table, layout.figures, bulk, populations, oriented)
+    entries, notes = make_figures(
+        table, layout.figures, bulk, populations, oriented, bodies_of(graph)
+    )
     for note in notes:
         print(f"scatterloom: {note}", file=sys.stderr)
     print(f"{layout.figures}: {len(entries)} figures")

@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from scatterloom.bulk.population import Population
+from scatterloom.figures.bodies import Body, sheets
 from scatterloom.figures.curves import matrix_curves
 from scatterloom.figures.effort import product_counts
 from scatterloom.figures.maps import size_angle_map
@@ -27,6 +28,7 @@ WAVELENGTHS_SHOWN = 3
 LADDERS_SHOWN = 12
 """Pairs of particle and wavelength that are drawn; a report with more would not be read."""
 
+BODIES_SHOWN = 30
 MAPS_SHOWN = 3
 """Particles of which a map of directions is drawn for each distribution of orientation."""
 
@@ -37,6 +39,7 @@ def make_figures(
     bulk: xarray.Dataset | None = None,
     populations: Sequence[Population] = (),
     oriented: Mapping[str, xarray.Dataset] | None = None,
+    bodies: Sequence[Body] = (),
 ) -> tuple[list[dict[str, str]], list[str]]:
     """Draw every figure and write the index last.
 
@@ -53,6 +56,8 @@ def make_figures(
         The populations of `bulk`, in its order.
     oriented : mapping of str to xarray.Dataset
         Tables of oriented particles by the name of their distribution.
+    bodies : sequence of Body
+        The particles, to be drawn with their lattices.
 
     Returns
     -------
@@ -70,13 +75,19 @@ def make_figures(
     (folder / INDEX).unlink(missing_ok=True)
     entries: list[dict[str, str]] = []
     notes: list[str] = []
+    if len(bodies) > BODIES_SHOWN:
+        notes.append(f"the first {BODIES_SHOWN} of {len(bodies)} particles are drawn")
     with style():
         maps: list[Callable[[], Picture]] = [
             partial(direction_map, content, name, particle, 0)
             for name, content in (oriented or {}).items()
             for particle in range(min(content.sizes["particle"], MAPS_SHOWN))
         ]
-        for draw in (*_plans(table, bulk, populations, notes), *maps):
+        for draw in (
+            *sheets(bodies[:BODIES_SHOWN]),
+            *_plans(table, bulk, populations, notes),
+            *maps,
+        ):
             try:
                 picture = draw()
             except ValueError as reason:

@@ -73,7 +73,7 @@ HOSTS: dict[str, Generator] = {
     "cuboid": kinds.cuboid,
     "prism": kinds.prism,
 }
-"""Kinds with cells of their own, which are made of triangles only to be filled or layered."""
+"""Kinds with cells of their own, made of triangles only to be filled, layered or drawn."""
 
 
 def build(spec: Mapping[str, Any]) -> Solid:
@@ -84,7 +84,7 @@ def build(spec: Mapping[str, Any]) -> Solid:
     ValueError
         If no generator knows the kind, or the body cannot be made.
     """
-    if spec.get("kind") not in GENERATORS:
+    if spec.get("kind") not in {**HOSTS, **GENERATORS}:
         raise ValueError(f"no generator for the shape kind {spec.get('kind')!r}")
     own = {key: value for key, value in spec.items() if key != "core_radius_fraction"}
     return _build(json.dumps(own, sort_keys=True))

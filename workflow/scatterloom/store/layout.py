@@ -154,6 +154,11 @@ class Layout:
         return self.folder / "compare"
 
     @property
+    def preview(self) -> Path:
+        """Pictures of the particles, drawn before anything is solved."""
+        return self.folder / "preview"
+
+    @property
     def figures(self) -> Path:
         """Figures and their index."""
         return self.folder / "figures"
