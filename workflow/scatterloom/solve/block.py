@@ -123,16 +123,13 @@ def solve_block(
     iterates = [ClassIterate(block) for block in incident]
     n_wave = sum(c * len(block) for c, block in zip(copies, incident, strict=True))
     # Before the first product the Born amplitudes stand in for the scale of S.
-    scale = _norm([block @ block.T for block in incident], copies)
+    scale = _combined([it.remainder_norm(whole=False) for it in iterates], copies)
     used = 0
     packed_before = matrix.products
     start_residual, dropped = 1.0, False
     history: list[float] = []
-    amplitudes: list[NDArray] = []
-    remainders: list[NDArray] = []
     error = np.inf
-    fresh = True
-    total = _norm(incident, copies)
+    total = _total_residual(iterates, copies, 1.0)
 
     def threshold() -> float:
         return 0.5 * tolerance * scale / np.sqrt(n_wave)
@@ -163,16 +160,13 @@ def solve_block(
             used += sum(len(block) for block in blocks)
         for iterate, block, image in zip(iterates, blocks, images, strict=True):
             iterate.take(block, image)
-        remainders = [iterate.residual_products()[1] for iterate in iterates]
-        missing = _norm(remainders, copies)
+        missing = _combined([it.remainder_norm(whole=False) for it in iterates], copies)
         # Amplitudes change little after the first step: their scale is looked at again when
         # it decides, and now and then.
         if len(history) % _RESCALE == 0 or missing <= 1.5 * tolerance * scale:
-            amplitudes = _corrected(iterates)
-            scale = _norm(amplitudes, copies)
-            fresh = True
-        else:
-            fresh = False
+            scale = _combined([it.scale() for it in iterates], copies)
+        if missing <= tolerance * scale:
+            missing = _combined([it.remainder_norm() for it in iterates], copies)
         error = missing / scale
         history.append(error)
         residual = _total_residual(iterates, copies, total)
@@ -182,12 +176,14 @@ def solve_block(
             break
         if checkpoint is not None:
             checkpoint(
-                lambda: [iterate.fields + iterate.residual for iterate in iterates], used / n_wave
+                lambda: [iterate.corrected_fields() for iterate in iterates], used / n_wave
             )
         if len(history) > 8 and error > 0.9 * history[-5]:
             break
-    if not fresh:
-        amplitudes = _corrected(iterates)
+    parts = [iterate.amplitudes() for iterate in iterates]
+    remainders = [rest for _, rest in parts]
+    amplitudes = [stationary + rest for stationary, rest in parts]
+    if not error <= tolerance:
         error = _norm(remainders, copies) / _norm(amplitudes, copies)
         history[-1] = error
     # The residual is updated, not recomputed, so the remainder does not see rounding.
@@ -196,7 +192,7 @@ def solve_block(
         amplitudes=amplitudes,
         remainder=remainders,
         # One free correction: A is close to one on what little is left.
-        fields=[iterate.fields + iterate.residual for iterate in iterates],
+        fields=[iterate.corrected_fields() for iterate in iterates],
         error=float(error),
         residual=_total_residual(iterates, copies, total),
         products=used / n_wave,
@@ -208,14 +204,11 @@ def solve_block(
     )
 
 
-def _corrected(iterates: Sequence[ClassIterate]) -> list[NDArray]:
-    """Amplitudes of all classes with their remainders added."""
-    return [stationary + rest for stationary, rest in (it.amplitudes() for it in iterates)]
+def _combined(norms: Sequence[float], copies: Sequence[int]) -> float:
+    """Norm over all classes from that of each sector."""
+    return float(np.sqrt(np.array(copies) @ np.square(norms)))
 
 
 def _total_residual(iterates: Sequence[ClassIterate], copies: Sequence[int], total: float) -> float:
-    squares = sum(
-        c * float(np.trace(it.residual_products()[0]).real)
-        for c, it in zip(copies, iterates, strict=True)
-    )
-    return float(np.sqrt(max(squares, 0.0))) / max(total, 1e-300)
+    squares = sum(c * it.squared_residual() for c, it in zip(copies, iterates, strict=True))
+    return float(np.sqrt(squares)) / max(total, 1e-300)
