@@ -247,11 +247,20 @@ class ClassIterate:
             self._coefficients[j] = added if kept is None else kept + added
         self._products = self._weak = None
 
-    def scale(self) -> float:
-        """Norm of the amplitudes between strong rows, which hold nearly all of it."""
-        return float(np.linalg.norm(self._strong_amplitudes() + self.residual_products()[1]))
+    def leading(self, count: int) -> NDArray:
+        """Orthonormal directions, at most `count`, of which most of ``R R^T`` is made."""
+        remainder = self.residual_products()[1]
+        combine = np.linalg.svd(remainder)[0][:, :count].conj().T
+        chosen = combine.astype(self._rest.dtype) @ self._rest
+        square = gram(chosen)
+        kept = significant_rows(square, 1e-6 * float(np.trace(square).real))
+        return kept.astype(chosen.dtype) @ chosen
 
-    def _strong_amplitudes(self) -> NDArray[np.complex128]:
+    def strong_amplitudes(self) -> NDArray[np.complex128]:
+        """Corrected amplitudes between strong rows, which hold nearly all of their norm."""
+        return self._stationary() + self.residual_products()[1]
+
+    def _stationary(self) -> NDArray[np.complex128]:
         mixed = (self._solved() @ (self._turned + self._rest).T).astype(np.complex128)
         return 0.5 * (mixed + mixed.T)
 
@@ -269,7 +278,7 @@ class ClassIterate:
         mixed, rest = self._weak_products()
         weak = self._symmetric[self.strong :, self.strong :]
         return (
-            self._in_waves(self._strong_amplitudes(), mixed, np.zeros_like(weak)),
+            self._in_waves(self._stationary(), mixed, np.zeros_like(weak)),
             self._in_waves(self.residual_products()[1], rest, weak),
         )
 
