@@ -152,6 +152,9 @@ def test_weak_rows_enter_the_amplitudes_to_first_order(system):
     assert off[4:, :4].max() <= 1.1 * weak * rest + 1e-13
     assert off[4:, 4:].max() <= 1.1 * weak**2 + 1e-13
     assert np.linalg.norm(remainder) == pytest.approx(iterate.remainder_norm(), rel=1e-9)
+    whole = np.linalg.norm(iterate.residual @ iterate.residual.T)
+    assert iterate.remainder_norm(iterate.across_norm()) == pytest.approx(whole, rel=1e-9)
+    assert whole <= iterate.remainder_norm(iterate.across_bound()) < 10.0 * whole
     np.testing.assert_allclose(iterate.residual, b - iterate.fields @ a.T, atol=1e-12)
     expected = iterate.fields + iterate.residual
     np.testing.assert_allclose(iterate.corrected_fields(), expected, atol=1e-12)

@@ -171,7 +171,7 @@ def solve_block(
     iterates = [ClassIterate(block) for block in incident]
     n_wave = sum(c * len(block) for c, block in zip(copies, incident, strict=True))
     # Before the first product the Born amplitudes stand in for the scale of S.
-    scale = _combined([it.remainder_norm(whole=False) for it in iterates], copies)
+    scale = _combined([it.remainder_norm() for it in iterates], copies)
     used = 0
     packed_before = matrix.products
     start_residual, dropped = 1.0, False
@@ -212,13 +212,13 @@ def solve_block(
             used += sum(len(block) for block in blocks)
         for iterate, block, image in zip(iterates, blocks, images, strict=True):
             iterate.take(block, image)
-        missing = _combined([it.remainder_norm(whole=False) for it in iterates], copies)
+        missing = _combined([it.remainder_norm() for it in iterates], copies)
         # Amplitudes change little after the first step: their scale is looked at again when
         # it decides, and now and then.
         if len(history) % _RESCALE == 0 or missing <= 1.5 * tolerance * scale:
             scale = _norm([it.strong_amplitudes() for it in iterates], copies)
         if missing <= tolerance * scale:
-            missing = _combined([it.remainder_norm() for it in iterates], copies)
+            missing = _whole_remainder(iterates, copies, tolerance * scale)
         if start is None or dropped:
             error = missing / scale
         elif missing <= tolerance * scale:
@@ -260,6 +260,16 @@ def solve_block(
         start_dropped=dropped,
         history=history,
     )
+
+
+def _whole_remainder(
+    iterates: Sequence[ClassIterate], copies: Sequence[int], allowed: float
+) -> float:
+    """Norm of the remainder, its dear part by a bound if that is good enough."""
+    bound = _combined([it.remainder_norm(it.across_bound()) for it in iterates], copies)
+    if bound <= allowed:
+        return bound
+    return _combined([it.remainder_norm(it.across_norm()) for it in iterates], copies)
 
 
 def _combined(norms: Sequence[float], copies: Sequence[int]) -> float:

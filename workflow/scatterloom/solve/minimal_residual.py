@@ -103,7 +103,6 @@ class ClassIterate:
         self._combinations: list[list[NDArray]] = []
         self._coefficients: list[NDArray | None] = []
         self._products: tuple[NDArray, NDArray] | None = None
-        self._weak: tuple[NDArray, NDArray] | None = None
 
     @property
     def strong(self) -> int:
@@ -156,7 +155,7 @@ class ClassIterate:
         self._fields = np.concatenate([solved, np.zeros_like(turned)])
         self._turned = np.concatenate([self._turned, turned])
         self._rest = np.concatenate([self._rest, rest])
-        self._products = self._weak = None
+        self._products = None
         if not self._images:
             diagonal = np.diag(self._strength[:last]).astype(np.complex128)
             self._products = diagonal, self._symmetric[:last, :last]
@@ -172,25 +171,26 @@ class ClassIterate:
         strong = float(np.trace(self.residual_products()[0]).real)
         return max(strong, 0.0) + float(self._strength[self.strong :].sum())
 
-    def remainder_norm(self, whole: bool = True) -> float:
-        """Frobenius norm of ``R^T R``, the error of the amplitudes to come.
+    def remainder_norm(self, across: float = 0.0) -> float:
+        """Frobenius norm of ``R R^T``, the error of the amplitudes to come.
 
-        Without `whole` the part between strong and weak rows, the only one that takes time,
-        is left out.
+        The part between strong and weak rows, the only one that takes time, is given as
+        `across`.
         """
         weak = self._symmetric[self.strong :, self.strong :]
-        parts = [np.linalg.norm(self.residual_products()[1]), np.linalg.norm(weak)]
-        if whole:
-            parts.append(np.sqrt(2.0) * np.linalg.norm(self._weak_products()[1]))
+        strong = self.residual_products()[1]
+        parts = np.array([np.linalg.norm(strong), np.linalg.norm(weak), across])
         return float(np.linalg.norm(parts))
 
-    def _weak_products(self) -> tuple[NDArray, NDArray]:
-        """Weak rows of F B times X^T and times R^T, complex128 (n_weak, n_strong) each."""
-        if self._weak is None:
-            frame = self._frame[self.strong :]
-            across = [self.incident @ rows.T for rows in (self._solved(), self._rest)]
-            self._weak = frame @ across[0], frame @ across[1]
-        return self._weak
+    def across_bound(self) -> float:
+        """At most the norm of ``R R^T`` between strong and weak rows, by Cauchy & Schwarz."""
+        strong = np.linalg.norm(self.residual_products()[0])
+        return float(np.sqrt(2.0 * strong * np.linalg.norm(self._strength[self.strong :])))
+
+    def across_norm(self) -> float:
+        """Norm of ``R R^T`` between strong and weak rows, in both triangles."""
+        across = self._frame[self.strong :] @ (self.incident @ self._rest.T)
+        return float(np.sqrt(2.0) * np.linalg.norm(across))
 
     def propose(self, threshold: float) -> NDArray:
         """Significant directions of the residual, orthonormal rows, (k, n_row), k >= 0."""
@@ -245,7 +245,7 @@ class ClassIterate:
             kept = self._coefficients[j]
             added = coefficients @ part
             self._coefficients[j] = added if kept is None else kept + added
-        self._products = self._weak = None
+        self._products = None
 
     def leading(self, count: int) -> NDArray:
         """Orthonormal directions, at most `count`, of which most of ``R R^T`` is made."""
@@ -269,17 +269,19 @@ class ClassIterate:
 
         ``S = B^T X + X^T B - X^T A X`` (here written with R) has the error
         ``R^T A^-1 R``, whose leading term ``R^T R`` is returned beside it: added to S it
-        makes the error smaller still, and its size is an estimate of the error of S.
+        makes the error smaller still, and its size is an estimate of the error of S. Between
+        strong and weak rows it is a small part and already added.
 
         Returns
         -------
         stationary, remainder : complex128 (n_wave, n_wave), both symmetric
         """
-        mixed, rest = self._weak_products()
         weak = self._symmetric[self.strong :, self.strong :]
+        corrected = self._solved() + self._rest
+        across = self._frame[self.strong :] @ (self.incident @ corrected.T)
         return (
-            self._in_waves(self._stationary(), mixed, np.zeros_like(weak)),
-            self._in_waves(self.residual_products()[1], rest, weak),
+            self._in_waves(self._stationary(), across, np.zeros_like(weak)),
+            self._in_waves(self.residual_products()[1], np.zeros_like(across), weak),
         )
 
     def _in_waves(self, strong: NDArray, across: NDArray, weak: NDArray) -> NDArray[np.complex128]:
