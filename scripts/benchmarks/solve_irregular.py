@@ -35,7 +35,7 @@ FINEST = 48
 """Cells across the finest lattice of the reference."""
 
 TURNED_FINEST = 40
-LEBEDEV_DEGREE = 19  # 146 directions: the rms of F11 by the rule alone is below 0.01 %
+LEBEDEV_DEGREE = 15  # 86 directions; more of them change ratios by 0.0002 at 12 cells
 ROUNDS = 3
 
 
@@ -104,9 +104,11 @@ def measure(threads: int) -> tuple[list[dict[str, Any]], Sequence[str]]:
     check["times faster than textbook"] = None
     reference = "+".join(str(n) for n in fine(SIZE_PARAMETER).record.levels)
     return [*rows, check], [
-        f"The particle without symmetry is the convex hull of {CORNERS} random points (seed {SEED}) "
-        f"on an ellipsoid of half axes {STRETCH[0]:g}, {STRETCH[1]:g}, {STRETCH[2]:g}. Errors are "
-        f"against lattices of {reference} cells across, extrapolated; the row 'turned lattices' "
-        "shows what an independent set of lattices, turned against the particle, makes of it.",
-        f"Its textbook rule has {len(rule[0])} directions, all of them solved in two polarizations.",
+        f"The particle without symmetry is the convex hull of {CORNERS} random points (seed "
+        f"{SEED}) on an ellipsoid of half axes {STRETCH[0]:g}, {STRETCH[1]:g}, {STRETCH[2]:g}. "
+        f"Errors are against lattices of {reference} cells across, extrapolated; the row 'turned "
+        "lattices' shows what an independent set of lattices, turned against the particle, makes "
+        "of it.",
+        f"Its textbook rule has {len(rule[0])} directions, none of which another one stands for, "
+        "solved in two polarizations each; more of them change ratios by 0.0002 (12 cells across).",
     ]

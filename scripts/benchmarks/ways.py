@@ -73,9 +73,7 @@ def textbook(
             solving += time.perf_counter() - started
             pair.append(dipoles)
             extinction += (
-                0.5
-                * weight
-                * extinction_efficiency(dipoles, particle, direction, polarization, x)
+                0.5 * weight * extinction_efficiency(dipoles, particle, direction, polarization, x)
             )
         matrix += weight * mueller_of_incidence(
             particle, (pair[0], pair[1]), direction, angles, AZIMUTHS

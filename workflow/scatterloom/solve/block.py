@@ -233,9 +233,7 @@ def solve_block(
         if error <= tolerance:
             break
         if checkpoint is not None:
-            checkpoint(
-                lambda: [iterate.corrected_fields() for iterate in iterates], used / n_wave
-            )
+            checkpoint(lambda: [iterate.corrected_fields() for iterate in iterates], used / n_wave)
         if len(history) > 8 and error > 0.9 * history[-5]:
             break
     parts = [iterate.amplitudes() for iterate in iterates]
