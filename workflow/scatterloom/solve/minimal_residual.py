@@ -144,14 +144,13 @@ class ClassIterate:
         turned = self._frame[first:last].astype(self._rest.dtype) @ self.incident
         rest = turned.copy()
         solved = self._solved()
-        self._coefficients = [
-            np.zeros((last, len(v)), dtype=np.complex128) for v in self._directions
-        ]
+        shares = [np.zeros((last, len(v)), dtype=np.complex128) for v in self._directions]
         for y, combined in zip(self._images, self._combinations, strict=True):
             share = rest @ y.conj().T
             rest -= share @ y
-            for kept, part in zip(self._coefficients, combined, strict=False):
+            for kept, part in zip(shares, combined, strict=False):
                 kept[first:] += share @ part
+        self._coefficients = list(shares)
         self._fields = np.concatenate([solved, np.zeros_like(turned)])
         self._turned = np.concatenate([self._turned, turned])
         self._rest = np.concatenate([self._rest, rest])
