@@ -19,6 +19,12 @@ def fields_needed(wildcards):
     return ancient([f"fields/{name}.npz" for name in GRAPH.jobs[wildcards.job].needs])
 
 
+def single_memory(name):
+    """Return MiB that a single solve needs."""
+    most = int(config.get("memory_mb", 1 << 40))
+    return min(needed_bytes(SINGLES[name]) // 2**20 + 1, most)
+
+
 rule solve_anchors:
     output:
         cases="cases/{job}.cases",
@@ -55,3 +61,23 @@ rule solve_span:
     shell:
         "exec env " + ONE_POOL + " {SCATTERLOOM} solve-job jobs/{wildcards.job}.json"
         " {OPTIONS} --threads {threads} --parent $PPID > {log} 2>&1"
+
+
+# Each takes all cores: its memory leaves no room for others.
+rule solve_single:
+    output:
+        "single/{name}.nc",
+    log:
+        "state/logs/single-{name}.log",
+    wildcard_constraints:
+        name=r"[A-Za-z][A-Za-z0-9_]*",
+    threads: workflow.cores
+    resources:
+        mem_mb=lambda wildcards: single_memory(wildcards.name),
+    params:
+        digest=lambda wildcards: SINGLES[wildcards.name].digest,
+    shell:
+        "exec env "
+        + ONE_POOL
+        + " {SCATTERLOOM} solve-single {CAMPAIGN_FILE} {wildcards.name}"
+        " {RESULTS} --threads {threads} --parent $PPID > {log} 2>&1"

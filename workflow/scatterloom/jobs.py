@@ -32,6 +32,11 @@ from scatterloom.store.fields import FieldFile, read_fields, write_fields
 from scatterloom.store.layout import Layout
 from scatterloom.store.library import CaseLibrary
 from scatterloom.store.progress import DONE, RUNNING, Heartbeat, write_heartbeat
+from scatterloom.store.transitions import (
+    StoredTransitions,
+    read_transitions,
+    write_transitions,
+)
 
 _HEARTBEAT_S = 0.5
 
@@ -157,6 +162,7 @@ class _Job:
         self.layout = Layout(folder)
         self.task = task_of(spec, threads, limits, self.layout.checkpoints)
         self.cases: list[tuple[str, float]] = [(d, float(x)) for d, x in spec["cases"]]
+        self.keep_transitions = bool(spec.get("keep_transitions"))
         self.report = _Reporter(folder, self.task, len(self.cases))
 
     def run(self) -> None:
@@ -194,6 +200,12 @@ class _Job:
     def _keep(self, case: CaseRecord) -> None:
         """Keep a case just solved, for this campaign and for others."""
         path = self.layout.solved_case(case.digest)
+        if self.keep_transitions and case.transitions is not None and case.status != FAILED:
+            # First, so that a case that is there has its matrices.
+            stored = StoredTransitions(
+                case.digest, self.task.shape.symmetry, case.levels, case.transitions
+            )
+            write_transitions(self.layout.solved_transitions(case.digest), stored)
         write_records(path, [case])
         note = self.layout.failed / f"{case.digest}.json"
         if case.status == FAILED:
@@ -212,6 +224,8 @@ class _Job:
             (kept,) = read_records(path)
             if kept.digest != digest:
                 raise IntegrityError(f"{path}: holds case {kept.digest}, not its own")
+            if self.keep_transitions and kept.status != FAILED:
+                read_transitions(self.layout.solved_transitions(digest))
         except (IntegrityError, ValueError) as error:
             print(f"{self.task.name}: {error}; the case is solved again", file=sys.stderr)
             return None
@@ -219,7 +233,8 @@ class _Job:
 
     def _reused(self, digest: str, x: float) -> CaseRecord | None:
         """Record from the case library, kept in this campaign as well, or None."""
-        if self.library is None:
+        if self.library is None or self.keep_transitions:
+            # The library has no transition matrices.
             return None
         found = self.library.find(self.spec, x, digest)
         if found is not None:

@@ -22,6 +22,7 @@ from scatterloom.bulk.coefficients import FEWEST_ANGLES
 from scatterloom.campaign.case import canonical_json
 from scatterloom.campaign.effort import NUMERICS_REVISION
 from scatterloom.campaign.outlook import job_bytes
+from scatterloom.campaign.singles import Single, singles_of
 from scatterloom.store.atomic import write_if_changed
 from scatterloom.store.layout import Layout, results_root
 from scatterloom.store.library import reuse_wanted
@@ -105,6 +106,16 @@ class Outline:
     def has_populations(self) -> bool:
         """Whether there is a bulk table to make."""
         return bool(self.campaign.model.populations)
+
+    @property
+    def has_orientations(self) -> bool:
+        """Whether there are tables of oriented particles to make."""
+        return bool(self.campaign.model.orientations)
+
+    @property
+    def singles(self) -> dict[str, Single]:
+        """Single solves by name."""
+        return {single.name: single for single in singles_of(self.campaign)}
 
     @property
     def has_exchange(self) -> bool:

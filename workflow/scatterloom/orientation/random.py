@@ -21,14 +21,14 @@ HANDS = (1, -1)
 
 
 @lru_cache(maxsize=8)
-def _turns(n_max: int, beta: bytes) -> list[NDArray[np.float64]]:
+def turn_functions(n_max: int, beta: bytes) -> list[NDArray[np.float64]]:
     """Rotation functions d^n_{m'm}(beta) of every degree (degree 0 is empty)."""
     angles = np.frombuffer(beta)
     return [np.empty(0), *(wigner_d(n, angles) for n in range(1, n_max + 1))]
 
 
 @lru_cache(maxsize=32)
-def _outgoing(n_max: int, cosine: bytes) -> NDArray[np.float64]:
+def outgoing_functions(n_max: int, cosine: bytes) -> NDArray[np.float64]:
     """Angular functions tau + o pi for helicity o = +1, -1: (order, helicity, angle, degree).
 
     A wave of one degree and order sends (tau + o pi) (electric + o magnetic) into circular
@@ -39,12 +39,12 @@ def _outgoing(n_max: int, cosine: bytes) -> NDArray[np.float64]:
     return np.ascontiguousarray(both.transpose(2, 0, 3, 1))
 
 
-def _sorted_rows(labels: WaveLabels) -> NDArray[np.int64]:
+def sorted_rows(labels: WaveLabels) -> NDArray[np.int64]:
     """Waves in order of degree, order, kind."""
     return np.lexsort((labels.kind, labels.order, labels.degree))
 
 
-def _incident(labels: WaveLabels, turns: list[NDArray]) -> NDArray[np.complex128]:
+def incident_waves(labels: WaveLabels, turns: list[NDArray]) -> NDArray[np.complex128]:
     """Coefficients for circular incidence at azimuth zero: (n_wave, hand, n_beta)."""
     n_beta = len(turns[1])
     axial = axial_plane_wave(labels.n_max)
@@ -63,14 +63,14 @@ def _scattered(
 ) -> NDArray[np.complex128]:
     """Scattered coefficients by turn q in the particle frame: (n_beta, n_wave, q, hand, matrix).
 
-    Waves are in the order of `_sorted_rows`. Element q is the part that varies with the azimuth
+    Waves are in the order of `sorted_rows`. Element q is the part that varies with the azimuth
     of incidence as exp(i q phi), put together from incident waves of order m - q.
     """
-    rows = _sorted_rows(labels)
+    rows = sorted_rows(labels)
     order = labels.order[rows]
     place = np.full(4 * labels.n_max + 1, -1)
     place[at.turn + 2 * labels.n_max] = np.arange(at.turn.size)
-    incident = _incident(labels, turns)
+    incident = incident_waves(labels, turns)
     n_matrix, n_beta = len(matrices), at.beta.size
     shape = (n_beta, rows.size, at.turn.size, 2, n_matrix)
     out = np.zeros(shape, dtype=np.complex128)
@@ -122,11 +122,11 @@ def _products(
     complex128 (n_angle, 4 n_matrix, 4 n_matrix), each index (helicity, hand, matrix).
     """
     n_max, n_matrix, n_angle = labels.n_max, len(matrices), cosine.size
-    turns = _turns(n_max, at.beta.tobytes())
+    turns = turn_functions(n_max, at.beta.tobytes())
     scattered = _scattered(matrices, labels, at, turns)
     scattered *= np.sqrt(np.outer(at.weight, at.turn_weight))[:, None, :, None, None]
     waves = _in_beam_frame(scattered, n_max, turns)
-    outgoing = _outgoing(n_max, cosine.tobytes())
+    outgoing = outgoing_functions(n_max, cosine.tobytes())
     flat = (outgoing @ waves.view(np.float64)).view(np.complex128)
     # The amplitude at azimuth phi of the scattering plane varies as exp(i mu phi),
     # mu = m - s for handedness s; the average over phi is a sum over mu (Parseval).
@@ -149,14 +149,22 @@ _FROM_HANDS = np.array([[1.0, 1.0], [1j, -1j]]) / np.sqrt(2.0)
 """Parallel and perpendicular incidence from the two circular ones: V_s = S_par - i s S_perp."""
 
 
-def _linear(products: NDArray[np.complex128]) -> NDArray[np.complex128]:
-    """Products (n_angle, 2, 2, 2, 2) of helicities and hands as those of linear components.
+TO_LINEAR = np.einsum("po,qh->pqoh", _FROM_HELICITY, _FROM_HANDS).reshape(4, 4)
+"""Amplitudes by (parallel or perpendicular scattered, incident) from those by (helicity, hand).
 
-    In the convention of Bohren & Huffman 1983, eq. 3.12, up to a common phase.
+In the convention of Bohren & Huffman 1983, eq. 3.12, up to a common phase.
+"""
+
+
+def linear_products(products: NDArray[np.complex128]) -> NDArray[np.complex128]:
+    """Products (..., 4, 4) of amplitudes by helicity and hand as those of linear components.
+
+    Returns
+    -------
+    complex128 (..., 2, 2, 2, 2)
     """
-    change = np.einsum("po,qh->pqoh", _FROM_HELICITY, _FROM_HANDS).reshape(4, 4)
-    flat = products.reshape(-1, 4, 4)
-    return (change @ flat @ change.conj().T).reshape(products.shape)
+    changed = TO_LINEAR @ products @ TO_LINEAR.conj().T
+    return changed.reshape(*products.shape[:-2], 2, 2, 2, 2)
 
 
 def mueller_from_products(product: NDArray[np.complex128]) -> NDArray[np.float64]:
@@ -257,8 +265,7 @@ def averages(
     total = sum(_products(matrices, labels, part, cosine) for part in parts)
     pairs = np.asarray(total).reshape(cosine.size, 4, n_matrix, 4, n_matrix)
     combined = np.einsum("vb,txbyc,vc->vtxy", weights, pairs, weights, optimize=True)
-    shape = (cosine.size, 2, 2, 2, 2)
-    out = np.stack([mueller_from_products(_linear(g.reshape(shape))) for g in combined])
+    out = np.stack([mueller_from_products(linear_products(products)) for products in combined])
     if at.mirrored:
         out[..., :2, 2:] = 0.0
         out[..., 2:, :2] = 0.0

@@ -11,9 +11,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterloom.scattering import error_bars, record
-from scatterloom.scattering.error_bars import SOLVER, TRUNCATION
-from scatterloom.scattering.extrapolate import combine, fits
+from scatterloom.scattering.error_bars import TRUNCATION
+from scatterloom.scattering.extrapolate import fits
 from scatterloom.scattering.observables import Observables, observe_combinations
+from scatterloom.scattering.variants import Variants, variants_of
 from scatterloom.transition.level import LevelResult
 
 
@@ -44,31 +45,13 @@ class _Variant:
     absorption: float
 
 
-def _variants(
-    levels: Sequence[LevelResult], cells: Sequence[int], symmetry: str, size_parameter: float
+def _observed(
+    variants: Variants, levels: Sequence[LevelResult], symmetry: str, size_parameter: float
 ) -> list[_Variant]:
-    rivals = fits(cells)
-    best = rivals[0].weights
-    # Amplitudes of the levels, and of two more matrices, serve all variants.
-    sources = [level.transition for level in levels]
-    names = [(fit.name, fit.cause) for fit in rivals]
-    weights = [fit.weights for fit in rivals]
-    sources.append(combine([level.uncorrected for level in levels], rivals[0]))
-    names.append(("without the last correction", SOLVER))
-    if sources[0].n_max > 1:
-        sources.append(combine(sources[: len(levels)], rivals[0]).cut(sources[0].n_max - 1))
-        names.append(("one degree less", TRUNCATION))
-    factors = np.zeros((len(names), len(sources)))
-    factors[: len(rivals), : len(levels)] = weights
-    for extra in range(len(sources) - len(levels)):
-        factors[len(rivals) + extra, len(levels) + extra] = 1.0
-    results = observe_combinations(sources, factors, symmetry, size_parameter)
-    absorption = np.array([level.absorption_efficiency for level in levels])
-    absorbed = [*(w @ absorption for w in weights), *[best @ absorption] * 2]
-    return [
-        _Variant(name, cause, result, float(power))
-        for (name, cause), result, power in zip(names, results, absorbed, strict=False)
-    ]
+    results = observe_combinations(variants.sources, variants.weights, symmetry, size_parameter)
+    absorbed = variants.level_weights @ [level.absorption_efficiency for level in levels]
+    rows = zip(variants.names, variants.causes, results, absorbed, strict=True)
+    return [_Variant(name, cause, result, float(power)) for name, cause, result, power in rows]
 
 
 def _scalar_values(variant: _Variant) -> dict[str, float]:
@@ -182,7 +165,8 @@ def combine_levels(
         digest, shape, start, products, cold_products_estimate, wall_seconds.
     """
     index, *inner = indices if isinstance(indices, Sequence) else [indices]
-    variants = _variants(levels, cells, symmetry, size_parameter)
+    made = variants_of(levels, cells)
+    variants = _observed(made, levels, symmetry, size_parameter)
     best = variants[0]
     fit = fits(cells)[0]
     amplification = float(np.abs(fit.weights).sum())
@@ -230,6 +214,7 @@ def combine_levels(
         variants=tuple(v.name for v in variants),
         causes=causes,
         model_error=model,
+        transitions=made,
         **identity,
     )
     flags = _flags(out, asked, levels, spacing * size_parameter)
