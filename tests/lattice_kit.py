@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 from oracles import dense
 from scatterloom.dipole.polarizability import cell_tensors
 from scatterloom.dipole.product import LatticeMatrix
+from scatterloom.particle.bodies import Surface
 from scatterloom.particle.lattice import Lattice, lattice
 from scatterloom.particle.shapes import from_spec
 
@@ -140,3 +141,11 @@ def random_waves(matrix: LatticeMatrix, count: int, seed: int = 2) -> NDArray:
     rng = np.random.default_rng(seed)
     shape = (matrix.n_class, count, 3, matrix.n_cell)
     return (rng.normal(size=shape) + 1j * rng.normal(size=shape)).astype(matrix.dtype)
+
+
+def surfaces_of(interfaces, area_vector):
+    """Surfaces from a table with the area vectors of every piece in every cell."""
+    return tuple(
+        Surface(inside, outside, np.zeros(len(table), np.int32), np.arange(len(table)), table)
+        for (inside, outside), table in zip(interfaces, area_vector, strict=True)
+    )

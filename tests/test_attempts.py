@@ -61,6 +61,19 @@ def test_what_cannot_be_met_is_flagged_not_hidden():
     assert case.status == record.SOLVED_WITH_WARNING and case.warning_flags & NOT_MET
 
 
+@pytest.mark.parametrize(("core", "thin"), [(0.5, False), (0.7, True)])
+def test_films_thinner_than_two_cells_are_flagged(core, thin):
+    # 5 cells from the centre to the surface: the film has 2.5 cells, or 1.5
+    coated = replace(
+        task(0),
+        shape=from_spec({**SPHERE, "core_radius_fraction": core}),
+        inner_indices=(1.4 + 0j,),
+    )
+    case, _ = solve(coated)
+    assert bool(case.warning_flags & record.FLAGS["thin_part"][0]) == thin
+    assert case.status == record.SOLVED_WITH_WARNING
+
+
 def test_a_longer_basis_on_finer_lattices_is_for_all_lattices(monkeypatch):
     # The accuracy is missed first, then the truncation of the finer lattices doubted: the
     # fields handed on must have the longer basis as well.

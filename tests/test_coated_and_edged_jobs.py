@@ -86,3 +86,5 @@ def test_the_strongest_interface_sets_the_cell_model_error():
     assert cell_model_error((1.33, 1.33), 20) == cell_model_error(1.33, 20)
     assert cell_model_error((1.2, 2.4), 20) == pytest.approx(alone(4.0))
     assert cell_model_error((1.8, 1.7), 20) == pytest.approx(alone(1.8**2))
+    # side by side both face the medium; without touching they do not face each other
+    assert cell_model_error((1.2, 2.4), 20, [(0, -1), (1, -1)]) == pytest.approx(alone(2.4**2))

@@ -92,7 +92,7 @@ def predicted_seconds(
     default = effort.levels(reach.lengths, index, x)
     asked = first_levels(spec, indices, x, f11_relative)
     more = sum(n**3 for n in asked) / sum(n**3 for n in default)
-    return more * effort.cost(reach.half, index, x, cold=True)
+    return more * effort.cost(reach.half, index, x, True, reach.mirror_planes)
 
 
 def cold_record(

@@ -28,13 +28,12 @@ def _inside(shape: Shape, scale: float, points: NDArray[np.float64]) -> NDArray[
 
 def _mixed(grid: Lattice, fraction: NDArray[np.float64]) -> Lattice:
     """Cells without interfaces: the arithmetic mean of their materials."""
-    none = np.zeros((0, len(grid.cell), 3))
     return replace(
         grid,
         fill=fraction.sum(axis=0),
         normal=np.zeros_like(grid.normal),
         area=np.zeros_like(grid.area),
-        composition=Composition(fraction=fraction, interfaces=(), area_vector=none),
+        composition=Composition(fraction=fraction, surfaces=()),
     )
 
 
@@ -67,7 +66,9 @@ def tensor(shape: Shape, grid: Lattice) -> Lattice:
     """Tensor cells between which no material moves; `without_shift` must be in force."""
     if grid.composition is None:
         return grid
-    return replace(grid, composition=replace(grid.composition, moment=None))
+    return replace(
+        grid, composition=replace(grid.composition, regions=(), moment=grid.composition.moment[:0])
+    )
 
 
 @contextmanager

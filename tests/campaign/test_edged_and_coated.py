@@ -9,7 +9,7 @@ import pytest
 from campaign.bad_configs import GOOD, edited
 from scatterloom.campaign import load, memory
 from scatterloom.campaign.expand import expand
-from scatterloom.campaign.geometry import canonical, extents, mirror_planes
+from scatterloom.campaign.geometry import canonical, extents
 from scatterloom.campaign.outlook import outlook
 from scatterloom.campaign.plan import plan
 from scatterloom.particle.lattice import lattice
@@ -56,7 +56,7 @@ def test_extents_are_those_of_the_particle(spec):
     assert max(reach.radii) == reach.circumscribed_radius
     nested = [scale * half for scale in shape.scales for half in shape.half_extents]
     assert reach.lengths == pytest.approx(nested, rel=1e-13)
-    assert mirror_planes(spec) == sum(lattice(shape, 4).mirrors)
+    assert reach.mirror_planes == sum(lattice(shape, 4).mirrors)
 
 
 def test_canonical_bodies():

@@ -30,7 +30,7 @@ def fixed_effort(monkeypatch):
     monkeypatch.setattr(effort, "levels", levels)
     monkeypatch.setattr(effort, "anchor_step", lambda index, x: 0.3)
     monkeypatch.setattr(effort, "operator_tolerance", lambda ratio_absolute: 1e-4)
-    monkeypatch.setattr(effort, "cost", lambda axes, index, x, cold: 4.0 if cold else 1.0)
+    monkeypatch.setattr(effort, "cost", lambda axes, index, x, cold, planes: 4.0 if cold else 1.0)
 
 
 @pytest.fixture

@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 from scipy.spatial.transform import Rotation
 
+from lattice_kit import surfaces_of
 from oracles import dense
 from scatterloom.dipole import mixture
 from scatterloom.dipole.exchange import exchanges
@@ -28,7 +29,8 @@ def as_matrices(six):
 
 def with_composition(grid):
     """The same particle of one material, described the general way."""
-    return replace(grid, composition=Composition(grid.fraction, grid.interfaces, grid.area_vector))
+    surfaces = surfaces_of(grid.interfaces, grid.area_vector)
+    return replace(grid, composition=Composition(grid.fraction, surfaces))
 
 
 def one_cell(fraction, interfaces, vectors):
@@ -36,8 +38,7 @@ def one_cell(fraction, interfaces, vectors):
     grid = lattice(from_spec(OBLATE), 2)
     composition = Composition(
         np.array(fraction, dtype=float)[:, None],
-        tuple(interfaces),
-        np.array(vectors, dtype=float)[:, None, :],
+        surfaces_of(interfaces, np.array(vectors, dtype=float)[:, None, :]),
     )
     total = composition.fraction.sum(axis=0)
     return replace(grid, box=(1, 1, 1), cell=np.zeros((1, 3), int), fill=total,

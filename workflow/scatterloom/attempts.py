@@ -14,6 +14,7 @@ from scatterloom.campaign.memory import case_bytes
 from scatterloom.limits import Limits, OutOfTime, forget_peak, peak_bytes
 from scatterloom.particle.lattice import lattice
 from scatterloom.particle.shapes import Shape
+from scatterloom.particle.thickness import has_thin_part
 from scatterloom.scattering import record
 from scatterloom.scattering.case import Asked, combine_levels
 from scatterloom.scattering.record import CaseRecord, failed_record
@@ -254,14 +255,17 @@ class _Case:
         own = [solves.get(n, n_max) for n in task.cells]
         infilled = bool(anchors) and not any(lv.solution.start_dropped for lv in own)
         cold = float(np.mean([lv.solution.products for lv in own]))
+        finest = lattice(task.shape, cells[-1])
         solved = combine_levels(
             levels,
             cells,
             task.shape.symmetry,
             task.indices,
             x,
-            lattice(task.shape, cells[-1]).spacing,
+            finest.spacing,
             task.asked,
+            contacts=finest.contacts,
+            thin=has_thin_part(task.shape, finest),
             digest=self._digest,
             shape=task.shape_json,
             start="infill" if infilled else "cold",

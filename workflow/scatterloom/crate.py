@@ -20,7 +20,9 @@ from typing import Any
 
 import scatterloom
 from scatterloom.campaign import Campaign
+from scatterloom.campaign.loader import KEPT_SOLIDS
 from scatterloom.errors import EnvironmentProblem, IntegrityError
+from scatterloom.solids import kept
 from scatterloom.store.atomic import atomic_write
 from scatterloom.store.commit import verify_folder
 from scatterloom.store.layout import Layout, checkout
@@ -54,6 +56,7 @@ _TYPES = {
     ".csv": "text/csv",
     ".lock": "text/plain",
     ".smk": "text/plain",
+    ".npz": "application/zip",
 }
 
 
@@ -85,6 +88,9 @@ def pack(campaign: Campaign, layout: Layout, target: Path, *, with_table: bool =
     texts = {
         MERGED: campaign.merged_yaml().encode(),
         "code.json": json.dumps(_code(top), indent=1, sort_keys=True).encode(),
+    } | {
+        f"{KEPT_SOLIDS}/{kept.file_name(digest)}": kept.packed(kept.recall(digest))
+        for digest in campaign.contents
     }
     listed: dict[str, dict[str, Any]] = {}
     with (

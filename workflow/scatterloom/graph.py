@@ -21,6 +21,7 @@ from scatterloom.campaign.expand import Grid, expand
 from scatterloom.campaign.plan import Job, plan
 from scatterloom.errors import IntegrityError
 from scatterloom.outline import exchange_possible, outline_of, table_digest
+from scatterloom.solids import kept
 from scatterloom.store.atomic import sweep_abandoned, write_if_changed
 from scatterloom.store.commit import commit_record, verify_folder
 from scatterloom.store.layout import Layout, results_root
@@ -114,6 +115,9 @@ class Graph:
         to the table beside it is removed as well, so that the table is gathered again.
         """
         layout = self.layout
+        for digest in self.campaign.contents:
+            kept_file = layout.solids / kept.file_name(digest)
+            write_if_changed(kept_file, kept.packed(kept.recall(digest)))
         write_if_changed(layout.config, self.campaign.merged_yaml().encode())
         for name, spec in self.specs.items():
             text = json.dumps(spec, sort_keys=True).encode()
@@ -151,7 +155,14 @@ class Graph:
     def sweep(self) -> None:
         """Remove what killed writers left behind."""
         layout = self.layout
-        folders = [layout.folder, layout.jobs, layout.cases, layout.fields, layout.progress]
+        folders = [
+            layout.folder,
+            layout.solids,
+            layout.jobs,
+            layout.cases,
+            layout.fields,
+            layout.progress,
+        ]
         folders += sorted(p for p in layout.state.glob("*/*") if p.is_dir())
         for folder in (*folders, layout.table, layout.figures):
             sweep_abandoned(folder)

@@ -26,6 +26,7 @@ from scatterloom.limits import Limits, peak_bytes
 from scatterloom.particle.shapes import from_spec
 from scatterloom.scattering.case import Asked
 from scatterloom.scattering.record import FAILED, CaseRecord
+from scatterloom.solids.kept import look_in
 from scatterloom.store.casefile import read_records, write_records
 from scatterloom.store.failures import write_failure
 from scatterloom.store.fields import FieldFile, read_fields, write_fields
@@ -115,6 +116,7 @@ def solve(
     OSError
         From the file system.
     """
+    look_in(Layout(folder).solids)
     with threadpool_limits(threads):
         _Job(spec, folder, threads, limits or Limits(), library).run()
 

@@ -205,8 +205,10 @@ def _check(content: Mapping[str, object]) -> str:
 @cache
 def _planning_code() -> str:
     whole = hashlib.sha256(Path(__file__).read_bytes())
-    for path in sorted(Path(campaigns.__file__).parent.glob("*.py")):
-        whole.update(path.read_bytes())
+    package = Path(__file__).parent
+    for room in ("solids", "campaign"):
+        for path in sorted((package / room).glob("*.py")):
+            whole.update(path.read_bytes())
     return whole.hexdigest()
 
 

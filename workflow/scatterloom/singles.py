@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterloom.campaign.geometry import extents, mirror_planes
+from scatterloom.campaign.geometry import extents
 from scatterloom.campaign.memory import single_bytes
 from scatterloom.campaign.singles import Single
 from scatterloom.errors import EnvironmentProblem
@@ -40,8 +40,8 @@ POLARIZATIONS = ("theta", "phi")
 
 def needed_bytes(single: Single) -> int:
     """Return the predicted peak memory of a single solve [bytes]."""
-    half = extents(single.shape).half
-    return single_bytes(half, mirror_planes(single.shape), max(single.cells))
+    reach = extents(single.shape)
+    return single_bytes(reach.half, reach.mirror_planes, max(single.cells))
 
 
 @dataclass(frozen=True)

@@ -352,7 +352,10 @@ def _shapes(attributes: Mapping[str, Any], particles: Sequence[str]) -> dict[str
         if entry["name"] in shapes:
             coating = dict(entry.get("coating") or {})
             coating.pop("material", None)  # its index is in the table
-            shapes[entry["name"]] = json.dumps([entry["shape"], coating], sort_keys=True)
+            # Of more than two materials the table lacks some indices: their names stand for them.
+            others = [entry.get("layers") or [], entry.get("inclusions") or []]
+            parts = [entry["shape"], coating, *(others if any(others) else ())]
+            shapes[entry["name"]] = json.dumps(parts, sort_keys=True)
     return shapes
 
 

@@ -8,8 +8,10 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 
+from scatterloom.campaign.bodies import advice, body
 from scatterloom.campaign.complaints import nearest
 from scatterloom.campaign.document import Document, KeyPath
+from scatterloom.campaign.geometry import extents
 from scatterloom.campaign.grids import decimal, grid_values
 from scatterloom.campaign.model import CampaignModel, Sizes
 from scatterloom.campaign.populations import Population
@@ -126,6 +128,25 @@ def check_extent(
     return [document.problem(("sizes", key), message, found, hint)]
 
 
+def check_bodies(document: Document, model: CampaignModel) -> list[Problem]:
+    """Check that particles whose shape comes from a file can be made, with all they hold."""
+    problems = []
+    for position, particle in enumerate(model.particles):
+        if getattr(particle.shape, "content", None) is None:
+            continue
+        parts = [name for name in ("coating", "layers", "inclusions") if getattr(particle, name)]
+        path: KeyPath = ("particles", position, parts[0] if parts else "shape")
+        spec, _ = body(particle)
+        try:
+            extents(spec)
+        except ValueError as error:
+            reason, _, hint = str(error).partition("; ")
+            message = f"the body of '{particle.name}' cannot be made: {reason}"
+            found = document.show(path)
+            problems.append(document.problem(path, message, found, hint or advice(spec)))
+    return problems
+
+
 def check_coverage(
     document: Document,
     populations: Sequence[Population],
@@ -206,13 +227,24 @@ def _texts(document: Document, section: str, key: str) -> list[tuple[KeyPath, st
 
 
 def _materials(document: Document) -> list[tuple[KeyPath, str]]:
-    """Return every place that names a material: particles, coatings, the medium, mixtures."""
+    """Return every place that names a material: particles and their parts, medium, mixtures."""
     found = _texts(document, "particles", "material")
     for position, entry in enumerate(_entries(document, "particles")):
         coating = entry.get("coating")
         name = coating.get("material") if isinstance(coating, dict) else None
         if isinstance(name, str):
             found.append((("particles", position, "coating", "material"), name))
+        shape = entry.get("shape")
+        more = shape.get("more_materials") if isinstance(shape, dict) else None
+        for place, name in enumerate(more if isinstance(more, list) else ()):
+            if isinstance(name, str):
+                found.append((("particles", position, "shape", "more_materials", place), name))
+        for key in ("layers", "inclusions"):
+            parts = entry.get(key)
+            for number, part in enumerate(parts if isinstance(parts, list) else ()):
+                name = part.get("material") if isinstance(part, dict) else None
+                if isinstance(name, str):
+                    found.append((("particles", position, key, number, "material"), name))
     medium = document.tree.get("medium")
     if isinstance(medium, dict) and isinstance(medium.get("material"), str):
         found.append((("medium", "material"), medium["material"]))

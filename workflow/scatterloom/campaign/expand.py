@@ -4,16 +4,14 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from decimal import Decimal, localcontext
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from scatterloom.campaign.bodies import body
 from scatterloom.campaign.case import Accuracy, Case, Overrides, canonical_json
-from scatterloom.campaign.geometry import canonical
 from scatterloom.campaign.grids import DIGITS, decimal, grid_values
 from scatterloom.campaign.loader import Campaign
-from scatterloom.campaign.model import Particle
 
 TWO_PI = 2 * Decimal("3.14159265358979323846264338327950288419716939937510")
 
@@ -40,7 +38,8 @@ class Grid:
     refractive_index_n, refractive_index_k : float64 (n_particle, n_wavelength)
         Refractive index relative to the medium; of a coated particle that of the coating.
     core_refractive_index : complex128 (n_particle, n_wavelength)
-        That of the core of a coated particle; NaN in both parts where there is no coating.
+        That of the core of a coated particle, or the one that absorbs most of several materials
+        within or beside the first; NaN in both parts where there is one material.
     job_seconds : float
         Predicted time at which cases are batched to jobs.
     anchor_spacing : float or None
@@ -89,10 +88,11 @@ def expand(campaign: Campaign) -> Grid:
                 relative_index(campaign.indices[name][w], campaign.medium_index[w])
                 for name in materials
             )
-            shape, indices = body_of(particle, indices)
+            shape, kept = body(particle, indices)
+            indices = tuple(indices[place] for place in kept)
             outer[p, w] = indices[0]
             if len(indices) > 1:
-                core[p, w] = indices[1]
+                core[p, w] = max(indices[1:], key=lambda index: index.imag)
             shape_key = canonical_json(shape)
             for s, x in enumerate(values[w]):
                 position = known.setdefault((shape_key, indices, x), len(cases))
@@ -114,17 +114,6 @@ def expand(campaign: Campaign) -> Grid:
         anchor_spacing=model.solver.anchor_spacing,
         keep_transitions=model.solver.keep_transitions or bool(model.orientations),
     )
-
-
-def body_of(
-    particle: Particle, indices: tuple[complex, ...]
-) -> tuple[dict[str, Any], tuple[complex, ...]]:
-    """Return shape and indices; a coating of the same index as the core is no coating."""
-    spec = particle.shape.model_dump()
-    if particle.coating is None or indices[0] == indices[1]:
-        return canonical(spec), indices[:1]
-    spec["core_radius_fraction"] = particle.coating.core_scale
-    return canonical(spec), indices
 
 
 def _sizes(campaign: Campaign) -> tuple[NDArray[np.float64], NDArray[np.float64]]:

@@ -2,10 +2,17 @@
 
 from __future__ import annotations
 
+import json
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import Any
+
+import numpy as np
+
+from scatterloom.solids import placing
+from scatterloom.solids.registry import GENERATORS
 
 
 @dataclass(frozen=True)
@@ -20,11 +27,14 @@ class Extents:
         Radius of the smallest sphere about the centre that holds the particle.
     core_radius_fraction : float or None
         Size of the core relative to the particle, as a ratio of lengths.
+    mirror_planes : int
+        How many of the planes x = 0, y = 0, z = 0 are mirror planes.
     """
 
     half: tuple[float, float, float]
     circumscribed_radius: float
     core_radius_fraction: float | None = None
+    mirror_planes: int = 3
 
     @property
     def lengths(self) -> tuple[float, ...]:
@@ -51,9 +61,11 @@ def extents(spec: Mapping[str, Any]) -> Extents:
     Raises
     ------
     ValueError
-        If the kind is unknown.
+        If the kind is unknown or the body cannot be made.
     """
     core = spec.get("core_radius_fraction")
+    if spec["kind"] in GENERATORS:
+        return _of_solid(json.dumps(dict(spec), sort_keys=True))
     match spec["kind"]:
         case "sphere":
             return Extents((1.0, 1.0, 1.0), 1.0, core)
@@ -80,13 +92,22 @@ def extents(spec: Mapping[str, Any]) -> Extents:
             radius = (4.0 * math.pi / 3.0 / (base * ratio)) ** (1.0 / 3.0)
             lateral = max(math.sin(2.0 * math.pi * i / sides) for i in range(sides))
             half = (radius, radius * lateral, radius * ratio)
-            return Extents(half, math.hypot(radius, radius * ratio), core)
+            planes = 2 if sides % 2 else 3
+            return Extents(half, math.hypot(radius, radius * ratio), core, planes)
     raise ValueError(f"unknown shape kind {spec['kind']!r}")
 
 
-def mirror_planes(spec: Mapping[str, Any]) -> int:
-    """Return how many of the planes x = 0, y = 0, z = 0 are mirror planes of a shape."""
-    return 2 if spec["kind"] == "prism" and spec["sides"] % 2 else 3
+@lru_cache(maxsize=256)
+def _of_solid(text: str) -> Extents:
+    spec = json.loads(text)
+    solid = placing.placed(spec)
+    a, b, c = (float(length) for length in placing.half_extents(solid))
+    return Extents(
+        (a, b, c),
+        placing.circumscribed_radius(solid),
+        spec.get("core_radius_fraction"),
+        sum(placing.is_mirrored(solid, axis) for axis in np.eye(3)),
+    )
 
 
 def canonical(spec: Mapping[str, Any]) -> dict[str, Any]:
@@ -101,7 +122,14 @@ def canonical(spec: Mapping[str, Any]) -> dict[str, Any]:
     return plain
 
 
+_NO_GEOMETRY = {"core_radius_fraction", "file", "variable", "more_materials"}
+
+
 def _plain(spec: Mapping[str, Any]) -> dict[str, Any]:
+    if spec["kind"] in GENERATORS:
+        # What a file holds counts, not where it lies; materials are known by their indices.
+        own = {key: value for key, value in spec.items() if key not in _NO_GEOMETRY}
+        return _simplest({key: _digits(part) for key, part in own.items() if part is not None})
     match spec["kind"]:
         case "spheroid":
             ratio = _rounded(spec["equatorial_to_polar"])
@@ -116,11 +144,57 @@ def _plain(spec: Mapping[str, Any]) -> dict[str, Any]:
             return {"kind": "ellipsoid", "axes": axes}
         case "cuboid":
             last = spec["edges"][2]
-            return {"kind": "cuboid", "edges": [_rounded(edge / last) for edge in spec["edges"]]}
+            edges = {"edges": [_rounded(edge / last) for edge in spec["edges"]]}
+            return _edged("cuboid", "rounded_cuboid", edges, spec)
         case "prism":
-            ratio = _rounded(spec["height_to_width"])
-            return {"kind": "prism", "sides": spec["sides"], "height_to_width": ratio}
+            own = {"sides": spec["sides"], "height_to_width": _rounded(spec["height_to_width"])}
+            return _edged("prism", "shaped_prism", own, spec)
+        case "cone":
+            return _plain({**spec, "kind": "frustum", "upper_to_lower": 0.0})
+    if spec["kind"] in FACES:
+        own = {"faces": FACES[spec["kind"]]}
+        return _edged("polyhedron", "polyhedron", own, spec)
     return {"kind": spec["kind"]}
+
+
+FACES = {"tetrahedron": 4, "octahedron": 8, "dodecahedron": 12, "icosahedron": 20}
+
+
+def _simplest(spec: dict[str, Any]) -> dict[str, Any]:
+    """Bodies of triangles that are other ones at the ends of their range; else the same."""
+    match spec["kind"]:
+        case "frustum" if spec["upper_to_lower"] == 1.0:
+            return {"kind": "cylinder", "length_to_diameter": spec["height_to_diameter"]}
+        case "capsule" if spec["length_to_diameter"] == 1.0:
+            return {"kind": "sphere"}
+        case "superellipsoid":
+            axes = [_rounded(axis / spec["axes"][2]) for axis in spec["axes"]]
+            if spec["exponents"] == [1.0, 1.0]:
+                return _plain({"kind": "ellipsoid", "axes": axes})
+            return {**spec, "axes": axes}
+        case "gaussian_sphere" if "correlation_angle_deg" in spec:
+            return {key: value for key, value in spec.items() if key != "highest_degree"}
+    return spec
+
+
+def _edged(
+    sharp: str, other: str, own: Mapping[str, Any], spec: Mapping[str, Any]
+) -> dict[str, Any]:
+    """A polyhedron, of one kind as it is and of another one with rounded edges or changed ends."""
+    keys = ("edge_radius_fraction", "end_tilts_deg", "indentation")
+    changed = {key: _digits(spec[key]) for key in keys if spec.get(key) is not None}
+    if changed.get("end_tilts_deg") == [0.0, 0.0]:
+        del changed["end_tilts_deg"]
+    return {"kind": other if changed else sharp, **own, **changed}
+
+
+def _digits(value: Any) -> Any:
+    """A value of a specification with every float in it to twelve significant digits."""
+    if isinstance(value, float):
+        return _rounded(value)
+    if isinstance(value, Mapping):
+        return {key: _digits(part) for key, part in value.items() if part is not None}
+    return [_digits(part) for part in value] if isinstance(value, list | tuple) else value
 
 
 def _rounded(value: float) -> float:

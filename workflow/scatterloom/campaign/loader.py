@@ -16,11 +16,16 @@ from ruamel.yaml import YAML
 from scatterloom.campaign import crosscheck, database, optics
 from scatterloom.campaign.complaints import complaints
 from scatterloom.campaign.document import Document, read
+from scatterloom.campaign.file_shapes import read_shape_files
 from scatterloom.campaign.grids import grid_values
-from scatterloom.campaign.model import CampaignModel
+from scatterloom.campaign.model import CampaignModel, with_contents
 from scatterloom.campaign.size_tables import read_size_tables, with_points
 from scatterloom.campaign.spectra import Spectrum
 from scatterloom.errors import BadInput, Problem
+from scatterloom.solids import kept
+
+KEPT_SOLIDS = "solids"
+"""Folder beside a kept campaign with the files of its shapes."""
 
 
 @dataclass(frozen=True)
@@ -54,6 +59,12 @@ class Campaign:
         return self.model.campaign
 
     @property
+    def contents(self) -> tuple[str, ...]:
+        """Digests of the files that shapes were read from, in order of first appearance."""
+        found = (getattr(particle.shape, "content", None) for particle in self.model.particles)
+        return tuple(dict.fromkeys(digest for digest in found if digest is not None))
+
+    @property
     def angles_deg(self) -> NDArray[np.float64]:
         """Scattering angles [deg], ascending, shape (n_angle,)."""
         return np.array([float(angle) for angle in grid_values(self.model.angles_deg)])
@@ -62,7 +73,8 @@ class Campaign:
         """Return the campaign as a YAML file that stands alone.
 
         Defaults are written out and tables of optical constants are copied into it, so it
-        can be run anywhere and gives the same cases.
+        can be run anywhere and gives the same cases. Files of shapes are named as they are
+        kept in a folder beside it.
         """
         content: dict[str, Any] = self.model.model_dump(by_alias=True, exclude_none=True)
         lines = [f"# Campaign {self.name} with all defaults, as it was run."]
@@ -80,6 +92,13 @@ class Campaign:
                     spectrum.wavelength_um, spectrum.n, spectrum.k, strict=True
                 )
             ]
+        for particle in content["particles"]:
+            digest = particle["shape"].get("content")
+            if digest is not None:
+                origin, own = Path(particle["shape"]["file"]).name, kept.file_name(digest)
+                if origin != own:
+                    lines.append(f"# The shape of '{particle['name']}' was read from {origin!r}.")
+                particle["shape"]["file"] = f"{KEPT_SOLIDS}/{own}"
         yaml = YAML(typ="safe", pure=True)
         yaml.default_flow_style = None
         yaml.sort_base_mapping_type_on_output = False  # type: ignore[assignment]
@@ -113,6 +132,8 @@ def load(path: str | Path) -> Campaign:
     problems += faults
     size_tables, faults = read_size_tables(document, Path(path).parent)
     problems += faults
+    contents, faults, doubts = read_shape_files(document, Path(path).parent)
+    problems += faults
     constants = _constants(document, sections, spectra)
     problems += constants.problems
     if {"particles", "wavelengths_um", "sizes"} <= sections.keys():
@@ -123,6 +144,8 @@ def load(path: str | Path) -> Campaign:
             sections["sizes"],
         )
     if model is not None and not problems:
+        model = with_contents(model, contents)
+        problems += crosscheck.check_bodies(document, model)
         problems += crosscheck.check_densities(document, model)
         problems += crosscheck.check_single_wavelengths(document, model)
     if problems or model is None:
@@ -130,6 +153,7 @@ def load(path: str | Path) -> Campaign:
     model = with_points(model, size_tables)
     assert constants.medium is not None  # else there were problems
     warnings = [
+        *doubts,
         *constants.warnings,
         *optics.mixing_warnings(document, model.materials),
         *crosscheck.unused_materials(document),

@@ -6,10 +6,15 @@ the reference page are made from them.
 
 from __future__ import annotations
 
+import math
+from collections.abc import Mapping
 from typing import Annotated, Literal
 
 from pydantic import field_validator, model_validator
 
+from scatterloom.campaign.bodies import advice, body, shares
+from scatterloom.campaign.fillings import Coating, Inclusions, Layer, check_layers
+from scatterloom.campaign.geometry import extents
 from scatterloom.campaign.grids import AngleGrid, SizeGrid, ascending
 from scatterloom.campaign.materials import DENSITY_ADVICE, Material, Medium, density
 from scatterloom.campaign.orientations import Orientation
@@ -19,54 +24,6 @@ from scatterloom.campaign.shapes import Shape
 from scatterloom.campaign.singles import SingleSolve
 
 Wavelength = Annotated[float, setting("One wavelength.", unit="um", ge=1e-3, le=1e6)]
-THINNEST = 0.02
-"""Smallest radius of a core, and smallest thickness of a coating, over the particle's radius."""
-
-
-class Coating(Section):
-    """A shell of another material around a core of the particle's own shape."""
-
-    material: str = setting(
-        "Material of the coating, one of the keys under `materials`.",
-        form="the name of a material under 'materials'",
-    )
-    core_radius_fraction: float | None = setting(
-        "Radius of the core divided by that of the whole particle (for other shapes than "
-        "spheres the ratio of their axes or edges, the same along all of them).",
-        None,
-        unit="1",
-        ge=THINNEST,
-        le=1 - THINNEST,
-    )
-    core_volume_fraction: float | None = setting(
-        "Volume of the core divided by that of the whole particle, instead of "
-        "`core_radius_fraction`.",
-        None,
-        unit="1",
-        ge=1e-5,
-        le=0.97,
-    )
-
-    @model_validator(mode="after")
-    def _check(self) -> Coating:
-        both = self.core_radius_fraction is not None and self.core_volume_fraction is not None
-        if both or (self.core_radius_fraction is None and self.core_volume_fraction is None):
-            raise wrong(
-                "both core_radius_fraction and core_volume_fraction are given"
-                if both
-                else "neither core_radius_fraction nor core_volume_fraction is given",
-                "give exactly one of 'core_radius_fraction' and 'core_volume_fraction'",
-                *(["core_volume_fraction"] if both else []),
-            )
-        return self
-
-    @property
-    def core_scale(self) -> float:
-        """Radius of the core over that of the particle."""
-        if self.core_radius_fraction is not None:
-            return self.core_radius_fraction
-        assert self.core_volume_fraction is not None
-        return self.core_volume_fraction ** (1.0 / 3.0)
 
 
 class Particle(Section):
@@ -80,6 +37,15 @@ class Particle(Section):
     shape: Shape = setting("Shape of the particle; a core has the same shape.")
     coating: Coating | None = setting(
         "Coating around the core; sizes are those of the whole particle, coating included.", None
+    )
+    layers: list[Layer] = setting(
+        "Layers around the core, from outside inwards, instead of one coating.", [], max_length=10
+    )
+    inclusions: list[Inclusions] = setting(
+        "Spheres of other materials or pores within the particle. Its size is the volume of what "
+        "is left without pores.",
+        [],
+        max_length=10,
     )
 
     density_g_cm3: float | None = setting(
@@ -99,14 +65,40 @@ class Particle(Section):
                 "give the coating another material, or leave it out",
                 *("coating", "material"),
             )
+        check_layers(self.layers)
+        given = [name for name in ("coating", "layers", "inclusions") if getattr(self, name)]
+        if len(given) > 1:
+            raise wrong(
+                f"both {given[0]} and {given[1]} are given",
+                "give one of 'coating', 'layers' and 'inclusions'; a particle cannot have several",
+                given[1],
+            )
+        if not hasattr(self.shape, "content"):  # files are read later
+            self._check_body()
         return self
+
+    def _check_body(self) -> None:
+        spec, _ = body(self)
+        try:
+            extents(spec)
+        except ValueError as error:
+            culprit = {"filled": "inclusions", "layered": "layers" if self.layers else "coating"}
+            raise wrong(str(error), advice(spec), culprit.get(spec["kind"], "shape")) from error
 
     @property
     def materials(self) -> tuple[str, ...]:
-        """Names of the materials from outside inwards."""
-        if self.coating is None:
-            return (self.material,)
-        return self.coating.material, self.material
+        """Names of the materials from outside inwards; others as they are listed."""
+        if self.coating is not None:
+            return self.coating.material, self.material
+        layers = tuple(layer.material for layer in self.layers)
+        held = [group.material for group in self.inclusions if group.material is not None]
+        others = tuple(name for name in dict.fromkeys(held) if name != self.material)
+        return (*layers, self.material, *others, *self.more_materials)
+
+    @property
+    def more_materials(self) -> tuple[str, ...]:
+        """Names of materials that the shape brings beside that of the particle."""
+        return tuple(getattr(self.shape, "more_materials", ()))
 
 
 class Sizes(Section):
@@ -322,13 +314,18 @@ class CampaignModel(Section):
         stated = {name: density(name, self.materials) for name in self.materials}
 
         def of_particle(particle: Particle) -> float | None:
-            core = stated.get(particle.material)
-            if particle.density_g_cm3 is not None or particle.coating is None:
-                return particle.density_g_cm3 or core
-            shell, volume = stated.get(particle.coating.material), particle.coating.core_scale**3
-            if core is None or shell is None:
+            found = [stated.get(name) for name in particle.materials]
+            if particle.density_g_cm3 is not None or len(found) == 1:
+                return particle.density_g_cm3 or found[0]
+            known = [value for value in found if value is not None]
+            if len(known) < len(found):
                 return None
-            return volume * core + (1.0 - volume) * shell
+            coating = particle.coating
+            if coating is not None and coating.thickness_fraction is None:
+                core = coating.core_scale**3
+                return core * known[1] + (1.0 - core) * known[0]
+            parts = shares(body(particle)[0])
+            return math.fsum(p * value for p, value in zip(parts, known, strict=True))
 
         return {particle.name: of_particle(particle) for particle in self.particles}
 
@@ -350,3 +347,13 @@ class CampaignModel(Section):
     def _check_materials(cls, value: dict[str, Material]) -> dict[str, Material]:
         check_names(list(value))
         return value
+
+
+def with_contents(model: CampaignModel, contents: Mapping[int, str]) -> CampaignModel:
+    """Write what the files of shapes hold into the model, by the particle's place in the list."""
+    particles = list(model.particles)
+    for position, digest in contents.items():
+        particle = particles[position]
+        shape = particle.shape.model_copy(update={"content": digest})
+        particles[position] = particle.model_copy(update={"shape": shape})
+    return model.model_copy(update={"particles": particles})

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 
 from scatterloom.campaign import effort
 from scatterloom.campaign.expand import Grid
-from scatterloom.campaign.geometry import extents, mirror_planes
+from scatterloom.campaign.geometry import extents
 from scatterloom.campaign.memory import case_bytes
 from scatterloom.campaign.plan import Job
 
@@ -71,10 +71,11 @@ def _record_bytes(job: Job) -> int:
 
 def job_bytes(job: Job) -> int:
     """Return the predicted peak memory of a job, that of its largest case [bytes]."""
+    reach = extents(job.shape)
     return case_bytes(
-        extents(job.shape).half,
-        extents(job.shape).radii,
-        mirror_planes(job.shape),
+        reach.half,
+        reach.radii,
+        reach.mirror_planes,
         max(x for _, x in job.cases),
         job.levels,
         job.accuracy.f11_relative,

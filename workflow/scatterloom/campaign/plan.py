@@ -159,8 +159,9 @@ def _predict(case: Case, reach: Extents) -> tuple[tuple[int, ...], _Size]:
     scale = sum(n**3 for n in levels) / sum(n**3 for n in chosen)
     # The cost counts waves for the half extents; corners reach farther.
     scale *= (effort.n_max(reach.radii, x) / effort.n_max(axes, x)) ** 2
-    cold = scale * effort.cost(axes, index, x, cold=True)
-    warm = scale * effort.cost(axes, index, x, cold=False)
+    cold, warm = (
+        scale * effort.cost(axes, index, x, cold, reach.mirror_planes) for cold in (True, False)
+    )
     return levels, _Size(case.digest, x, cold, warm)
 
 

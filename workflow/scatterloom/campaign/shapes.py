@@ -6,10 +6,29 @@ from typing import Annotated, Literal
 
 from pydantic import Field, model_validator
 
+from scatterloom.campaign.file_shapes import MeshFile, VoxelFile
+from scatterloom.campaign.random_shapes import (
+    BallisticCluster,
+    FractalCluster,
+    GaussianSphere,
+    PackedCluster,
+    PointHull,
+    RoughSphere,
+    VoronoiFragment,
+)
 from scatterloom.campaign.sections import Section, setting, wrong
-
-LARGEST_ASPECT = 10.0
-"""Largest ratio of the longest to the shortest axis of a particle."""
+from scatterloom.campaign.solid_shapes import (
+    LARGEST_ASPECT,
+    Capsule,
+    Cone,
+    Cylinder,
+    EdgeRadius,
+    Frustum,
+    RegularPolyhedron,
+    SphereChain,
+    Superellipsoid,
+    check_aspect,
+)
 
 
 class Sphere(Section):
@@ -43,7 +62,7 @@ class Ellipsoid(Section):
 
     @model_validator(mode="after")
     def _check(self) -> Ellipsoid:
-        _check_aspect("axis", "axes", self.axes)
+        check_aspect("axis", "axes", self.axes)
         return self
 
 
@@ -56,10 +75,11 @@ class Cuboid(Section):
         min_length=3,
         max_length=3,
     )
+    edge_radius_fraction: EdgeRadius = None
 
     @model_validator(mode="after")
     def _check(self) -> Cuboid:
-        _check_aspect("edge", "edges", self.edges)
+        check_aspect("edge", "edges", self.edges)
         return self
 
 
@@ -77,16 +97,61 @@ class Prism(Section):
         ge=1 / LARGEST_ASPECT,
         le=LARGEST_ASPECT,
     )
+    edge_radius_fraction: EdgeRadius = None
+    end_tilts_deg: (
+        list[Annotated[float, setting("Tilt of one end.", unit="deg", ge=-80.0, le=80.0)]] | None
+    ) = setting(
+        "Angles of the upper and the lower end with the base, both rising towards the corner on "
+        "x. The height is that along the axis.",
+        None,
+        min_length=2,
+        max_length=2,
+    )
+    indentation: float | None = setting(
+        "Depth of a hollow pyramid in either end over half the height.",
+        None,
+        unit="1",
+        gt=0.0,
+        le=0.95,
+    )
+
+    @model_validator(mode="after")
+    def _check(self) -> Prism:
+        given = [
+            name
+            for name in ("indentation", "end_tilts_deg", "edge_radius_fraction")
+            if getattr(self, name) is not None
+        ]
+        if self.indentation is not None and len(given) > 1:
+            raise wrong(
+                f"both indentation and {given[1]} are given",
+                "an indented prism has straight ends and sharp edges: leave one of them out",
+                given[1],
+            )
+        return self
 
 
-def _check_aspect(one: str, key: str, lengths: list[float]) -> None:
-    aspect = max(lengths) / min(lengths)
-    if aspect > LARGEST_ASPECT * (1.0 + 1e-12):
-        raise wrong(
-            f"the longest {one} is {aspect:.4g} times the shortest",
-            f"give {key} whose ratio is at most {LARGEST_ASPECT:g}",
-            key,
-        )
-
-
-Shape = Annotated[Sphere | Spheroid | Ellipsoid | Cuboid | Prism, Field(discriminator="kind")]
+Shape = Annotated[
+    Sphere
+    | Spheroid
+    | Ellipsoid
+    | Superellipsoid
+    | Cuboid
+    | Prism
+    | RegularPolyhedron
+    | Cylinder
+    | Capsule
+    | Cone
+    | Frustum
+    | GaussianSphere
+    | PointHull
+    | VoronoiFragment
+    | RoughSphere
+    | SphereChain
+    | FractalCluster
+    | BallisticCluster
+    | PackedCluster
+    | MeshFile
+    | VoxelFile,
+    Field(discriminator="kind"),
+]

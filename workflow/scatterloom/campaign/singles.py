@@ -144,7 +144,8 @@ def singles_of(campaign: Campaign) -> list[Single]:
 
 
 def _single(campaign: Campaign, entry: SingleSolve) -> Single:
-    from scatterloom.campaign.expand import body_of, relative_index
+    from scatterloom.campaign.bodies import body
+    from scatterloom.campaign.expand import relative_index
     from scatterloom.campaign.geometry import extents
 
     model = campaign.model
@@ -154,7 +155,8 @@ def _single(campaign: Campaign, entry: SingleSolve) -> Single:
     indices = tuple(
         relative_index(campaign.indices[name][w], medium) for name in particle.materials
     )
-    shape, indices = body_of(particle, indices)
+    shape, present = body(particle, indices)
+    indices = tuple(indices[place] for place in present)
     scale = 2.0 * math.pi * medium / entry.wavelength_um
     if entry.size_parameter is not None:
         x, radius = entry.size_parameter, entry.size_parameter / scale

@@ -25,7 +25,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterloom.particle.lattice import MEDIUM, Lattice
+from scatterloom.particle.bodies import Surface
+from scatterloom.particle.lattice import Lattice
 
 
 @dataclass(frozen=True, eq=False)
@@ -34,8 +35,8 @@ class Exchange:
 
     Attributes
     ----------
-    inside, outside : int
-        What is moved is the material `inside` in place of the one `outside`, -1 for the medium.
+    surface : Surface
+        What is moved is the material on its inside in place of that outside.
     giver, taker : int64 (n,)
         Cells of the lattice.
     amount : float64 (n,)
@@ -44,8 +45,7 @@ class Exchange:
         Mean of n n over the surface in the giver.
     """
 
-    inside: int
-    outside: int
+    surface: Surface
     giver: NDArray[np.int64]
     taker: NDArray[np.int64]
     amount: NDArray[np.float64]
@@ -53,22 +53,23 @@ class Exchange:
 
 
 def exchanges(lattice: Lattice) -> Iterator[Exchange]:
-    """Exchanges of every material and axis; none where first moments are not known."""
+    """Exchanges of every region and axis; none where first moments are not known."""
     composition = lattice.composition
-    if composition is None or composition.moment is None:
+    if composition is None:
         return
     number = np.full(lattice.box, -1, dtype=np.int64)
     number[tuple(lattice.cell.T)] = np.arange(len(lattice.cell))
-    for inside, moment in enumerate(composition.moment):
-        faces = composition.area_vector[
-            [i for i, pair in enumerate(composition.interfaces) if pair[0] == inside]
-        ]
-        size = np.linalg.norm(faces, axis=2)
-        oblique = np.any(np.abs(faces).max(axis=2) < (1.0 - 1e-9) * size, axis=0)
-        area = np.where(oblique[:, None], 0.0, faces.sum(axis=0))
-        unit = faces / np.where(size > 0.0, size, 1.0)[:, :, None]
-        dyad = np.einsum("fc,fci,fcj->cij", size, unit, unit)
-        total = size.sum(axis=0)
+    cells = len(lattice.cell)
+    for surface, moment in zip(composition.regions, composition.moment, strict=True):
+        vector = surface.vector
+        size = np.linalg.norm(vector, axis=1)
+        oblique = np.zeros(cells, dtype=bool)
+        oblique[surface.cell[np.abs(vector).max(axis=1) < (1.0 - 1e-9) * size]] = True
+        area = np.where(oblique[:, None], 0.0, surface.added(cells))
+        unit = vector / np.where(size > 0.0, size, 1.0)[:, None]
+        dyad = np.zeros((cells, 3, 3))
+        np.add.at(dyad, surface.cell, size[:, None, None] * unit[:, :, None] * unit[:, None, :])
+        total = np.bincount(surface.cell, size, minlength=cells)
         needed = moment + area / 24.0
         for axis in range(3):
             # Faces that look in opposite directions leave no inner side.
@@ -82,8 +83,7 @@ def exchanges(lattice: Lattice) -> Iterator[Exchange]:
             held = taker >= 0
             giver, taker, inwards = giver[held], taker[held], inwards[held]
             yield Exchange(
-                inside=inside,
-                outside=inside - 1 if inside else MEDIUM,
+                surface=surface,
                 giver=giver,
                 taker=taker,
                 amount=inwards * needed[giver, axis],

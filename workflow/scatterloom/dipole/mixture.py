@@ -9,7 +9,9 @@ from numpy.typing import NDArray
 
 from scatterloom.dipole.exchange import exchanges
 from scatterloom.dipole.polarizability import CellTensors, boundary_shift, cell_tensors, self_term
-from scatterloom.particle.lattice import MEDIUM, Lattice
+from scatterloom.particle.bodies import Surface
+from scatterloom.particle.lattice import Lattice
+from scatterloom.solids.mesh import MEDIUM
 
 
 def particle_tensors(lattice: Lattice, indices: Sequence[complex], kd: float) -> CellTensors:
@@ -72,20 +74,22 @@ def mixed_cell_tensors(lattice: Lattice, indices: Sequence[complex], kd: float) 
     inverse = 1.0 + (1.0 / eps - 1.0) @ lattice.fraction
     total = np.zeros(mean.size)
     dyad = np.zeros((mean.size, 3, 3))
-    pieces = zip(lattice.interfaces, lattice.area_vector, strict=True)
-    for (inside, outside), vector in () if arithmetic else pieces:
-        area = np.linalg.norm(vector, axis=1)
-        cut = np.flatnonzero(area)
-        area, normal = area[cut], vector[cut] / area[cut, None]
-        inner, outer = eps[inside], 1.0 if outside == MEDIUM else eps[outside]
+    surfaces = () if lattice.composition is None else lattice.composition.surfaces
+    for surface in () if arithmetic else surfaces:
+        area = np.linalg.norm(surface.vector, axis=1)
+        some = area > 0.0
+        cell, area = surface.cell[some], area[some]
+        normal = surface.vector[some] / area[:, None]
+        inner, outer = _two_sides(surface, eps)
         along, across = boundary_shift(normal, inner / outer)
-        mean[cut] += across * area * (inner - outer)
-        inverse[cut] += along * area * (1.0 / inner - 1.0 / outer)
+        # A cell may hold several pieces.
+        np.add.at(mean, cell, across * area * (inner - outer))
+        np.add.at(inverse, cell, along * area * (1.0 / inner - 1.0 / outer))
         weight = _contrast(inner, outer) * area
-        total[cut] += weight
-        dyad[cut] += weight[:, None, None] * normal[:, :, None] * normal[:, None, :]
+        np.add.at(total, cell, weight)
+        np.add.at(dyad, cell, weight[:, None, None] * normal[:, :, None] * normal[:, None, :])
     for step in () if arithmetic else exchanges(lattice):
-        inner, outer = eps[step.inside], 1.0 if step.outside == MEDIUM else eps[step.outside]
+        inner, outer = _two_sides(step.surface, eps)
         for cells, amount in ((step.giver, -step.amount), (step.taker, step.amount)):
             # A cell may take from several neighbours.
             np.add.at(mean, cells, amount * (inner - outer))
@@ -110,6 +114,11 @@ def mixed_cell_tensors(lattice: Lattice, indices: Sequence[complex], kd: float) 
         loss=_components(loss, frame),
         arithmetic=arithmetic,
     )
+
+
+def _two_sides(surface: Surface, eps: NDArray[np.complex128]) -> tuple[complex, complex]:
+    """Permittivity inside and outside."""
+    return eps[surface.inside], 1.0 if surface.outside == MEDIUM else eps[surface.outside]
 
 
 def _contrast(inner: complex, outer: complex) -> float:

@@ -4,47 +4,43 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass
-from itertools import pairwise
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
 
-from scatterloom.particle.bodies import Placement, cut
+from scatterloom.particle.bodies import Placement, Surface, cut
 from scatterloom.particle.shapes import Ellipsoid, Shape
+from scatterloom.solids.mesh import MEDIUM
 
 Floats = NDArray[np.float64]
 
 SMALLEST_FILL = 1e-9
 """Cells emptier than this are left out; all of them together weigh less than 1e-9."""
 
-MEDIUM = -1
-"""Stands for the host medium where materials are numbered."""
-
 
 @dataclass(frozen=True, eq=False)
 class Composition:
     """Materials and interfaces of a particle that one fill and one normal a cell cannot describe.
 
-    Materials are numbered from outside inwards.
-
     Attributes
     ----------
     fraction : float64 (n_material, n_cell)
         Volume fraction of each material in every cell; the rest is medium.
-    interfaces : tuple of (inside, outside)
-        Materials on either side of each smooth piece of surface, -1 for the medium.
-    area_vector : float64 (n_interface, n_cell, 3)
-        Outward mean normal times area of each piece in every cell, in units of a face.
-    moment : float64 (n_material, n_cell, 3) or None
-        Integral of the position from the cell's centre over the part of the cell inside the
-        outer interface of each material [cells]; None where it is not made use of.
+    surfaces : tuple of Surface
+        What lies between each pair of materials; their cells are those of the lattice.
+    regions : tuple of Surface
+        Closed surfaces whose insides make up the particle; none where first moments are not made
+        use of.
+    moment : float64 (n_region, n_cell, 3)
+        Integral of the position from the cell's centre over the part of the cell that
+        each region encloses [cells].
     """
 
     fraction: Floats
-    interfaces: tuple[tuple[int, int], ...]
-    area_vector: Floats
-    moment: Floats | None = None
+    surfaces: tuple[Surface, ...]
+    regions: tuple[Surface, ...] = ()
+    moment: Floats = field(default_factory=lambda: np.zeros((0, 0, 3)))
 
 
 # Compared and hashed by identity: it holds arrays.
@@ -117,14 +113,30 @@ class Lattice:
     @property
     def interfaces(self) -> tuple[tuple[int, int], ...]:
         """Materials inside and outside of each smooth piece of surface, -1 for the medium."""
-        return ((0, MEDIUM),) if self.composition is None else self.composition.interfaces
+        if self.composition is None:
+            return ((0, MEDIUM),)
+        surfaces = self.composition.surfaces
+        return tuple((s.inside, s.outside) for s in surfaces for _ in range(s.pieces))
+
+    @property
+    def contacts(self) -> tuple[tuple[int, int], ...]:
+        """Pairs of materials (inside, outside) that touch, -1 for the medium."""
+        return tuple(dict.fromkeys(self.interfaces))
 
     @property
     def area_vector(self) -> Floats:
-        """Outward mean normal times area of each piece, float64 (n_interface, n_cell, 3)."""
+        """Outward mean normal times area of each piece, float64 (n_piece, n_cell, 3).
+
+        The whole table, for a look at particles of few pieces.
+        """
         if self.composition is None:
             return (self.normal * self.area[:, None])[None]
-        return self.composition.area_vector
+        out = [np.zeros((0, len(self.cell), 3))]
+        for surface in self.composition.surfaces:
+            table = np.zeros((surface.pieces, len(self.cell), 3))
+            table[surface.piece, surface.cell] = surface.vector
+            out.append(table)
+        return np.concatenate(out)
 
 
 def lattice(
@@ -176,27 +188,26 @@ def lattice(
     if np.linalg.det(turn) < 0.0:
         raise ValueError("rotation must not be a reflection")
     place, mirrors = _place(shape, cells_across, turn, offset)
-    cuts = [cut(shape, scale, place) for scale in shape.scales]
-    outer = cuts[0]
-    fill = np.where(outer.fill > SMALLEST_FILL, outer.fill, 0.0)
-    inside = fill > 0.0
-    whole = (fill < 1.0)[..., None] * sum(outer.surfaces)
-    area = np.linalg.norm(whole, axis=-1)[inside]
+    parts = cut(shape, place)
+    inside = parts.fill > SMALLEST_FILL
+    fill = parts.fill[inside]
+    number = np.full(inside.size, -1, dtype=np.int64)
+    number[inside.ravel()] = np.arange(fill.size)
+    surfaces = tuple(surface.within(number) for surface in parts.surfaces)
+    outer = sum(s.added(fill.size) for s in surfaces if s.outside == MEDIUM)
+    outer = np.where((fill < 1.0)[:, None], outer, 0.0)
+    area = np.linalg.norm(outer, axis=-1)
     # Faces that cancel leave rounding errors, which have no direction.
     area[area < 1e-12] = 0.0
-    normal = whole[inside] / np.where(area > 0.0, area, 1.0)[:, None]
+    normal = outer / np.where(area > 0.0, area, 1.0)[:, None]
     normal[area == 0.0] = 0.0
     composition = None
-    if len(cuts) > 1 or not isinstance(shape, Ellipsoid):
-        # Nested bodies: each material is what one body holds beyond the next.
-        held = [fill[inside], *(np.minimum(c.fill[inside], fill[inside]) for c in cuts[1:])]
-        held.append(np.zeros_like(held[0]))
-        moments = [c.moment[inside] for c in cuts if c.moment is not None]
+    if shape.core_radius_fraction is not None or not isinstance(shape, Ellipsoid):
+        regions = surfaces
+        if parts.regions is not parts.surfaces:
+            regions = tuple(region.within(number) for region in parts.regions)
         composition = Composition(
-            fraction=np.stack([outside - within for outside, within in pairwise(held)]),
-            interfaces=tuple((m, m - 1) for m, c in enumerate(cuts) for _ in c.surfaces),
-            area_vector=np.stack([part[inside] for c in cuts for part in c.surfaces]) + 0.0,
-            moment=None if not moments else np.stack(moments),
+            parts.fraction[:, inside], surfaces, regions, parts.moment[:, inside]
         )
     nx, ny, nz = place.box
     ox, oy, oz = (float(o) for o in place.origin)
@@ -204,7 +215,7 @@ def lattice(
         box=(nx, ny, nz),
         spacing=place.spacing,
         cell=np.argwhere(inside).astype(np.int32),
-        fill=fill[inside],
+        fill=fill,
         normal=normal + 0.0,  # no negative zeros
         area=area,
         mirrors=mirrors,

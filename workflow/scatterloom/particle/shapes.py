@@ -11,19 +11,21 @@ import math
 from abc import ABC, abstractmethod
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
-from typing import Any, Literal
+from functools import cached_property
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from scatterloom.particle.polyhedron import Polyhedron, cuboid, prism
-
-Symmetry = Literal["sphere", "axial", "mirrors", "none"]
+from scatterloom.solids import placing
+from scatterloom.solids.mesh import MEDIUM, Solid, Symmetry
+from scatterloom.solids.registry import GENERATORS
 
 
 @dataclass(frozen=True)
 class Shape(ABC):
-    """A convex body of unit equal-volume-sphere radius, centred on the origin.
+    """A body of unit equal-volume-sphere radius, centred on the origin.
 
     Attributes
     ----------
@@ -64,6 +66,11 @@ class Shape(ABC):
     def volume(self) -> float:
         """Volume in units of the cubed equal-volume-sphere radius: 4 pi / 3."""
         return 4.0 * math.pi / 3.0
+
+    @property
+    def layers(self) -> frozenset[int]:
+        """Materials that surround something: another material or a hollow."""
+        return frozenset(range(len(self.scales) - 1))
 
     @property
     def scales(self) -> tuple[float, ...]:
@@ -152,6 +159,46 @@ class Faceted(Shape):
         return bool(apart.max() < 1e-12 * self.circumscribed_radius)
 
 
+@dataclass(frozen=True)
+class SolidShape(Shape):
+    """Any body made of triangles.
+
+    Attributes
+    ----------
+    solid : Solid
+        Its surfaces, the core's included, about the centre; the volume is 4 pi / 3.
+    """
+
+    solid: Solid
+
+    @cached_property
+    def _corners(self) -> NDArray[np.float64]:
+        return placing.outer_corners(self.solid)
+
+    @cached_property
+    def half_extents(self) -> NDArray[np.float64]:
+        return placing.half_extents(self.solid)
+
+    @cached_property
+    def circumscribed_radius(self) -> float:
+        return placing.circumscribed_radius(self.solid)
+
+    @cached_property
+    def symmetry(self) -> Symmetry:
+        return placing.symmetry(self.solid)
+
+    @property
+    def layers(self) -> frozenset[int]:
+        return frozenset(f.outside for f in self.solid.interfaces if f.outside != MEDIUM)
+
+    def bounds(self, rotation: NDArray[np.float64]) -> NDArray[np.float64]:
+        turned = self._corners @ rotation.T
+        return np.stack([turned.min(axis=0), turned.max(axis=0)])
+
+    def is_mirrored(self, normal: NDArray[np.float64]) -> bool:
+        return placing.is_mirrored(self.solid, normal)
+
+
 def from_spec(spec: Mapping[str, Any]) -> Shape:
     """Shape described by its entry in a campaign.
 
@@ -162,7 +209,8 @@ def from_spec(spec: Mapping[str, Any]) -> Shape:
         ``{"kind": "ellipsoid", "axes": [a, b, c]}``, ``{"kind": "cuboid", "edges": [a, b, c]}``
         or ``{"kind": "prism", "sides": n, "height_to_width": ratio}``; only the ratios of
         lengths count. The width of a prism is the diameter of the circle through the
-        corners of its base. ``"core_radius_fraction"`` may be added to any of them.
+        corners of its base. ``"core_radius_fraction"`` may be added to any of them. Other kinds
+        are those of `scatterloom.solids.registry`.
 
     Returns
     -------
@@ -180,6 +228,9 @@ def from_spec(spec: Mapping[str, Any]) -> Shape:
     (2.0, 2.0, 0.25)
     """
     kind = spec.get("kind")
+    if kind in GENERATORS:
+        core = spec.get("core_radius_fraction")
+        return SolidShape(str(kind), placing.placed(spec), core_radius_fraction=core)
     keys: dict[str, tuple[str, ...]] = {
         "sphere": (),
         "spheroid": ("equatorial_to_polar",),
@@ -188,7 +239,8 @@ def from_spec(spec: Mapping[str, Any]) -> Shape:
         "prism": ("sides", "height_to_width"),
     }
     if kind not in keys:
-        raise ValueError(f"unknown shape kind {kind!r}: known kinds are {', '.join(keys)}")
+        known = ", ".join((*keys, *GENERATORS))
+        raise ValueError(f"unknown shape kind {kind!r}: known kinds are {known}")
     found = spec.keys() - {"kind", "core_radius_fraction"}
     if found != set(keys[kind]):
         expected = ", ".join(keys[kind]) or "no further key"

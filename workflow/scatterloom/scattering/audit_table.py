@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 from scatterloom.errors import IntegrityError
 from scatterloom.scattering.audit import CHECKS, FloatArray, audit_energy, audit_matrix
 from scatterloom.scattering.error_bars import BUDGET, over_angle
+from scatterloom.scattering.handed import handed_particles
 from scatterloom.scattering.record import SOLVED, STATUS_MEANINGS, has_result
 
 if TYPE_CHECKING:
@@ -56,10 +57,14 @@ def audit_table(table: xarray.Dataset, asked: dict[str, float]) -> dict[str, Any
     shape = tuple(table.sizes[d] for d in ("particle", "wavelength", "size"))
     deviations = {check.name: np.full(shape, np.nan) for check in CHECKS}
     reached = {name: np.full(shape, np.nan) for name in _ACCURACY}
+    handed = handed_particles(table)
     for p, w in np.ndindex(shape[:2]):
         part = table.isel(particle=p, wavelength=w).load()
         for name, value in _audit_ladder(part).items():
             deviations[name][p, w] = value
+        if str(part["particle"].values) in handed:
+            # Sixteen elements are right for a body unlike its mirror image.
+            deviations["six_elements"][p, w] = np.nan
         for name, value in _half_widths(part).items():
             reached[name][p, w] = value
 

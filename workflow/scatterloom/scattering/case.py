@@ -144,6 +144,9 @@ def combine_levels(
     size_parameter: float,
     spacing: float,
     asked: Asked,
+    *,
+    contacts: Sequence[tuple[int, int]] | None = None,
+    thin: bool = False,
     **identity: Any,
 ) -> record.CaseRecord:
     """Record of a case from its lattice levels.
@@ -161,6 +164,10 @@ def combine_levels(
     spacing : float
         Lattice spacing of the finest level in units of the equal-volume radius.
     asked : Asked
+    contacts : sequence of (int, int), optional
+        Numbers of the materials that touch, -1 for the medium; nested ones if missing.
+    thin : bool
+        Whether a part of the particle is too thin for the finest level.
     identity
         digest, shape, start, products, cold_products_estimate, wall_seconds.
     """
@@ -176,7 +183,7 @@ def combine_levels(
     # cold solves; filled-in sizes differed from cold ones by up to twice as much.
     field_error = 0.1 * amplification * max(level.solution.residual for level in levels)
     across = 2.0 / spacing
-    model = error_bars.cell_model_error((index, *inner), across)
+    model = error_bars.cell_model_error((index, *inner), across, contacts)
     scalars = _scalars(variants, model, field_error, size_parameter)
     balance = best.result.extinction_efficiency - (
         best.result.scattering_efficiency + best.absorption
@@ -218,6 +225,8 @@ def combine_levels(
         **identity,
     )
     flags = _flags(out, asked, levels, spacing * size_parameter)
+    if thin:
+        flags |= record.FLAGS["thin_part"][0]
     warned = flags & ~record.INFORMATIVE
     return replace(
         out,

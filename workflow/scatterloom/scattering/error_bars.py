@@ -10,7 +10,6 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -65,14 +64,28 @@ GRID_DEG = np.arange(0.0, 180.5, 1.0)
 """Angles on which deviations are compared [deg]."""
 
 
-def cell_model_error(indices: complex | Sequence[complex], cells_across: float) -> float:
+def cell_model_error(
+    indices: complex | Sequence[complex],
+    cells_across: float,
+    contacts: Sequence[tuple[int, int]] | None = None,
+) -> float:
     """Relative half width of efficiencies from the linear part of the boundary error.
 
-    Of nested materials, given from outside inwards, the interface of the strongest contrast
-    counts.
+    The interface of the strongest contrast counts.
+
+    Parameters
+    ----------
+    indices : complex or sequence of complex
+        Of each material relative to the medium.
+    cells_across : float
+    contacts : sequence of (int, int), optional
+        Numbers of the materials that touch, -1 for the medium; those of materials nested in their
+        order if missing.
     """
-    nested = indices if isinstance(indices, Sequence) else [indices]
-    ratios = [(inner / outer) ** 2 for outer, inner in pairwise((1.0, *nested))]
+    held = indices if isinstance(indices, Sequence) else [indices]
+    if contacts is None:
+        contacts = [(number, number - 1) for number in range(len(held))]
+    ratios = [(held[i] / (held[o] if o >= 0 else 1.0)) ** 2 for i, o in contacts]
     contrast = max(abs((eps - 1.0) / (eps + 2.0)) for eps in ratios)
     return CELL_MODEL * contrast / cells_across
 

@@ -31,6 +31,7 @@ FLAGS: dict[str, tuple[int, str]] = {
     "reused": (256, "solved by another campaign and taken from the case library"),
     "no_time": (512, "the case takes longer than allowed"),
     "breakdown": (1024, "the numbers of the solve broke down (not finite, or singular)"),
+    "thin_part": (2048, "a layer is thinner than two cells, or a part on average than one"),
 }
 """Warning flags: bit and meaning."""
 

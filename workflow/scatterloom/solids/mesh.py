@@ -3,12 +3,15 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
 
 Floats = NDArray[np.float64]
+
+Symmetry = Literal["sphere", "axial", "mirrors", "none"]
 
 MEDIUM = -1
 """Stands for the host medium where materials are numbered."""
@@ -57,6 +60,10 @@ class Mesh:
         sixfold = np.einsum("ij,ij->i", a, np.cross(b, c))
         return (sixfold @ (a + b + c)) / (4.0 * sixfold.sum())
 
+    def turned(self, rotation: Floats) -> Mesh:
+        """The same surface with every corner multiplied by a rotation, float64 (3, 3)."""
+        return Mesh(self.corners @ rotation.T, self.triangles, self.piece)
+
     def moved(self, shift: Floats, scale: float = 1.0) -> Mesh:
         """The same surface shifted, then scaled about the origin."""
         return Mesh((self.corners + shift) * scale, self.triangles, self.piece)
@@ -72,11 +79,16 @@ class Interface:
     inside, outside : int
         Numbers of the materials on either side, -1 for the medium. Surfaces of one solid do
         not cross; one inside another replaces the material within.
+    beyond : tuple of int or None
+        For a grain in touch with others, what lies beyond each piece of its surface, -1 for
+        the medium; each of the others has a surface of its own, and the grain lies in the medium
+        otherwise (`outside` is -1). None if `outside` lies everywhere.
     """
 
     mesh: Mesh
     inside: int = 0
     outside: int = MEDIUM
+    beyond: tuple[int, ...] | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -86,9 +98,15 @@ class Solid:
     Attributes
     ----------
     interfaces : tuple of Interface
+    symmetry : str or None
+        Symmetry about the origin of the body that the triangles stand for, where it is known:
+        ``sphere``, ``axial`` (rotation about z, and mirrors), ``mirrors`` (x, y, z) or ``none``.
+        It is believed, and the origin stays the centre; None to find centre and mirror planes
+        from the corners.
     """
 
     interfaces: tuple[Interface, ...]
+    symmetry: Symmetry | None = None
 
     @property
     def volume(self) -> float:
@@ -107,8 +125,6 @@ class Solid:
         """The same body about this centre, with the volume 4 pi / 3."""
         scale = math.cbrt(4.0 * math.pi / 3.0 / self.volume)
         return Solid(
-            tuple(
-                Interface(face.mesh.moved(-centre, scale), face.inside, face.outside)
-                for face in self.interfaces
-            )
+            tuple(replace(face, mesh=face.mesh.moved(-centre, scale)) for face in self.interfaces),
+            self.symmetry,
         )

@@ -50,6 +50,11 @@ class Layout:
         return self.folder / "config.yaml"
 
     @property
+    def solids(self) -> Path:
+        """Content of the files that shapes were read from, by digest."""
+        return self.folder / "solids"
+
+    @property
     def lock(self) -> Path:
         """Held by the run that works on the campaign."""
         return self.folder / ".campaign.lock"

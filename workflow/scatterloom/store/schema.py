@@ -231,14 +231,16 @@ INDICES = (
         GRID[:2],
         "f8",
         "real part of the refractive index of the core relative to the medium",
-        comment="missing where the particle has no coating",
+        comment="of several materials beside the first that which absorbs most; missing "
+        "where there is one material",
     ),
     Variable(
         "core_refractive_index_k",
         GRID[:2],
         "f8",
         "imaginary part of the refractive index of the core relative to the medium",
-        comment="missing where the particle has no coating",
+        comment="of several materials beside the first that which absorbs most; missing "
+        "where there is one material",
     ),
 )
 
