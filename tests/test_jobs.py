@@ -87,8 +87,9 @@ def test_spans_start_from_the_fields_of_their_anchors(solved, name):
     lowest, highest = min(c.products for c in cold), max(c.products for c in cold)
     for case in warm:
         assert lowest <= case.cold_products_estimate <= highest
-        # anchors 0.4 apart: well under the products of a zero start
-        assert case.products < 0.75 * case.cold_products_estimate
+        # anchors 0.4 apart: under the products of a zero start, even where a product that
+        # probes the error is needed, which weighs most where waves are as few as here
+        assert case.products < 0.85 * case.cold_products_estimate
         assert case.operator_error <= 1e-4
 
 

@@ -8,6 +8,7 @@ Lengths are in units of 1/k, Gaussian units, time factor exp(-i w t).
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -19,8 +20,21 @@ from scipy.sparse.linalg import LinearOperator, bicgstab
 _B1, _B2, _B3 = -1.8915316, 0.1648469, -1.7700004
 
 
-def staircase(half_axes: NDArray[np.float64], cells_across: int) -> tuple[NDArray, float]:
-    """Cells whose centre is inside an ellipsoid, and the spacing that conserves its volume.
+def staircase(
+    half_extents: NDArray[np.float64],
+    cells_across: int,
+    inside: Callable[[NDArray[np.float64]], NDArray[np.bool_]] | None = None,
+) -> tuple[NDArray, float]:
+    """Cells whose centre is inside a particle, and the spacing that conserves its volume.
+
+    Parameters
+    ----------
+    half_extents : float64 (3,)
+        In units of the equal-volume radius.
+    cells_across : int
+        Along the longest extent.
+    inside : callable((n, 3) points) -> bool (n,), optional
+        Of a particle about the origin; an ellipsoid with these half axes if not given.
 
     Returns
     -------
@@ -29,13 +43,15 @@ def staircase(half_axes: NDArray[np.float64], cells_across: int) -> tuple[NDArra
     spacing : float
         In units of the equal-volume radius.
     """
-    spacing = 2.0 * half_axes.max() / cells_across
-    counts = [2 * int(np.ceil(a / spacing - 1e-9)) for a in half_axes]
-    axes = [
-        (np.arange(n) + 0.5 - n / 2) * spacing / a for n, a in zip(counts, half_axes, strict=True)
-    ]
-    x, y, z = np.meshgrid(*axes, indexing="ij")
-    cell = np.argwhere(x**2 + y**2 + z**2 <= 1.0)
+    spacing = 2.0 * half_extents.max() / cells_across
+    counts = [2 * int(np.ceil(a / spacing - 1e-9)) for a in half_extents]
+    axes = [(np.arange(n) + 0.5 - n / 2) * spacing for n in counts]
+    grid = np.stack(np.meshgrid(*axes, indexing="ij"), axis=-1)
+    if inside is None:
+        held = np.sum((grid / half_extents) ** 2, axis=-1) <= 1.0
+    else:
+        held = inside(grid.reshape(-1, 3)).reshape(counts)
+    cell = np.argwhere(held)
     return cell - cell.min(axis=0), (4 * np.pi / 3 / len(cell)) ** (1 / 3)
 
 

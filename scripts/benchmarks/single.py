@@ -14,15 +14,17 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.sparse.linalg import LinearOperator, gmres
 
+from benchmarks.irregular import irregular_polyhedron
 from benchmarks.output import Result
 from scatterloom.dipole.mixture import particle_tensors
 from scatterloom.dipole.product import LatticeMatrix
 from scatterloom.particle.lattice import lattice
-from scatterloom.particle.shapes import from_spec
+from scatterloom.particle.shapes import Faceted, Shape, from_spec
 
-SHAPES: Mapping[str, Mapping[str, Any]] = {
-    "sphere": {"kind": "sphere"},
-    "oblate 2:1": {"kind": "spheroid", "equatorial_to_polar": 2.0},
+SHAPES: Mapping[str, Shape] = {
+    "sphere": from_spec({"kind": "sphere"}),
+    "oblate 2:1": from_spec({"kind": "spheroid", "equatorial_to_polar": 2.0}),
+    "irregular": irregular_polyhedron(),
 }
 INDICES = (1.05 + 0.0j, 1.33 + 0.0j, 1.6 + 0.0j)
 SIZES = (2.0, 5.0)
@@ -38,16 +40,13 @@ STARTS = ("zero", "plane wave", "straight rays", "one-sided", "two-sided")
 class _Wave:
     """A plane wave along z, polarized along x, on a particle of one size."""
 
-    def __init__(self, spec: Mapping[str, Any], index: complex, x: float, threads: int) -> None:
-        shape = from_spec(spec)
+    def __init__(self, shape: Shape, index: complex, x: float, threads: int) -> None:
         cells = replace(lattice(shape, CELLS), mirrors=(False, False, False))
         kd = x * cells.spacing
         tensors = particle_tensors(cells, [index], kd)
         self.matrix = LatticeMatrix(cells, tensors, kd, np.complex128, threads)
         at = x * cells.centre()
-        a, b, c = x * np.asarray(shape.half_axes)
-        inside = np.maximum(1.0 - (at[:, 0] / a) ** 2 - (at[:, 1] / b) ** 2, 0.0)
-        path = np.clip(at[:, 2] + c * np.sqrt(inside), 0.0, None)
+        path = x * np.clip(at[:, 2] / x - _entry(shape, at[:, :2] / x), 0.0, None)
         root = self.matrix.root
         across = np.stack([root[0], root[3], root[4]])
         self.incident = across * np.exp(1j * at[:, 2])
@@ -76,21 +75,35 @@ class _Wave:
         return found.reshape(3, n), matrix.products - before, first
 
 
-def _solved(spec: Mapping[str, Any], index: complex, x: float, threads: int) -> NDArray:
+def _entry(shape: Shape, across: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Height z at which a ray along z enters a particle, for points (n, 2) across it."""
+    if isinstance(shape, Faceted):
+        normals, distances = shape.body.planes
+        below = normals[:, 2] < 0.0
+        facing, reach = normals[below], distances[below]
+        heights = (reach - across @ facing[:, :2].T) / facing[:, 2]
+        entry: NDArray[np.float64] = heights.max(axis=1)
+        return entry
+    a, b, c = shape.half_extents
+    inside = np.maximum(1.0 - (across[:, 0] / a) ** 2 - (across[:, 1] / b) ** 2, 0.0)
+    return -c * np.sqrt(inside)
+
+
+def _solved(shape: Shape, index: complex, x: float, threads: int) -> NDArray:
     """Solution of another size without the phase of straight rays."""
-    wave = _Wave(spec, index, x, threads)
+    wave = _Wave(shape, index, x, threads)
     return wave.solve(np.zeros_like(wave.incident))[0] / wave.phase
 
 
 def run(threads: int) -> Result:
     """Count the products from every start."""
     rows: list[dict[str, Any]] = []
-    for name, spec in SHAPES.items():
+    for name, shape in SHAPES.items():
         for index in INDICES:
             for x in SIZES:
-                wave = _Wave(spec, index, x, threads)
+                wave = _Wave(shape, index, x, threads)
                 two_below, below, above = (
-                    _solved(spec, index, x * RATIO**step, threads) for step in (-2, -1, 1)
+                    _solved(shape, index, x * RATIO**step, threads) for step in (-2, -1, 1)
                 )
                 starts = {
                     "zero": np.zeros_like(wave.incident),
@@ -111,6 +124,7 @@ def run(threads: int) -> Result:
         [
             f"One plane wave, {CELLS} cells across, generalized minimal residuals without restart "
             f"to a relative residual of {TOLERANCE:g}, double precision.",
+            "'irregular' is the convex hull of random points, without any symmetry.",
             "'plane wave' takes the incident field for the exciting one, 'straight rays' gives it "
             "the phase of a straight ray through the particle.",
             f"'one-sided' extrapolates from two smaller sizes at a ratio of {RATIO:g}, 'two-sided' "
@@ -127,7 +141,7 @@ def _draw(path: Path, rows: list[dict[str, Any]]) -> None:
     matplotlib.use("Agg")
     import matplotlib.pyplot as plt
 
-    figure, axes = plt.subplots(1, len(SHAPES), figsize=(10, 3.8), sharey=True)
+    figure, axes = plt.subplots(1, len(SHAPES), figsize=(13, 3.8), sharey=True)
     for ax, name in zip(axes, SHAPES, strict=True):
         mine = [row for row in rows if row["particle"] == name]
         place = np.arange(len(mine))

@@ -34,7 +34,7 @@ def test_significant_rows_are_orthonormal_and_complete():
     assert np.linalg.norm(rest, 2) ** 2 <= 1e-4
     assert 0 < len(combine) < 6
     assert len(significant_rows(gram(block), 1e9)) == 0
-    assert len(significant_rows(gram(np.zeros((3, 5))), 0.0)) == 0
+    assert len(significant_rows(gram(np.zeros((3, 5), complex)), 0.0)) == 0
 
 
 def test_invariants_hold_at_every_step(system):
@@ -81,6 +81,7 @@ def test_dependent_images_add_nothing(system):
     twice = np.concatenate([v, v[:2]])
     iterate.take(twice, twice @ a.T)
     once = ClassIterate(b)
+    once.admit(1e-12)
     once.take(v, v @ a.T)
     assert len(iterate._images[0]) == len(v)
     np.testing.assert_allclose(iterate.fields, once.fields, atol=1e-12)
@@ -98,9 +99,11 @@ def test_errors_of_amplitudes_are_of_second_order(system):
     eps = 1e-3 * 2.0 ** np.arange(6)
     errors = {"plain": [], "stationary": [], "corrected": []}
     for e in eps:
+        # The best fields within a span that misses the exact ones by e.
         iterate = ClassIterate(b)
-        iterate.fields = exact_fields + e * direction
-        iterate.residual = b - iterate.fields @ a.T
+        iterate.admit(0.0)
+        tried = exact_fields + e * direction
+        iterate.take(tried, tried @ a.T)
         stationary, remainder = iterate.amplitudes()
         errors["plain"].append(np.linalg.norm(b @ iterate.fields.T - exact))
         errors["stationary"].append(np.linalg.norm(stationary - exact))
@@ -110,6 +113,51 @@ def test_errors_of_amplitudes_are_of_second_order(system):
     assert slopes["stationary"] == pytest.approx(2.0, abs=0.01)
     assert slopes["corrected"] == pytest.approx(2.0, abs=0.01)
     assert np.all(np.array(errors["corrected"]) < 0.7 * np.array(errors["stationary"]))
+
+
+def test_rows_admitted_late_meet_the_invariants(system):
+    # Strong rows first; the others join after two steps and must fit what was done before.
+    a, b = system
+    b = b * np.array([1, 1, 1, 0.1, 0.1, 0.01, 0.01])[:, None]
+    scale = np.linalg.norm(b)
+    iterate = ClassIterate(b)
+    for threshold in (10.0, 10.0, 1e-12, 1e-12):
+        directions = iterate.propose(threshold)
+        if threshold == 10.0:
+            assert iterate.strong == 3
+        iterate.take(directions, directions @ a.T)
+        np.testing.assert_allclose(iterate.residual, b - iterate.fields @ a.T, atol=1e-13 * scale)
+    assert iterate.strong == 7
+    for images in iterate._images:
+        np.testing.assert_allclose(iterate.residual @ images.conj().T, 0.0, atol=1e-12)
+
+
+def test_weak_rows_enter_the_amplitudes_to_first_order(system):
+    # Rows of norm w without a solve of their own: their amplitudes with the others are off by
+    # w times the residual, those among themselves by w^2 |A^-1 - 1|.
+    a, b = system
+    weight = 1e-4
+    b = b * np.where(np.arange(7) < 4, 1.0, weight)[:, None]
+    exact = b @ np.linalg.solve(a, b.T)
+    iterate = ClassIterate(b)
+    for _ in range(12):
+        directions = iterate.propose(1e-5)
+        iterate.take(directions, directions @ a.T)
+    assert iterate.strong == 4
+    stationary, remainder = iterate.amplitudes()
+    off = np.abs(stationary + remainder - exact)
+    rest = np.linalg.norm(iterate.residual[:4])
+    weak = np.linalg.norm(b[4:])
+    # |A^-1| <= 2, |A^-1 - 1| <= 1
+    assert off[4:, :4].max() <= 1.1 * weak * rest + 1e-13
+    assert off[4:, 4:].max() <= 1.1 * weak**2 + 1e-13
+    assert np.linalg.norm(remainder) == pytest.approx(iterate.remainder_norm(), rel=1e-9)
+    whole = np.linalg.norm(iterate.residual @ iterate.residual.T)
+    assert iterate.remainder_norm(iterate.across_norm()) == pytest.approx(whole, rel=1e-9)
+    assert whole <= iterate.remainder_norm(iterate.across_bound()) < 10.0 * whole
+    np.testing.assert_allclose(iterate.residual, b - iterate.fields @ a.T, atol=1e-12)
+    expected = iterate.fields + iterate.residual
+    np.testing.assert_allclose(iterate.corrected_fields(), expected, atol=1e-12)
 
 
 def test_recursive_and_true_residual_agree_in_single_precision():

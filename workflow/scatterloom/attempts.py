@@ -26,13 +26,6 @@ from scatterloom.transition.level import LevelResult, solve_level
 _GIVE_UP = 0.01
 """A relative error of the amplitudes above this is no result at all."""
 
-_INFILL_TOLERANCE = 0.5
-"""Share of the tolerance allowed to a size started from its neighbours.
-
-What such a start lacks lies along resonances, where the error estimate reads up to three
-times too low (measured); a stricter estimate costs a fraction of a product.
-"""
-
 _LONGER_BASES = 2
 """How often the truncation may be raised before the case is flagged."""
 
@@ -124,7 +117,6 @@ class _Solves:
         # Neighbours have fields on the lattices of the job only, not on finer ones.
         shared = task.cells.index(cells) if cells in task.cells else None
         neighbours = [] if shared is None else [entry.levels[shared] for entry in self._around]
-        tolerance = task.tolerance * (_INFILL_TOLERANCE if neighbours else 1.0)
         # What an interrupted solve had reached is nearer than any neighbour.
         nodes = [saved.fields] if saved is not None else neighbours
         earlier = saved.products if saved is not None else 0.0
@@ -146,7 +138,7 @@ class _Solves:
             task.indices,
             self._x,
             n_max,
-            tolerance,
+            task.tolerance,
             start=interpolated_start(nodes, self._x) if nodes else None,
             threads=task.threads,
             progress=watch,

@@ -6,6 +6,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
+from numba import njit
 from numpy.typing import NDArray
 
 from scatterloom.dipole.product import LatticeMatrix
@@ -50,6 +51,17 @@ class IncidentBlock:
         return members, blocks
 
 
+@njit(cache=True)
+def _rooted(fields, member, root, factor, out):  # type: ignore[no-untyped-def]
+    """Fields of the waves `member` times a factor and a^1/2, components xx, yy, zz, xy, xz, yz."""
+    for w in range(len(member)):
+        x, y, z = fields[member[w], 0], fields[member[w], 1], fields[member[w], 2]
+        for q, (a, b, c) in enumerate(((0, 3, 4), (3, 1, 5), (4, 5, 2))):
+            for o in range(out.shape[2]):
+                value = root[a, o] * x[o] + root[b, o] * y[o] + root[c, o] * z[o]
+                out[w, q, o] = factor * value
+
+
 def incident_block(
     lattice: Lattice,
     matrix: LatticeMatrix,
@@ -74,11 +86,8 @@ def incident_block(
         if sector.exchange:
             chosen &= exchange == sector.exchange
         member = np.flatnonzero(chosen)
-        x, y, z = (images * fields[member, q] for q in range(3))
         block = np.empty((len(member), 3, matrix.n_cell), dtype=matrix.dtype)
-        block[:, 0] = root[0] * x + root[3] * y + root[4] * z
-        block[:, 1] = root[3] * x + root[1] * y + root[5] * z
-        block[:, 2] = root[4] * x + root[5] * y + root[2] * z
+        _rooted(fields, member, root, images, block)
         flat = sectors.part(sector, block.reshape(len(member), 3 * matrix.n_cell))
         members.append(member)
         rows.append(flat)
