@@ -47,3 +47,7 @@ CAMPAIGN = (
     f"{shlex.quote(str(find_config()))}"
     f" --results {shlex.quote(str(GRAPH.layout.folder.parent))}"
 )
+
+# What `scatterloom run` decides; none of it alters a result.
+THREADS = int(config.get("threads", 1))
+CLUSTER = bool(config.get("cluster"))

@@ -7,12 +7,28 @@ ONE_POOL = " ".join(
 
 # No parameters: what a job may take or reuse must not decide what is rerun.
 OPTIONS = " ".join(map(shlex.quote, GRAPH.solver_options()))
+if config.get("turn"):
+    # A letter in front keeps the engine from reading a number.
+    OPTIONS += f" --turn {shlex.quote(str(config['turn'])[1:])}"
+if CLUSTER:
+    OPTIONS += " --cluster"
 
 
-def memory_needed(wildcards):
+def memory_needed(wildcards, attempt):
     """Return MiB: the engine starts no more jobs at once than memory has room for."""
-    most = int(config.get("memory_mb", 1 << 40))
-    return min(GRAPH.jobs[wildcards.job].memory_mb, most)
+    job = GRAPH.jobs[wildcards.job]
+    if CLUSTER:
+        return job.request_mb(attempt)
+    return min(job.memory_mb, int(config.get("memory_mb", 1 << 40)))
+
+
+def minutes_needed(wildcards, attempt):
+    """Return the minutes to ask a cluster for."""
+    return GRAPH.jobs[wildcards.job].request_minutes(attempt)
+
+
+def attempt_number(wildcards, attempt):
+    return attempt
 
 
 def fields_needed(wildcards):
@@ -27,15 +43,19 @@ rule solve_anchors:
         "state/logs/jobs/{job}.log",
     wildcard_constraints:
         job=r"anchors-[^/]+",
-    threads: 1
+    threads: THREADS
     resources:
         mem_mb=memory_needed,
+        runtime=minutes_needed,
+        attempt=attempt_number,
     params:
         digest=lambda wildcards: GRAPH.job_digest(wildcards.job),
     # exec: the solver is then the engine's own child and can end with it.
     shell:
         "exec env " + ONE_POOL + " {SCATTERLOOM} solve-job jobs/{wildcards.job}.json"
-        " {OPTIONS} --threads {threads} --parent $PPID > {log} 2>&1"
+        " {OPTIONS} --threads {threads} --granted-mib {resources.mem_mb}"
+        " --granted-minutes {resources.runtime} --attempt {resources.attempt}"
+        " --parent $PPID > {log} 2>&1"
 
 
 rule solve_span:
@@ -47,11 +67,15 @@ rule solve_span:
         "state/logs/jobs/{job}.log",
     wildcard_constraints:
         job=r"span-[^/]+",
-    threads: 1
+    threads: THREADS
     resources:
         mem_mb=memory_needed,
+        runtime=minutes_needed,
+        attempt=attempt_number,
     params:
         digest=lambda wildcards: GRAPH.job_digest(wildcards.job),
     shell:
         "exec env " + ONE_POOL + " {SCATTERLOOM} solve-job jobs/{wildcards.job}.json"
-        " {OPTIONS} --threads {threads} --parent $PPID > {log} 2>&1"
+        " {OPTIONS} --threads {threads} --granted-mib {resources.mem_mb}"
+        " --granted-minutes {resources.runtime} --attempt {resources.attempt}"
+        " --parent $PPID > {log} 2>&1"
