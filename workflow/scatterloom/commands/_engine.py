@@ -52,12 +52,15 @@ class FailedRule:
     @property
     def over_limit(self) -> str | None:
         """Return "no_memory" or "no_time" if Slurm ended it for that."""
-        if self.batch_log is None:
-            return None
+        return _slurm.limit_exceeded(self.words_of_slurm())
+
+    def words_of_slurm(self) -> list[str]:
+        """Return what Slurm itself wrote to its log of the job."""
         try:
-            return _slurm.limit_exceeded(Path(self.batch_log).read_text(errors="replace"))
+            log = Path(self.batch_log or os.devnull).read_text(errors="replace")
         except OSError:
-            return None
+            return []
+        return _slurm.own_words(log)
 
 
 class Engine:
@@ -120,7 +123,7 @@ class Engine:
                 pass_fds=(lock,),
                 preexec_fn=ask_kernel,
                 # A terminal's interrupt reaches this process alone, which then ends the session.
-                env=_environment(profile),
+                env=_environment(profile, top),
             )
 
     def poll(self) -> int | None:
@@ -212,10 +215,10 @@ def _placement(profile: Profile, cores: int | None, turn: Turn) -> list[str]:
     return some
 
 
-def _environment(profile: Profile) -> dict[str, str]:
+def _environment(profile: Profile, top: Path) -> dict[str, str]:
     environment = os.environ | {"PYTHONUNBUFFERED": "1"}
-    programs = profile.folder / "programs"
-    if profile.slurm and "SLURM_CONF" in environment and programs.is_dir():
+    if profile.slurm and "SLURM_CONF" in environment:
+        programs = top / "workflow" / "profiles" / "slurm" / "programs"
         # Beyond the engine's reach, which drops Slurm's variables from the steps of a job.
         environment["SCATTERLOOM_SLURM_CONF"] = environment["SLURM_CONF"]
         environment["PATH"] = f"{programs}{os.pathsep}{environment.get('PATH', os.defpath)}"

@@ -7,7 +7,7 @@ import re
 import shutil
 import subprocess
 import time
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 
 from scatterloom.errors import EnvironmentProblem
 
@@ -103,16 +103,15 @@ def site_resources() -> list[str]:
     return [f"{key}={os.environ[name]!r}" for key, name in wanted.items() if os.environ.get(name)]
 
 
-def limit_exceeded(log: str) -> str | None:
-    """Return "no_memory" or "no_time" if the log of a Slurm job says that it went over a limit."""
-    for line in log.splitlines():
-        # Slurm's own words, not those of the job.
-        if "slurmstepd" not in line and "srun: error" not in line:
-            continue
-        for reason, pattern in _OVER:
-            if pattern.search(line):
-                return reason
-    return None
+def own_words(log: str) -> list[str]:
+    """Return the lines of a job's log that Slurm wrote, not the job."""
+    return [line for line in log.splitlines() if re.match(r"(?:slurmstepd|srun)\b.*: ", line)]
+
+
+def limit_exceeded(words: Iterable[str]) -> str | None:
+    """Return "no_memory" or "no_time" if Slurm's own words say that a job went over a limit."""
+    text = "\n".join(words)
+    return next((reason for reason, pattern in _OVER if pattern.search(text)), None)
 
 
 def _ask(command: list[str]) -> str:

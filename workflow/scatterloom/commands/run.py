@@ -233,7 +233,8 @@ def _explain(engine: Engine, graph: Graph, progress: Progress) -> int:
         elif failure.log in reported:
             code, reason = reported[failure.log].exit_code, [reported[failure.log].message]
         elif failure.batch_log is not None:
-            code, reason = 3, ["ended by the cluster; the log below may say why"]
+            said = failure.words_of_slurm()[-LOG_LINES_SHOWN:]
+            code, reason = 3, said or ["ended by the cluster, which does not say why"]
         codes.append(code)
         _tell(graph, failure, reason)
     if not failures:
