@@ -81,6 +81,13 @@ def machine_bytes() -> int:
     return whole
 
 
+def all_cores() -> int:
+    """Cores that this process may use."""
+    if hasattr(os, "sched_getaffinity"):
+        return len(os.sched_getaffinity(0))
+    return os.cpu_count() or 1
+
+
 def forget_peak() -> None:
     """Start the measurement of this process's peak memory anew, where the system can."""
     try:

@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING, Any
 from threadpoolctl import threadpool_limits
 
 import scatterloom
-from scatterloom.bulk.build import Spread, Values, average_cell
+from scatterloom.bulk.build import AVERAGE_BYTES, Spread, Values, average_cell
 from scatterloom.bulk.population import Population
 from scatterloom.errors import BadInput, EnvironmentProblem
 
@@ -23,6 +23,11 @@ if TYPE_CHECKING:
 
 ANSWER_S = 30.0
 """Time allowed to a scheduler to answer, and to have its first worker [s]."""
+
+
+def threads_for(cores: int, memory_bytes: float) -> int:
+    """Return how many averages may be at work at once, on so many cores in half of a memory."""
+    return max(1, min(cores, int(0.5 * memory_bytes / AVERAGE_BYTES)))
 
 
 def in_threads(number: int) -> Spread:
@@ -80,8 +85,8 @@ def on_cluster(address: str) -> Spread:
             except KilledWorker:
                 raise EnvironmentProblem(
                     f"the dask workers of {address} are killed at work; was memory short?\n"
-                    "  hint: an average needs about 600 MiB; give each worker fewer threads "
-                    "or more memory"
+                    f"  hint: an average takes {AVERAGE_BYTES >> 20} MiB beside the worker's "
+                    "own 200; give each worker fewer threads or more memory"
                 ) from None
 
     return spread
@@ -110,7 +115,8 @@ def _check_workers(client: Any, address: str) -> None:
     other = sorted(set(versions.values()) - {_version()})
     if other:
         raise EnvironmentProblem(
-            f"the dask workers of {address} run scatterloom {', '.join(other)}, this is {_version()}"
+            f"the dask workers of {address} run scatterloom {', '.join(other)}, "
+            f"this is {_version()}"
         )
 
 

@@ -17,7 +17,7 @@ from scatterloom.commands import _slurm
 from scatterloom.commands._parent import ask_kernel
 from scatterloom.commands._profile import Profile
 from scatterloom.graph import Graph
-from scatterloom.limits import SHARE_OF_MEMORY, machine_bytes
+from scatterloom.limits import SHARE_OF_MEMORY, all_cores, machine_bytes
 from scatterloom.store.turn import Turn, job_name
 
 GRACE_S = 10.0
@@ -191,13 +191,6 @@ class Engine:
             stream.seek(0, os.SEEK_END)
             stream.seek(max(0, stream.tell() - size))
             return stream.read().decode(errors="replace")
-
-
-def all_cores() -> int:
-    """Cores that this process may use."""
-    if hasattr(os, "sched_getaffinity"):
-        return len(os.sched_getaffinity(0))
-    return os.cpu_count() or 1
 
 
 def _placement(profile: Profile, cores: int | None, turn: Turn) -> list[str]:

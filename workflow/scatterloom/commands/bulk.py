@@ -6,6 +6,7 @@ import argparse
 import os
 
 from scatterloom.commands import COMMANDS
+from scatterloom.commands._arguments import positive
 
 NAME = "bulk"
 HELP = COMMANDS[NAME]
@@ -16,7 +17,10 @@ def configure(parser: argparse.ArgumentParser) -> None:
     parser.add_argument("config", metavar="CONFIG", help="campaign file (YAML)")
     parser.add_argument("--results", metavar="DIR", help="folder of all results")
     parser.add_argument(
-        "--threads", type=int, metavar="N", help="threads to use (default: all cores)"
+        "--threads",
+        type=positive,
+        metavar="N",
+        help="averages at work at once (default: as many as cores and memory allow)",
     )
     parser.add_argument(
         "--dask-scheduler",
@@ -33,9 +37,10 @@ def execute(args: argparse.Namespace) -> int:
     from scatterloom.bulk.bulkfile import COMMIT_FILE, write_bulk
     from scatterloom.bulk.listing import listing
     from scatterloom.bulk.population import populations_of
-    from scatterloom.bulk.spread import in_threads, on_cluster
+    from scatterloom.bulk.spread import in_threads, on_cluster, threads_for
     from scatterloom.campaign import load
     from scatterloom.errors import BadInput
+    from scatterloom.limits import all_cores, machine_bytes
     from scatterloom.store.layout import Layout, results_root
     from scatterloom.store.table import open_table
 
@@ -51,7 +56,7 @@ def execute(args: argparse.Namespace) -> int:
     if args.dask_scheduler:
         spread = on_cluster(args.dask_scheduler)
     else:
-        spread = in_threads(args.threads or os.cpu_count() or 1)
+        spread = in_threads(args.threads or threads_for(all_cores(), machine_bytes()))
     columns = build(table, populations, spread)
     if not write_bulk(layout.bulk, columns, table.attrs):
         # The rule graph compares times: an equal, older file is as good as a new one.

@@ -14,6 +14,7 @@ from types import FrameType
 from typing import TYPE_CHECKING
 
 from scatterloom.commands import COMMANDS
+from scatterloom.commands._arguments import positive
 
 if TYPE_CHECKING:
     from scatterloom.commands._engine import Engine, FailedRule
@@ -42,7 +43,7 @@ def configure(parser: argparse.ArgumentParser) -> None:
         "--results", metavar="DIR", help="folder of all results (default: results/ here)"
     )
     parser.add_argument(
-        "--cores", type=_positive, metavar="N", help="processor cores to use (default: all)"
+        "--cores", type=positive, metavar="N", help="processor cores to use (default: all)"
     )
     parser.add_argument(
         "--retry-failed", action="store_true", help="take up the cases that failed before"
@@ -51,7 +52,7 @@ def configure(parser: argparse.ArgumentParser) -> None:
         "--verify", action="store_true", help="read every finished file first, mend what is damaged"
     )
     parser.add_argument(
-        "--threads", type=_positive, default=1, metavar="N", help="threads of a job (default: 1)"
+        "--threads", type=positive, default=1, metavar="N", help="threads of a job (default: 1)"
     )
     parser.add_argument(
         "--profile",
@@ -60,13 +61,6 @@ def configure(parser: argparse.ArgumentParser) -> None:
         help="where the jobs run: laptop (this machine, the default), slurm, or a folder with "
         "a profile of the workflow engine",
     )
-
-
-def _positive(text: str) -> int:
-    value = int(text)
-    if value < 1:
-        raise argparse.ArgumentTypeError(f"{value} is below 1")
-    return value
 
 
 def execute(args: argparse.Namespace) -> int:
