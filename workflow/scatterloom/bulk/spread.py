@@ -8,6 +8,7 @@ ours is stored so.
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterable, Sequence
 from typing import TYPE_CHECKING, Any
 
@@ -20,6 +21,8 @@ from scatterloom.errors import BadInput, EnvironmentProblem
 
 if TYPE_CHECKING:
     import xarray
+
+_ADDRESS = re.compile(r"(?:tcp|tls|ucx|ws|wss)://(?:[\w.-]+|\[[0-9a-fA-F:]+\]):\d{1,5}")
 
 ANSWER_S = 30.0
 """Time allowed to a scheduler to answer, and to have its first worker [s]."""
@@ -56,11 +59,16 @@ def on_cluster(address: str) -> Spread:
     Raises
     ------
     BadInput
-        When called, if that is no address.
+        If that is no address.
     EnvironmentProblem
-        When called, if nobody answers there, if the workers run another version, or if one
+        When it spreads, if nobody answers there, if the workers run another version, or if one
         is killed.
     """
+
+    if not _ADDRESS.fullmatch(address):
+        raise BadInput(
+            f"{address!r} is not the address of a dask scheduler\n  hint: like tcp://host:8786"
+        )
 
     def spread(table: xarray.Dataset, cells: Sequence[tuple[Population, int]]) -> Iterable[Values]:
         from distributed import Client, KilledWorker
@@ -70,11 +78,6 @@ def on_cluster(address: str) -> Spread:
         except (OSError, TimeoutError) as error:
             raise EnvironmentProblem(
                 f"no dask scheduler answers at {address} ({_first_line(error)})"
-            ) from None
-        except ValueError as error:
-            raise BadInput(
-                f"{address!r} is not the address of a dask scheduler ({_first_line(error)})\n"
-                "  hint: like tcp://host:8786"
             ) from None
         with client:
             _check_workers(client, address)
