@@ -24,6 +24,7 @@ localrules:
     gather_table,
     make_bulk,
     make_exchange,
+    orient_particles,
     audit,
     make_figures,
     make_report,

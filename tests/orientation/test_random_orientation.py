@@ -4,16 +4,15 @@ from functools import lru_cache
 
 import numpy as np
 import pytest
-from scipy.special import sph_harm_y
 
 from lattice_kit import full_root, random_lattice
 from oracles import axial, mie
 from oracles.dense import DenseLattice
 from oracles.mueller import mueller
-from scatterloom.orientation.nodes import incidence_nodes
-from scatterloom.orientation.random import mueller_from_products, random_orientation
+from scatterloom.orientation.random import averages, mueller_from_products, random_orientation
+from scatterloom.orientation.rules import Reach, reach, rule
 from scatterloom.transition.level import solve_level
-from scatterloom.transition.matrix import efficiencies
+from scatterloom.transition.matrix import TransitionMatrix, efficiencies
 from transition_kit import exact_axial, exact_sphere, exact_spheroid, rotated
 
 ANGLES = np.array([0.0, 0.5, 10.0, 37.0, 60.0, 90.0, 123.4, 150.0, 179.0, 180.0])
@@ -118,47 +117,39 @@ def test_mueller_matrix_of_random_amplitudes():
 
 
 @pytest.mark.parametrize("symmetry", ["axial", "mirrors", "none"])
-@pytest.mark.parametrize("n_max", [1, 2, 5, 6])
-def test_nodes_average_harmonics_up_to_four_times_the_degree(symmetry, n_max):
-    # The mean of every spherical harmonic but the constant one vanishes. Those that a
-    # symmetric particle cannot have need not be averaged: odd ones and sines of azimuth
-    # for three mirror planes, all but the zonal ones for axial symmetry.
-    nodes = incidence_nodes(symmetry, n_max)
-    assert nodes.weight.sum() == pytest.approx(1.0, rel=1e-13)
-    assert np.all(nodes.weight > 0)
-    assert nodes.mirrored == (symmetry != "none")
-    step = 1 if symmetry == "none" else 2
-    for degree in range(step, 4 * n_max + 1, step):
-        orders = range(0, degree + 1, step) if symmetry != "axial" else (0,)
-        for order in orders:
-            values = sph_harm_y(degree, order, nodes.beta, nodes.phi)
-            if symmetry == "mirrors":
-                values = values.real
-            assert abs(nodes.weight @ values) < 1e-13, (degree, order)
-
-
-def test_one_direction_is_enough_for_a_sphere():
-    nodes = incidence_nodes("sphere", 9)
-    assert nodes.weight.tolist() == [1.0]
-    assert nodes.mirrored
-
-
-def test_unknown_symmetry_is_refused():
-    with pytest.raises(ValueError, match="unknown symmetry 'cube'"):
-        incidence_nodes("cube", 3)
-
-
-@pytest.mark.parametrize("symmetry", ["axial", "mirrors", "none"])
-def test_nodes_in_parts_are_the_same_nodes(symmetry, monkeypatch):
-    nodes = incidence_nodes(symmetry, 3)
-    for count in (1, 3, 1000):
-        parts = nodes.batches(count)
-        assert len(parts) == min(count, len(nodes.weight))
-        for name in ("beta", "phi", "weight"):
-            joined = np.concatenate([getattr(part, name) for part in parts])
-            np.testing.assert_array_equal(joined, getattr(nodes, name))
+def test_in_parts_and_at_once(symmetry, monkeypatch):
     transition = exact_spheroid(*SPHEROIDS[0], 5)
     whole = random_orientation(transition, symmetry, COSINE)
     monkeypatch.setattr("scatterloom.orientation.random._MOST_SAMPLES", 2000)
     parts = random_orientation(transition, symmetry, COSINE)
     np.testing.assert_allclose(parts, whole, atol=1e-13 * whole.max())
+
+
+@pytest.mark.parametrize("symmetry", ["axial", "none"])
+def test_combinations_are_averages_of_the_combined_matrix(symmetry):
+    one, other = (exact_spheroid(ratio, 1.5 + 0.01j, 1.5, 6) for ratio in (2.0, 1.4))
+    stack = np.stack([one.matrix, other.matrix])
+    weights = np.array([[1.0, 0.0], [-0.5, 1.5], [0.3, 0.4]])
+    at = rule(symmetry, reach(stack, one.labels))
+    found = averages(stack, one.labels, weights, at, COSINE)
+    for matrix, (a, b) in zip(found, weights, strict=True):
+        combined = TransitionMatrix(a * one.matrix + b * other.matrix, one.labels)
+        expected = random_orientation(combined, symmetry, COSINE)
+        np.testing.assert_allclose(matrix, expected, atol=1e-13 * expected.max())
+
+
+@pytest.mark.parametrize("symmetry", ["axial", "mirrors", "none"])
+def test_what_is_negligible_is_bounded(symmetry):
+    # Half the polar angles and less, an error below the products left out.
+    case = SPHEROIDS[0]
+    transition = exact_spheroid(*case, 10)
+    if symmetry == "none":
+        transition = rotated(transition, 0.7, 1.1, -0.4)
+    exact = random_orientation(transition, symmetry, COSINE)
+    limits = reach(transition.matrix[None], transition.labels, 1e-9)
+    at = rule(symmetry, limits)
+    assert at.beta.size < 0.6 * rule(symmetry, Reach(40, 20)).beta.size
+    stack, one = transition.matrix[None], np.ones((1, 1))
+    (short,) = averages(stack, transition.labels, one, at, COSINE)
+    error = np.abs(short - exact).max() / exact[:, 0, 0].max()
+    assert 0.0 < error < 1e-9

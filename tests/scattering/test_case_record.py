@@ -185,7 +185,7 @@ def test_widths_grow_with_what_went_wrong(exact, good):
 
 
 def same(one, other):
-    for name in one.__dataclass_fields__:
+    for name in one.__dataclass_fields__.keys() - {"transitions"}:  # kept in files of their own
         a, b = getattr(one, name), getattr(other, name)
         if isinstance(a, np.ndarray):
             np.testing.assert_array_equal(a, b)

@@ -74,15 +74,14 @@ def test_unknown_symmetry_is_refused():
         project(random_matrix(1), "cube")
 
 
-def test_truncation_leaves_out_the_higher_degrees():
+def test_a_cut_keeps_the_lower_degrees():
     whole = exact_spheroid(0.5, 1.4, 1.0, 6)
-    short = whole.truncated(4)
-    assert short.n_max == 4
-    _, labels = complex_from_real(4)
-    for name in ("kind", "degree", "order"):
-        np.testing.assert_array_equal(getattr(short.labels, name), getattr(labels, name))
-    np.testing.assert_array_equal(short.matrix, exact_spheroid(0.5, 1.4, 1.0, 4).matrix)
-    assert whole.truncated(6) is whole and whole.truncated(9) is whole
+    short = whole.cut(4)
+    low = whole.labels.degree <= 4
+    kept = short.matrix[np.ix_(low, low)]
+    np.testing.assert_array_equal(kept, exact_spheroid(0.5, 1.4, 1.0, 4).matrix)
+    assert not short.matrix[~low].any() and not short.matrix[:, ~low].any()
+    np.testing.assert_array_equal(whole.cut(6).matrix, whole.matrix)
 
 
 def test_symmetric_amplitudes_are_reciprocal():

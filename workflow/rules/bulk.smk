@@ -13,6 +13,17 @@ rule make_bulk:
         "{SCATTERLOOM} bulk {CAMPAIGN} > {log} 2>&1 || [ $? -eq 1 ]"
 
 
+rule orient_particles:
+    input:
+        "table.json",
+    output:
+        "oriented/oriented.json",
+    log:
+        "state/logs/orient.log",
+    shell:
+        "exec {SCATTERLOOM} orient {CAMPAIGN} > {log} 2>&1"
+
+
 rule make_exchange:
     input:
         "table.json",

@@ -38,6 +38,8 @@ GRAPH = open_graph()
 PRODUCTS = ["table.json", "audit.json", "figures/figures.json", "report.html"]
 if GRAPH.has_populations:
     PRODUCTS.append("bulk.zarr/commit.json")
+if GRAPH.has_orientations:
+    PRODUCTS.append("oriented/oriented.json")
 if GRAPH.has_exchange:
     PRODUCTS.append("exchange/exchange.json")
 

@@ -1,6 +1,7 @@
 # What a reader looks at: physical checks, figures, the report.
 
 BULK = ["bulk.zarr/commit.json"] if GRAPH.has_populations else []
+ORIENTED = ["oriented/oriented.json"] if GRAPH.has_orientations else []
 
 
 rule audit:
@@ -19,6 +20,7 @@ rule make_figures:
     input:
         "table.json",
         BULK,
+        ORIENTED,
     output:
         "figures/figures.json",
     log:

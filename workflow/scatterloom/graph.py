@@ -123,8 +123,21 @@ class Graph:
             if path.stem not in self.jobs:
                 path.unlink(missing_ok=True)
         outline_of(self).write()
+        if self.grid.keep_transitions:
+            self._forget_without_transitions()
         if not receipt_holds(layout):
             layout.receipt.unlink(missing_ok=True)
+
+    def _forget_without_transitions(self) -> None:
+        """Remove case files of jobs whose transition matrices were deleted: solved again."""
+        for name, job in self.jobs.items():
+            path = self.layout.case_file(name)
+            if not path.exists():
+                continue
+            wanted = [self.layout.solved_transitions(digest) for digest, _ in job.cases]
+            failed = {note.stem for note in self.layout.failed.glob("*.json")}
+            if any(not p.exists() and p.stem not in failed for p in wanted):
+                path.unlink()
 
     def drop_fields(self) -> None:
         """Remove the fields that a finished campaign has no more use for.

@@ -32,6 +32,11 @@ from scatterloom.store.fields import FieldFile, read_fields, write_fields
 from scatterloom.store.layout import Layout
 from scatterloom.store.library import CaseLibrary
 from scatterloom.store.progress import DONE, RUNNING, Heartbeat, write_heartbeat
+from scatterloom.store.transitions import (
+    StoredTransitions,
+    read_transitions,
+    write_transitions,
+)
 from scatterloom.transition.level import LevelResult
 
 HEARTBEAT_S = 0.5
@@ -187,6 +192,7 @@ class _Job:
         self.report = report
         self.cases: list[tuple[str, float]] = [(d, float(x)) for d, x in spec["cases"]]
         self._solved_some = False
+        self.keep_transitions = bool(spec.get("keep_transitions"))
 
     def run(self, last_attempt: bool) -> None:
         keep_fields = self.task.kind == "anchors"
@@ -240,6 +246,12 @@ class _Job:
         """Keep a case just solved, for this campaign and for others."""
         self.report.check()
         path = self.layout.solved_case(case.digest)
+        if self.keep_transitions and case.transitions is not None and case.status != FAILED:
+            # First, so that a case that is there has its matrices.
+            stored = StoredTransitions(
+                case.digest, self.task.shape.symmetry, case.levels, case.transitions
+            )
+            write_transitions(self.layout.solved_transitions(case.digest), stored)
         write_records(path, [case])
         note = self.layout.failed / f"{case.digest}.json"
         if case.status == FAILED:
@@ -258,6 +270,8 @@ class _Job:
             (kept,) = read_records(path)
             if kept.digest != digest:
                 raise IntegrityError(f"{path}: holds case {kept.digest}, not its own")
+            if self.keep_transitions and kept.status != FAILED:
+                read_transitions(self.layout.solved_transitions(digest))
         except (IntegrityError, ValueError) as error:
             print(f"{self.task.name}: {error}; the case is solved again", file=sys.stderr)
             return None
@@ -265,7 +279,8 @@ class _Job:
 
     def _reused(self, digest: str, x: float) -> CaseRecord | None:
         """Record from the case library, kept in this campaign as well, or None."""
-        if self.library is None:
+        if self.library is None or self.keep_transitions:
+            # The library has no transition matrices.
             return None
         found = self.library.find(self.spec, x, digest)
         if found is not None:

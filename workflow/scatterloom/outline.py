@@ -124,6 +124,11 @@ class Outline:
         return bool(self.campaign.model.populations)
 
     @property
+    def has_orientations(self) -> bool:
+        """Whether there are tables of oriented particles to make."""
+        return bool(self.campaign.model.orientations)
+
+    @property
     def has_exchange(self) -> bool:
         """Whether populations can be expanded: scattering angles over the whole sphere."""
         return exchange_possible(self.campaign)

@@ -28,7 +28,8 @@ WANTED_COVERAGE = 0.99
 def check_names(document: Document) -> list[Problem]:
     """Check that names are unique and that whatever is referred to exists."""
     tree = document.tree
-    problems = [*_repeated(document, "particles"), *_repeated(document, "populations")]
+    sections = ("particles", "populations", "orientations")
+    problems = [problem for section in sections for problem in _repeated(document, section)]
     materials = tree.get("materials")
     particles = [name for _, name in _texts(document, "particles", "name")]
     if isinstance(materials, dict):
@@ -47,6 +48,14 @@ def check_names(document: Document) -> list[Problem]:
                     hint = nearest(name, particles)
                     found = f"{name}: {document.show(path)}"
                     problems.append(document.problem(path, message, found, hint, at_key=True))
+        for position, entry in enumerate(_entries(document, "orientations")):
+            given = entry.get("particles")
+            for place, name in enumerate(given if isinstance(given, list) else ()):
+                if isinstance(name, str) and name not in particles:
+                    path = ("orientations", position, "particles", place)
+                    message = f"particle '{name}' is not defined under particles"
+                    hint = nearest(name, particles)
+                    problems.append(document.problem(path, message, document.show(path), hint))
     return problems
 
 

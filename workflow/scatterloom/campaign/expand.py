@@ -45,6 +45,8 @@ class Grid:
         Predicted time at which cases are batched to jobs.
     anchor_spacing : float or None
         Override of the largest gap in size parameter between anchors.
+    keep_transitions : bool
+        Whether transition matrices are kept for averages over other orientations.
     """
 
     campaign: str
@@ -59,6 +61,7 @@ class Grid:
     core_refractive_index: NDArray[np.complex128]
     job_seconds: float
     anchor_spacing: float | None
+    keep_transitions: bool = False
 
 
 def expand(campaign: Campaign) -> Grid:
@@ -108,6 +111,7 @@ def expand(campaign: Campaign) -> Grid:
         core_refractive_index=core,
         job_seconds=model.solver.job_seconds,
         anchor_spacing=model.solver.anchor_spacing,
+        keep_transitions=model.solver.keep_transitions or bool(model.orientations),
     )
 
 

@@ -12,6 +12,7 @@ from pydantic import field_validator, model_validator
 
 from scatterloom.campaign.grids import AngleGrid, SizeGrid, ascending
 from scatterloom.campaign.materials import DENSITY_ADVICE, Material, Medium, density
+from scatterloom.campaign.orientations import Orientation
 from scatterloom.campaign.populations import Population
 from scatterloom.campaign.sections import NAME_FORM, Name, Section, check_names, setting, wrong
 from scatterloom.campaign.shapes import Shape
@@ -205,6 +206,12 @@ class Solver(Section):
         "SCATTERLOOM_CASE_REUSE (on or off) goes first.",
         True,
     )
+    keep_transitions: bool = setting(
+        "Whether the transition matrices of all cases are kept, so that distributions of "
+        "orientation can be added later without solving again; kept anyway where `orientations` "
+        "names some.",
+        False,
+    )
     memory_gib: float | None = setting(
         "Memory allowed to one job. A case that needs more is recorded as failed before it "
         "starts; nine tenths of the machine's memory if missing.",
@@ -292,8 +299,15 @@ class CampaignModel(Section):
     angles_deg: AngleGrid = setting(
         "Scattering angles, a list or a rule; editing them never solves anything again."
     )
-    orientation: Literal["random"] = setting("Orientation of the particles.", "random")
+    orientation: Literal["random"] = setting(
+        "Orientation of the particles in the main table.", "random"
+    )
     accuracy: AccuracyGoal = setting("Accuracy asked; the defaults suit most uses.", AccuracyGoal())
+    orientations: list[Orientation] = setting(
+        "Distributions of orientation beside the random one; each makes a table of its own.",
+        [],
+        max_length=100,
+    )
     populations: list[Population] = setting("Mixtures for the bulk table.", [], max_length=1000)
     solver: Solver = setting("Expert overrides.", Solver())
     exchange: Exchange = setting("Files for radiative transfer.", Exchange())

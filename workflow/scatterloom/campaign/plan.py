@@ -53,6 +53,8 @@ class Job:
         Up to two anchors on either side of each span of the job, ascending.
     seconds : float
         Predicted time on one core; no part of the name or the specification.
+    keep_transitions : bool
+        Whether transition matrices are kept for averages over other orientations.
     """
 
     name: str
@@ -68,6 +70,7 @@ class Job:
     anchors: tuple[tuple[str, float, str], ...]
     seconds: float
     inner_indices: tuple[complex, ...] = ()
+    keep_transitions: bool = False
 
     def spec(self) -> dict[str, Any]:
         """Return everything a solver job needs, as values that JSON can hold."""
@@ -120,7 +123,7 @@ def plan(grid: Grid) -> list[Job]:
                 "or wavelengths"
             )
         seconds *= 1.5
-    return [job for segment in segments for job in _jobs(segment, seconds)]
+    return [job for segment in segments for job in _jobs(segment, seconds, grid.keep_transitions)]
 
 
 def _ladders(grid: Grid) -> list[list[Case]]:
@@ -227,11 +230,11 @@ def _count(segments: Sequence[_Segment], seconds: float) -> int:
     )
 
 
-def _jobs(segment: _Segment, seconds: float) -> Iterator[Job]:
+def _jobs(segment: _Segment, seconds: float, keep: bool) -> Iterator[Job]:
     placed: list[tuple[str, float, str]] = []  # every anchor with the job that solves it
     for batch in _anchor_batches(segment, seconds):
         cost = math.fsum(size.cold for size in batch)
-        job = _job("anchors", segment, batch, (), cost)
+        job = _job("anchors", segment, batch, (), cost, keep)
         placed += [(size.digest, size.x, job.name) for size in batch]
         yield job
     for pieces in _span_batches(segment, seconds):
@@ -242,7 +245,8 @@ def _jobs(segment: _Segment, seconds: float) -> Iterator[Job]:
         high = max(last + 1 + ANCHORS_EACH_SIDE, 2 * ANCHORS_EACH_SIDE)
         around = tuple(placed[low:high])
         sizes = [size for _, piece in pieces for size in piece]
-        yield _job("span", segment, sizes, around, math.fsum(size.warm for size in sizes))
+        cost = math.fsum(size.warm for size in sizes)
+        yield _job("span", segment, sizes, around, cost, keep)
 
 
 def _job(
@@ -251,6 +255,7 @@ def _job(
     sizes: Sequence[_Size],
     anchors: tuple[tuple[str, float, str], ...],
     seconds: float,
+    keep_transitions: bool,
 ) -> Job:
     case = segment.case
     tolerance = case.overrides.tolerance
@@ -270,6 +275,7 @@ def _job(
         anchors=anchors,
         seconds=seconds,
         inner_indices=case.inner_indices,
+        keep_transitions=keep_transitions,
     )
     digest = hashlib.sha256(canonical_json(_content(job)).encode()).hexdigest()[:16]
     name = f"{kind}-{case.shape['kind']}-{digest}"
@@ -289,4 +295,6 @@ def _content(job: Job) -> dict[str, Any]:
         "needs": list(job.needs),
         "anchors": [list(entry) for entry in job.anchors],
         "numerics_revision": effort.NUMERICS_REVISION,
+        # Left out where it is not: names of jobs stay as they were.
+        **({"keep_transitions": True} if job.keep_transitions else {}),
     }

@@ -16,6 +16,7 @@ COMMANDS = {
     "unpack": "unpack a campaign from somebody else, and run it if wanted",
     "figures": "draw the figures of a campaign",
     "bulk": "average the table over the populations of a campaign",
+    "orient": "average solved cases over the orientations a campaign names",
     "exchange": "write the populations' expansion coefficients for radiative transfer",
     "compare": "compare a measured scattering matrix with a campaign",
     "report": "write the report of a campaign as one HTML page",

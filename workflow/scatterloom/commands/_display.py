@@ -20,6 +20,8 @@ PHASES = {
     "solve_span": "filling in between anchors",
     "gather_table": "gathering the table",
     "make_bulk": "averaging over populations",
+    "orient_particles": "averaging over orientations",
+    "make_exchange": "expanding for radiative transfer",
     "audit": "checking against the laws of physics",
     "make_figures": "drawing figures",
     "make_report": "writing the report",

@@ -20,6 +20,7 @@ def configure(parser: argparse.ArgumentParser) -> None:
 def execute(args: argparse.Namespace) -> int:
     """Draw everything that can be drawn; what was left out is said on standard error."""
     from scatterloom.bulk.bulkfile import bulk_of
+    from scatterloom.bulk.oriented_table import oriented_of
     from scatterloom.bulk.population import populations_of
     from scatterloom.campaign import load
     from scatterloom.figures.make import make_figures
@@ -31,7 +32,11 @@ def execute(args: argparse.Namespace) -> int:
     table = open_table(layout.table)
     populations = populations_of(campaign.model)
     bulk = bulk_of(layout.bulk, table, populations) if populations else None
-    entries, notes = make_figures(table, layout.figures, bulk, populations)
+    oriented = {
+        entry.name: oriented_of(layout.oriented / f"{entry.name}.zarr", table)
+        for entry in campaign.model.orientations
+    }
+    entries, notes = make_figures(table, layout.figures, bulk, populations, oriented)
     for note in notes:
         print(f"scatterloom: {note}", file=sys.stderr)
     print(f"{layout.figures}: {len(entries)} figures")

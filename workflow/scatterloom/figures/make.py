@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from functools import partial
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -13,6 +13,7 @@ from scatterloom.bulk.population import Population
 from scatterloom.figures.curves import matrix_curves
 from scatterloom.figures.effort import product_counts
 from scatterloom.figures.maps import size_angle_map
+from scatterloom.figures.oriented import direction_map
 from scatterloom.figures.overlay import lidar_scatter, polar_intensity, populations_matrix
 from scatterloom.figures.overview import FEWEST_WAVELENGTHS, audit_map, size_wavelength_map
 from scatterloom.figures.picture import ENDINGS, INDEX, Picture, save, style, write_index
@@ -26,12 +27,16 @@ WAVELENGTHS_SHOWN = 3
 LADDERS_SHOWN = 12
 """Pairs of particle and wavelength that are drawn; a report with more would not be read."""
 
+MAPS_SHOWN = 3
+"""Particles of which a map of directions is drawn for each distribution of orientation."""
+
 
 def make_figures(
     table: xarray.Dataset,
     folder: Path,
     bulk: xarray.Dataset | None = None,
     populations: Sequence[Population] = (),
+    oriented: Mapping[str, xarray.Dataset] | None = None,
 ) -> tuple[list[dict[str, str]], list[str]]:
     """Draw every figure and write the index last.
 
@@ -46,6 +51,8 @@ def make_figures(
         Bulk properties of the table.
     populations : sequence of Population
         The populations of `bulk`, in its order.
+    oriented : mapping of str to xarray.Dataset
+        Tables of oriented particles by the name of their distribution.
 
     Returns
     -------
@@ -64,7 +71,12 @@ def make_figures(
     entries: list[dict[str, str]] = []
     notes: list[str] = []
     with style():
-        for draw in _plans(table, bulk, populations, notes):
+        maps: list[Callable[[], Picture]] = [
+            partial(direction_map, content, name, particle, 0)
+            for name, content in (oriented or {}).items()
+            for particle in range(min(content.sizes["particle"], MAPS_SHOWN))
+        ]
+        for draw in (*_plans(table, bulk, populations, notes), *maps):
             try:
                 picture = draw()
             except ValueError as reason:

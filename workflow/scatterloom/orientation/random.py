@@ -1,111 +1,170 @@
-"""Scattering matrix of randomly oriented particles from the transition matrix."""
+"""Scattering matrices of randomly oriented particles from transition matrices."""
 
 from __future__ import annotations
 
+from functools import lru_cache
+
 import numpy as np
 from numpy.typing import NDArray
-from scipy.sparse import csr_array
-from scipy.sparse.csgraph import connected_components
+from scipy.linalg.blas import zherk
 
-from scatterloom.orientation.nodes import IncidenceNodes, incidence_nodes
+from scatterloom.orientation.rules import Rule, reach, rule
 from scatterloom.transition.matrix import TransitionMatrix
 from scatterloom.waves.angular import axial_plane_wave, polar_functions, wigner_d
+from scatterloom.waves.basis import WaveLabels
 
 _MOST_SAMPLES = 4_000_000
 """Complex amplitudes held at a time (64 MB, and a few copies)."""
 
-
-def _groups(matrix: NDArray[np.complex128]) -> list[NDArray[np.int64]]:
-    """Waves that the matrix connects; symmetries leave most of its entries exactly zero."""
-    count, group = connected_components(csr_array(matrix != 0.0), directed=False)
-    order = np.argsort(group, kind="stable")
-    return np.split(order, np.cumsum(np.bincount(group, minlength=count))[:-1])
+HANDS = (1, -1)
+"""Handedness s of the incident wave (x + i s y)/sqrt 2, and order of its waves along the beam."""
 
 
-def _scattered_in_beam_frame(
-    transition: TransitionMatrix, nodes: IncidenceNodes
-) -> tuple[NDArray, NDArray]:
-    """Scattered coefficients for circular incidence along +z of the beam frame.
+@lru_cache(maxsize=8)
+def turn_functions(n_max: int, beta: bytes) -> list[NDArray[np.float64]]:
+    """Rotation functions d^n_{m'm}(beta) of every degree (degree 0 is empty)."""
+    angles = np.frombuffer(beta)
+    return [np.empty(0), *(wigner_d(n, angles) for n in range(1, n_max + 1))]
+
+
+@lru_cache(maxsize=32)
+def outgoing_functions(n_max: int, cosine: bytes) -> NDArray[np.float64]:
+    """Angular functions tau + o pi for helicity o = +1, -1: (order, helicity, angle, degree).
+
+    A wave of one degree and order sends (tau + o pi) (electric + o magnetic) into circular
+    polarization o, up to (-i)^n.
+    """
+    pi, tau = polar_functions(n_max, np.frombuffer(cosine))
+    both = np.stack([tau + pi, tau - pi])  # (helicity, degree, order, angle)
+    return np.ascontiguousarray(both.transpose(2, 0, 3, 1))
+
+
+def sorted_rows(labels: WaveLabels) -> NDArray[np.int64]:
+    """Waves in order of degree, order, kind."""
+    return np.lexsort((labels.kind, labels.order, labels.degree))
+
+
+def incident_waves(labels: WaveLabels, turns: list[NDArray]) -> NDArray[np.complex128]:
+    """Coefficients for circular incidence at azimuth zero: (n_wave, hand, n_beta)."""
+    n_beta = len(turns[1])
+    axial = axial_plane_wave(labels.n_max)
+    out = np.empty((len(labels.kind), 2, n_beta), dtype=np.complex128)
+    for n in range(1, labels.n_max + 1):
+        chosen = np.flatnonzero(labels.degree == n)
+        kind, order = labels.kind[chosen], labels.order[chosen]
+        factor = np.stack(axial)[kind, :, n]  # (wave, hand)
+        for hand, s in enumerate(HANDS):
+            out[chosen, hand] = factor[:, hand, None] * turns[n][:, order + n, n + s].T
+    return out
+
+
+def _scattered(
+    matrices: NDArray[np.complex128], labels: WaveLabels, at: Rule, turns: list[NDArray]
+) -> NDArray[np.complex128]:
+    """Scattered coefficients by turn q in the particle frame: (n_beta, n_wave, q, hand, matrix).
+
+    Waves are in the order of `sorted_rows`. Element q is the part that varies with the azimuth
+    of incidence as exp(i q phi), put together from incident waves of order m - q.
+    """
+    rows = sorted_rows(labels)
+    order = labels.order[rows]
+    place = np.full(4 * labels.n_max + 1, -1)
+    place[at.turn + 2 * labels.n_max] = np.arange(at.turn.size)
+    incident = incident_waves(labels, turns)
+    n_matrix, n_beta = len(matrices), at.beta.size
+    shape = (n_beta, rows.size, at.turn.size, 2, n_matrix)
+    out = np.zeros(shape, dtype=np.complex128)
+    for m in range(-labels.n_max, labels.n_max + 1):
+        columns = np.flatnonzero(labels.order == m)
+        turn = place[order - m + 2 * labels.n_max]
+        kept = np.flatnonzero(turn >= 0)
+        block = matrices[:, rows[kept][:, None], columns].reshape(-1, columns.size)
+        part = block @ incident[columns].reshape(columns.size, -1)
+        part = part.reshape(n_matrix, kept.size, 2, n_beta)
+        out[:, kept, turn[kept]] = part.transpose(3, 1, 2, 0)
+    return out
+
+
+def _in_beam_frame(
+    scattered: NDArray[np.complex128], n_max: int, turns: list[NDArray]
+) -> NDArray[np.complex128]:
+    """Waves of the beam frame that make helicity o: (order, helicity, degree, sample).
+
+    A sample is (n_beta, q, hand, matrix).
+    """
+    n_beta, _, n_turn, _, n_matrix = scattered.shape
+    shape = (2 * n_max + 1, 2, n_max + 1, n_beta, n_turn, 2, n_matrix)
+    out = np.zeros(shape, dtype=np.complex128)
+    first = 0
+    for n in range(1, n_max + 1):
+        count = 2 * n + 1
+        part = scattered[:, first : first + 2 * count]
+        first += 2 * count
+        # A real rotation acts on real and imaginary parts alike.
+        flat = part.reshape(n_beta, count, -1).view(np.float64)
+        back = turns[n].transpose(0, 2, 1) @ flat
+        waves = back.view(np.complex128).reshape(n_beta, count, 2, n_turn, 2, n_matrix)
+        waves = waves.transpose(2, 1, 0, 3, 4, 5) * (-1j) ** n
+        here = slice(n_max - n, n_max + n + 1)
+        out[here, 0, n] = waves[1] + waves[0]
+        out[here, 1, n] = waves[1] - waves[0]
+    return out.reshape(2 * n_max + 1, 2, n_max + 1, -1)
+
+
+def _products(
+    matrices: NDArray[np.complex128],
+    labels: WaveLabels,
+    at: Rule,
+    cosine: NDArray[np.float64],
+) -> NDArray[np.complex128]:
+    """Averages of products of amplitudes of all pairs of matrices.
+
+    complex128 (n_angle, 4 n_matrix, 4 n_matrix), each index (helicity, hand, matrix).
+    """
+    n_max, n_matrix, n_angle = labels.n_max, len(matrices), cosine.size
+    turns = turn_functions(n_max, at.beta.tobytes())
+    scattered = _scattered(matrices, labels, at, turns)
+    scattered *= np.sqrt(np.outer(at.weight, at.turn_weight))[:, None, :, None, None]
+    waves = _in_beam_frame(scattered, n_max, turns)
+    outgoing = outgoing_functions(n_max, cosine.tobytes())
+    flat = (outgoing @ waves.view(np.float64)).view(np.complex128)
+    # The amplitude at azimuth phi of the scattering plane varies as exp(i mu phi),
+    # mu = m - s for handedness s; the average over phi is a sum over mu (Parseval).
+    seen = flat.reshape(2 * n_max + 1, 2, n_angle, -1, 2, n_matrix)
+    shape = (n_angle, 2 * n_max + 3, seen.shape[3], 2, 2, n_matrix)
+    sample = np.zeros(shape, dtype=np.complex128)
+    for hand, s in enumerate(HANDS):
+        sample[:, 1 - s : 2 * n_max + 2 - s, :, :, hand] = seen[..., hand, :].transpose(
+            2, 0, 3, 1, 4
+        )
+    # Only the upper triangle is computed.
+    half = np.stack([zherk(1.0, s.reshape(-1, 4 * n_matrix).T) for s in sample])
+    return half + np.triu(half, 1).conj().transpose(0, 2, 1)
+
+
+_FROM_HELICITY = np.array([[0.5, 0.5], [-0.5j, 0.5j]])
+"""Parallel and perpendicular scattered component from the parts of helicity +1 and -1."""
+
+_FROM_HANDS = np.array([[1.0, 1.0], [1j, -1j]]) / np.sqrt(2.0)
+"""Parallel and perpendicular incidence from the two circular ones: V_s = S_par - i s S_perp."""
+
+
+TO_LINEAR = np.einsum("po,qh->pqoh", _FROM_HELICITY, _FROM_HANDS).reshape(4, 4)
+"""Amplitudes by (parallel or perpendicular scattered, incident) from those by (helicity, hand).
+
+In the convention of Bohren & Huffman 1983, eq. 3.12, up to a common phase.
+"""
+
+
+def linear_products(products: NDArray[np.complex128]) -> NDArray[np.complex128]:
+    """Products (..., 4, 4) of amplitudes by helicity and hand as those of linear components.
 
     Returns
     -------
-    magnetic, electric : complex128 (n_max + 1, 2 n_max + 1, n_node, 2)
-        Degree, order + n_max, node, handedness (+1, -1).
+    complex128 (..., 2, 2, 2, 2)
     """
-    labels, n_max = transition.labels, transition.n_max
-    n_node = len(nodes.beta)
-    axial = axial_plane_wave(n_max)
-    rows = [
-        [np.flatnonzero((labels.kind == k) & (labels.degree == n)) for n in range(n_max + 1)]
-        for k in (0, 1)
-    ]
-    rotations: list[NDArray] = [np.empty(0)]
-    incident = np.zeros((len(labels.kind), n_node, 2), dtype=np.complex128)
-    for n in range(1, n_max + 1):
-        turn = np.exp(-1j * np.arange(-n, n + 1)[:, None] * nodes.phi)  # (m', node)
-        rotation = turn.T[:, :, None] * wigner_d(n, nodes.beta)  # (node, m', m)
-        rotations.append(rotation)
-        for kind in (0, 1):
-            for hand, m in enumerate((1, -1)):
-                # Rows of one kind and degree are sorted by order.
-                incident[rows[kind][n], :, hand] = axial[kind][hand, n] * rotation[:, :, n + m].T
-    scattered = np.empty_like(incident)
-    for group in _groups(transition.matrix):
-        part = incident[group].reshape(len(group), 2 * n_node)
-        block = transition.matrix[np.ix_(group, group)]
-        scattered[group] = (block @ part).reshape(len(group), n_node, 2)
-    out = np.zeros((2, n_max + 1, 2 * n_max + 1, n_node, 2), dtype=np.complex128)
-    for n in range(1, n_max + 1):
-        for kind in (0, 1):
-            part = scattered[rows[kind][n]]  # (m', node, hand)
-            out[kind, n, n_max - n : n_max + n + 1] = np.einsum(
-                "jab,ajh->bjh", rotations[n].conj(), part
-            )
-    return out[0], out[1]
-
-
-def _coherency(
-    transition: TransitionMatrix, nodes: IncidenceNodes, cosine: NDArray[np.float64]
-) -> NDArray[np.complex128]:
-    """Averages <S_a S_b*> over orientation: complex128 (n_angle, 2, 2, 2, 2).
-
-    Indices: scattered component, incident component (parallel, perpendicular) of the
-    first amplitude, then of the conjugate one, in the convention of Bohren & Huffman
-    1983, eq. 3.12, up to a common phase.
-    """
-    n_max = transition.n_max
-    magnetic, electric = _scattered_in_beam_frame(transition, nodes)
-    pi, tau = polar_functions(n_max, cosine)
-    degree = np.arange(n_max + 1)
-    outgoing_m = (-1j) ** (degree + 1)
-    outgoing_e = (-1j) ** degree
-    n_angle, n_node = len(cosine), len(nodes.beta)
-    # Amplitude in the scattering plane at azimuth phi varies as exp(i mu phi),
-    # mu = m - s for handedness s; the average over phi is a sum over mu (Parseval).
-    wave = np.zeros((2 * n_max + 3, n_angle, 2, n_node, 2), dtype=np.complex128)
-    for m in range(-n_max, n_max + 1):
-        n = degree[max(1, abs(m)) :]
-        p, t = pi[n, n_max + m].T, tau[n, n_max + m].T  # (angle, degree)
-        mag = outgoing_m[n, None, None] * magnetic[n, n_max + m]
-        ele = outgoing_e[n, None, None] * electric[n, n_max + m]
-        flat = (len(n), n_node * 2)
-        mag, ele = mag.reshape(flat), ele.reshape(flat)
-        theta = 1j * (p @ mag) + t @ ele
-        azimuth = -(t @ mag) + 1j * (p @ ele)
-        shape = (n_angle, n_node, 2)
-        for hand, s in enumerate((1, -1)):
-            mu = m - s + n_max + 1
-            wave[mu, :, 0, :, hand] = theta.reshape(shape)[..., hand]
-            wave[mu, :, 1, :, hand] = -azimuth.reshape(shape)[..., hand]
-    # Circular to linear incidence: V_s = S_par - i s S_perp (both times sqrt 2).
-    plus, minus = wave[..., 0], wave[..., 1]
-    linear = np.stack([plus + minus, 1j * (plus - minus)], axis=-1) / np.sqrt(2.0)
-    # (mu, angle, scattered, node, incident) -> per angle a tall matrix of samples
-    sample = np.moveaxis(linear, 1, 0) * np.sqrt(nodes.weight)[:, None]
-    sample = np.ascontiguousarray(np.moveaxis(sample, 2, 3))
-    sample = sample.reshape(n_angle, (2 * n_max + 3) * n_node, 4)
-    product = sample.transpose(0, 2, 1) @ sample.conj()
-    return product.reshape(n_angle, 2, 2, 2, 2)
+    changed = TO_LINEAR @ products @ TO_LINEAR.conj().T
+    return changed.reshape(*products.shape[:-2], 2, 2, 2, 2)
 
 
 def mueller_from_products(product: NDArray[np.complex128]) -> NDArray[np.float64]:
@@ -168,13 +227,46 @@ def random_orientation(
         Differential scattering cross section times k^2 in the 11 element. The
         average is exact for the truncation of the transition matrix.
     """
-    nodes = incidence_nodes(symmetry, transition.n_max)
+    exact = rule(symmetry, reach(transition.matrix[None], transition.labels))
     at = np.asarray(cosine, dtype=np.float64)
-    samples = (2 * transition.n_max + 3) * at.size * 4
-    batches = -(-samples * nodes.weight.size // _MOST_SAMPLES)
-    product = sum(_coherency(transition, part, at) for part in nodes.batches(batches))
-    matrix = mueller_from_products(np.asarray(product))
-    if nodes.mirrored:
-        matrix[:, :2, 2:] = 0.0
-        matrix[:, 2:, :2] = 0.0
-    return matrix
+    return averages(transition.matrix[None], transition.labels, np.ones((1, 1)), exact, at)[0]
+
+
+def averages(
+    matrices: NDArray[np.complex128],
+    labels: WaveLabels,
+    weights: NDArray[np.float64],
+    at: Rule,
+    cosine: NDArray[np.float64],
+) -> NDArray[np.float64]:
+    """Averaged Mueller matrices of linear combinations of transition matrices.
+
+    Amplitudes are linear in the transition matrix, so those of a few matrices serve any
+    number of combinations.
+
+    Parameters
+    ----------
+    matrices : complex128 (n_matrix, n_wave, n_wave)
+    labels : WaveLabels
+    weights : float64 (n_combination, n_matrix)
+    at : Rule
+        For the symmetry and the reach of all of them.
+    cosine : float64 (n_angle,)
+        Cosine of the scattering angle.
+
+    Returns
+    -------
+    float64 (n_combination, n_angle, 4, 4)
+        As `random_orientation` returns them.
+    """
+    n_matrix = len(matrices)
+    samples = (2 * labels.n_max + 3) * cosine.size * 4 * n_matrix * at.turn.size
+    parts = at.batches(-(-samples * at.beta.size // _MOST_SAMPLES))
+    total = sum(_products(matrices, labels, part, cosine) for part in parts)
+    pairs = np.asarray(total).reshape(cosine.size, 4, n_matrix, 4, n_matrix)
+    combined = np.einsum("vb,txbyc,vc->vtxy", weights, pairs, weights, optimize=True)
+    out = np.stack([mueller_from_products(linear_products(products)) for products in combined])
+    if at.mirrored:
+        out[..., :2, 2:] = 0.0
+        out[..., 2:, :2] = 0.0
+    return out

@@ -11,11 +11,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from scatterloom.scattering import error_bars, record
-from scatterloom.scattering.error_bars import SOLVER, TRUNCATION
-from scatterloom.scattering.extrapolate import Fit, combine, fits
-from scatterloom.scattering.observables import Observables, observe
+from scatterloom.scattering.error_bars import TRUNCATION
+from scatterloom.scattering.extrapolate import fits
+from scatterloom.scattering.observables import Observables, observe_combinations
+from scatterloom.scattering.variants import Variants, variants_of
 from scatterloom.transition.level import LevelResult
-from scatterloom.transition.matrix import TransitionMatrix
 
 
 @dataclass(frozen=True)
@@ -45,32 +45,13 @@ class _Variant:
     absorption: float
 
 
-def _variants(
-    levels: Sequence[LevelResult], cells: Sequence[int], symmetry: str, size_parameter: float
+def _observed(
+    variants: Variants, levels: Sequence[LevelResult], symmetry: str, size_parameter: float
 ) -> list[_Variant]:
-    rivals = fits(cells)
-    corrected = [level.transition for level in levels]
-    plain = [level.uncorrected for level in levels]
-    absorption = np.array([level.absorption_efficiency for level in levels])
-
-    def variant(
-        name: str, cause: str, fit: Fit, transitions: Sequence[TransitionMatrix], cut: int = 0
-    ) -> _Variant:
-        transition = combine(transitions, fit)
-        if cut:
-            transition = transition.truncated(transition.n_max - cut)
-        return _Variant(
-            name,
-            cause,
-            observe(transition, symmetry, size_parameter),
-            float(fit.weights @ absorption),
-        )
-
-    out = [variant(fit.name, fit.cause, fit, corrected) for fit in rivals]
-    out.append(variant("without the last correction", SOLVER, rivals[0], plain))
-    if corrected[0].n_max > 1:
-        out.append(variant("one degree less", TRUNCATION, rivals[0], corrected, 1))
-    return out
+    results = observe_combinations(variants.sources, variants.weights, symmetry, size_parameter)
+    absorbed = variants.level_weights @ [level.absorption_efficiency for level in levels]
+    rows = zip(variants.names, variants.causes, results, absorbed, strict=True)
+    return [_Variant(name, cause, result, float(power)) for name, cause, result, power in rows]
 
 
 def _scalar_values(variant: _Variant) -> dict[str, float]:
@@ -114,12 +95,7 @@ def _scalars(
 
 
 def _expansions(variants: Sequence[_Variant]) -> NDArray[np.float64]:
-    """Coefficients of all variants, padded with zeros to one length."""
-    longest = max(v.result.expansion.shape[0] for v in variants)
-    out = np.zeros((len(variants), longest, 4, 4))
-    for i, variant in enumerate(variants):
-        out[i, : variant.result.expansion.shape[0]] = variant.result.expansion
-    return out
+    return np.stack([variant.result.expansion for variant in variants])
 
 
 def _flags(
@@ -189,7 +165,8 @@ def combine_levels(
         digest, shape, start, products, cold_products_estimate, wall_seconds.
     """
     index, *inner = indices if isinstance(indices, Sequence) else [indices]
-    variants = _variants(levels, cells, symmetry, size_parameter)
+    made = variants_of(levels, cells)
+    variants = _observed(made, levels, symmetry, size_parameter)
     best = variants[0]
     fit = fits(cells)[0]
     amplification = float(np.abs(fit.weights).sum())
@@ -237,6 +214,7 @@ def combine_levels(
         variants=tuple(v.name for v in variants),
         causes=causes,
         model_error=model,
+        transitions=made,
         **identity,
     )
     flags = _flags(out, asked, levels, spacing * size_parameter)

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import json
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 
 from scatterloom.scattering.error_bars import BEST, matrix_half_widths, matrix_model_share
 from scatterloom.scattering.expansion import synthesize
+from scatterloom.scattering.variants import Variants
 
 MISSING, SOLVED, SOLVED_WITH_WARNING, FAILED = range(4)
 
@@ -123,6 +124,8 @@ class CaseRecord:
     causes: tuple[str, ...]
     model_error: float
     inner_indices: tuple[complex, ...] = ()
+    transitions: Variants | None = field(default=None, compare=False, repr=False)
+    """The transition matrices, of a case just solved; not part of what is written."""
 
     @property
     def indices(self) -> tuple[complex, ...]:

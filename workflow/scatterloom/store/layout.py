@@ -110,6 +110,11 @@ class Layout:
         return self.state / "cases"
 
     @property
+    def transitions(self) -> Path:
+        """Transition matrices of solved cases, by digest, where they are kept."""
+        return self.state / "transitions"
+
+    @property
     def logs(self) -> Path:
         """Logs of the workflow engine and of every job."""
         return self.state / "logs"
@@ -128,6 +133,11 @@ class Layout:
     def bulk(self) -> Path:
         """Quantities of the populations."""
         return self.folder / "bulk.zarr"
+
+    @property
+    def oriented(self) -> Path:
+        """Tables of oriented particles, one for each distribution, and their index."""
+        return self.folder / "oriented"
 
     @property
     def exchange(self) -> Path:
@@ -169,6 +179,10 @@ class Layout:
     def solved_case(self, digest: str) -> Path:
         """Record of a single solved case."""
         return self.solved / digest[:2] / f"{digest}.case"
+
+    def solved_transitions(self, digest: str) -> Path:
+        """Transition matrices of a solved case."""
+        return self.transitions / digest[:2] / f"{digest}.npz"
 
     def solved_fields(self, digest: str) -> Path:
         """Fields of an anchor whose job has not finished."""

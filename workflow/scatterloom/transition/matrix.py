@@ -34,15 +34,10 @@ class TransitionMatrix:
     def n_max(self) -> int:
         return self.labels.n_max
 
-    def truncated(self, n_max: int) -> TransitionMatrix:
-        """The same matrix with all waves above degree `n_max` left out."""
-        if n_max >= self.n_max:
-            return self
-        keep = self.labels.degree <= n_max
-        labels = WaveLabels(
-            n_max, self.labels.kind[keep], self.labels.degree[keep], self.labels.order[keep]
-        )
-        return TransitionMatrix(self.matrix[np.ix_(keep, keep)], labels)
+    def cut(self, n_max: int) -> TransitionMatrix:
+        """The same waves with all elements above degree `n_max` set to zero."""
+        kept = self.labels.degree <= n_max
+        return TransitionMatrix(np.where(kept[:, None] & kept, self.matrix, 0.0), self.labels)
 
 
 def from_amplitudes(
