@@ -7,9 +7,11 @@ import re
 import subprocess
 import sys
 import time
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
+from campaign_runs import config
 from ruamel.yaml import YAML
 
 from job_kit import job, records_of
@@ -18,12 +20,16 @@ from scatterloom.commands import _slurm
 from scatterloom.commands._profile import find_profile
 from scatterloom.commands.solve_job import ATTEMPTS
 from scatterloom.errors import BadInput, CampaignHeld, EnvironmentProblem, IntegrityError
+from scatterloom.graph import Graph
 from scatterloom.limits import Limits, TimeGrantedIsUp
+from scatterloom.mending import fail_case_at_work, take_up_failed
 from scatterloom.outline import Planned
 from scatterloom.scattering.reasons import reason_of
 from scatterloom.scattering.record import FAILED
 from scatterloom.store.casefile import read_records
+from scatterloom.store.failures import read_failures
 from scatterloom.store.layout import Layout
+from scatterloom.store.progress import RUNNING, Heartbeat, write_heartbeat
 from scatterloom.store.turn import check_turn, read_turn, settle, take_turn
 
 PROFILES = Path(__file__).parents[2] / "workflow" / "profiles"
@@ -118,6 +124,28 @@ def test_a_case_that_takes_more_memory_than_granted_fails_with_its_number(tmp_pa
     jobs.solve(one.spec(), tmp_path, limits=Limits(granted_bytes=2**20))
     for record in records_of(tmp_path, one):
         assert (record.status, reason_of(record.warning_flags).number) == (FAILED, 2)
+
+
+def test_the_case_at_work_in_a_job_that_slurm_killed_fails_and_the_others_go_on(tmp_path):
+    graph = Graph.open(config(tmp_path, count=8), tmp_path / "results")
+    graph.prepare()
+    name = next(job for job in graph.jobs if job.startswith("anchors"))
+    (first, _), (second, x), *_ = graph.jobs[name].cases
+    assert not fail_case_at_work(graph, name, "no_memory")  # it never reported
+    beat = Heartbeat(name, "anchors", RUNNING, 1, 4, size_parameter=x)
+    write_heartbeat(graph.layout.folder, beat)
+    assert not fail_case_at_work(graph, name, "no_memory")  # the case is not known
+    write_heartbeat(graph.layout.folder, replace(beat, case=second))
+    assert fail_case_at_work(graph, name, "no_memory")
+    assert not fail_case_at_work(graph, name, "no_memory")  # no second time
+    jobs.solve(graph.specs[name], graph.layout.folder)
+    records = {record.digest: record for record in read_records(graph.layout.case_file(name))}
+    assert [digest for digest, record in records.items() if record.status == FAILED] == [second]
+    assert reason_of(records[second].warning_flags).number == 2
+    assert records[first].status != FAILED
+    (note,) = read_failures(graph.layout.failed)
+    assert (note.digest, note.size_parameter, note.job) == (second, x, name)
+    assert take_up_failed(graph) == 1
 
 
 def test_requests_grow_with_the_attempt():
