@@ -8,7 +8,6 @@ from pathlib import Path
 from snakemake.exceptions import WorkflowError
 
 from scatterloom.errors import ScatterloomError
-from scatterloom.graph import Graph
 from scatterloom.outline import Outline
 
 
@@ -28,6 +27,8 @@ def open_graph():
     try:
         # `scatterloom run` has prepared the campaign; the engine alone does it here.
         if workflow.is_main_process and not config.get("prepared"):
+            from scatterloom.graph import Graph
+
             Graph.open(find_config(), config.get("results")).prepare()
         return Outline.open(find_config(), config.get("results"))
     except ScatterloomError as error:

@@ -19,13 +19,13 @@ from typing import TYPE_CHECKING
 
 import scatterloom
 from scatterloom import campaign as campaigns
-from scatterloom.bulk.coefficients import FEWEST_ANGLES
 from scatterloom.campaign.case import canonical_json
 from scatterloom.campaign.effort import NUMERICS_REVISION
 from scatterloom.campaign.outlook import job_bytes
+from scatterloom.campaign.populations import FEWEST_ANGLES
 from scatterloom.store.atomic import write_if_changed
 from scatterloom.store.layout import Layout, results_root
-from scatterloom.store.library import reuse_wanted
+from scatterloom.store.reuse import reuse_wanted
 
 _BESIDE_MB = 512
 """What the workflow engine and the batch system need beside the solver [MiB]."""

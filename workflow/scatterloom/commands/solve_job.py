@@ -23,7 +23,7 @@ ATTEMPTS = 3
 """How often a cluster tries a job, each time with more memory and time."""
 BESIDE_BYTES = 400 * 2**20
 """What the workflow engine needs beside the solver in the memory granted to a job: two of
-its processes, measured at 130 MiB each, and the batch system's own."""
+its processes, measured at 115 MiB each, and the batch system's own."""
 MARGIN_MINUTES = 3.0
 CLUSTER_HEARTBEAT_S = 5.0
 """Hundreds of jobs share a file system there."""
