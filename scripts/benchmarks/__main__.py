@@ -19,6 +19,7 @@ BENCHMARKS = {
     "solve": "one oblate spheroid: block solve and in-fill against one plane wave at a time",
     "starts": "products and error of in-filled sizes against the spacing of their anchors",
     "single": "products of one plane wave at a time by the field the iteration starts from",
+    "large": "a large soft sphere, one plane wave: memory, products by start, errors",
     "convergence": "error against the number of cells, by the kind of cells at surfaces",
     "calibration": "whether the 95 % half widths tell the truth, random cases of five kinds",
     "accuracy_asked": "whether the accuracy asked is met, or its lack flagged; held-out cases",

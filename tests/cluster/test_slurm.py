@@ -10,14 +10,14 @@ from collections import Counter, defaultdict
 from pathlib import Path
 
 import pytest
-from campaign_runs import call, finish, solved_cases, start, wait_until
+from campaign_runs import PATIENCE_S, call, finish, solved_cases, start, wait_until
 from kill_loop import same_bits
 from slurm_kit import ROOT, jobs, need_slurm, slurm
 
 import scatterloom
 from scatterloom.scattering.record import FAILED
 
-# Two ladders, so anchors jobs work side by side; a case takes some tenths of a second.
+# Two ladders, so anchors jobs work side by side; a case takes about half a second.
 CONFIG = """\
 campaign: two
 title: A campaign for a cluster
@@ -31,7 +31,7 @@ sizes:
   size_parameter: {from: 0.5, to: 3.0, count: 12}
 angles_deg: {from: 0, to: 180, step: 10}
 accuracy: {f11_relative: 0.02, ratio_absolute: 0.01, efficiency_relative: 0.005}
-solver: {levels: [32, 48], tolerance: 1e-4}
+solver: {levels: [40, 56], tolerance: 1e-4}
 """
 CASES = 24
 
@@ -74,19 +74,23 @@ def test_killed_and_resumed_nothing_is_solved_twice(cluster, tmp_path):
     command = ("run", config(tmp_path), "--results", tmp_path / "results", "--profile", "slurm")
     campaign = tmp_path / "results" / "two"
     run = start(*command)
-    wait_until(lambda: len(solved_cases(campaign)) >= 3 and jobs("RUNNING") != [], run)
+    wait_until(lambda: len(solved_cases(campaign)) >= 2 and jobs("RUNNING") != [], run)
     # The command alone: the kernel ends the engine with it, but the jobs belong to Slurm.
     os.kill(run.pid, signal.SIGKILL)
     finish(run)
     orphans = jobs()
     assert orphans, "the jobs ended with the command; there is nothing to test"
     kept = solved_cases(campaign)
-    assert 3 <= len(kept) < CASES
+    assert 2 <= len(kept) < CASES
 
     seen: dict[str, set[tuple[int, int]]] = defaultdict(set)
     alive: Counter[str] = Counter()
     resumed = start(*command)
+    deadline = time.monotonic() + 2 * PATIENCE_S
     while resumed.poll() is None:
+        if time.monotonic() > deadline:
+            resumed.send_signal(signal.SIGTERM)
+            raise AssertionError(f"still at work: {finish(resumed).stderr}")
         for digest, identity in solved_cases(campaign).items():
             seen[digest].add(identity)
         for comment, number in Counter(

@@ -8,7 +8,7 @@ from scipy import integrate
 from scipy.special import spherical_jn
 
 from oracles import dense
-from scatterloom.dipole.kernel import lag_tensor, octant_spectrum, radial_parts
+from scatterloom.dipole.kernel import lag_components, octant_spectrum, radial_parts
 
 COMPONENTS = ((0, 0), (1, 1), (2, 2), (0, 1), (0, 2), (1, 2))
 
@@ -53,9 +53,9 @@ def test_radial_parts_are_the_cut_fourier_integral(kd):
         assert rad[i] == pytest.approx(expected_rad, rel=1e-8, abs=1e-9 / kd**3)
 
 
-def test_lag_tensor_is_the_dense_interaction():
+def test_lag_components_are_the_dense_interaction():
     kd, lags = 0.45, (3, 4, 2)
-    tensor = lag_tensor(lags, kd)
+    tensor = np.stack(list(lag_components(lags, kd)))
     assert not tensor[:, 0, 0, 0].any()
     for lag in itertools.islice(itertools.product(*map(range, lags)), 1, None):
         expected = dense.filtered_green(kd * np.array([lag], float), 1.0, kd)[0]

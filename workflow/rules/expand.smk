@@ -39,6 +39,8 @@ GRAPH = open_graph()
 PRODUCTS = ["table.json", "audit.json", "figures/figures.json", "report.html"]
 if GRAPH.has_populations:
     PRODUCTS.append("bulk.zarr/commit.json")
+SINGLES = GRAPH.singles
+PRODUCTS += [f"single/{name}.nc" for name in SINGLES]
 if GRAPH.has_orientations:
     PRODUCTS.append("oriented/oriented.json")
 if GRAPH.has_exchange:
@@ -46,10 +48,9 @@ if GRAPH.has_exchange:
 
 # Global names, not parameters: where the checkout lies must not decide what is rerun.
 SCATTERLOOM = f"{shlex.quote(sys.executable)} -m scatterloom"
-CAMPAIGN = (
-    f"{shlex.quote(str(find_config()))}"
-    f" --results {shlex.quote(str(GRAPH.layout.folder.parent))}"
-)
+CAMPAIGN_FILE = shlex.quote(str(find_config()))
+RESULTS = f"--results {shlex.quote(str(GRAPH.layout.folder.parent))}"
+CAMPAIGN = f"{CAMPAIGN_FILE} {RESULTS}"
 
 # What `scatterloom run` decides; none of it alters a result.
 THREADS = int(config.get("threads", 1))

@@ -35,6 +35,19 @@ def fields_needed(wildcards):
     return ancient([f"fields/{name}.npz" for name in GRAPH.jobs[wildcards.job].needs])
 
 
+# Its time is not predicted; a checkpoint is taken up again by the next attempt.
+SINGLE_MINUTES = 1440
+
+
+def single_memory(name):
+    """Return MiB that a single solve needs."""
+    # Here, so that the engine on every node of a cluster loads no numerical libraries.
+    from scatterloom.singles import needed_bytes
+
+    most = int(config.get("memory_mb", 1 << 40))
+    return min(needed_bytes(SINGLES[name]) // 2**20 + 1, most)
+
+
 rule solve_anchors:
     output:
         cases="cases/{job}.cases",
@@ -79,3 +92,24 @@ rule solve_span:
         " {OPTIONS} --threads {threads} --granted-mib {resources.mem_mb}"
         " --granted-minutes {resources.runtime} --attempt {resources.attempt}"
         " --parent $PPID > {log} 2>&1"
+
+
+# Each takes all cores: its memory leaves no room for others.
+rule solve_single:
+    output:
+        "single/{name}.nc",
+    log:
+        "state/logs/single-{name}.log",
+    wildcard_constraints:
+        name=r"[A-Za-z][A-Za-z0-9_]*",
+    threads: THREADS if CLUSTER else workflow.cores
+    resources:
+        mem_mb=lambda wildcards: single_memory(wildcards.name),
+        runtime=SINGLE_MINUTES,
+    params:
+        digest=lambda wildcards: SINGLES[wildcards.name].digest,
+    shell:
+        "exec env "
+        + ONE_POOL
+        + " {SCATTERLOOM} solve-single {CAMPAIGN_FILE} {wildcards.name}"
+        " {RESULTS} --threads {threads} --parent $PPID > {log} 2>&1"

@@ -23,6 +23,7 @@ from scatterloom.campaign.case import canonical_json
 from scatterloom.campaign.effort import NUMERICS_REVISION
 from scatterloom.campaign.outlook import job_bytes
 from scatterloom.campaign.populations import FEWEST_ANGLES
+from scatterloom.campaign.singles import Single, singles_of
 from scatterloom.store.atomic import write_if_changed
 from scatterloom.store.layout import Layout, results_root
 from scatterloom.store.reuse import reuse_wanted
@@ -127,6 +128,11 @@ class Outline:
     def has_orientations(self) -> bool:
         """Whether there are tables of oriented particles to make."""
         return bool(self.campaign.model.orientations)
+
+    @property
+    def singles(self) -> dict[str, Single]:
+        """Single solves by name."""
+        return {single.name: single for single in singles_of(self.campaign)}
 
     @property
     def has_exchange(self) -> bool:

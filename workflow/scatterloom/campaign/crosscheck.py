@@ -28,7 +28,7 @@ WANTED_COVERAGE = 0.99
 def check_names(document: Document) -> list[Problem]:
     """Check that names are unique and that whatever is referred to exists."""
     tree = document.tree
-    sections = ("particles", "populations", "orientations")
+    sections = ("particles", "populations", "orientations", "single_solves")
     problems = [problem for section in sections for problem in _repeated(document, section)]
     materials = tree.get("materials")
     particles = [name for _, name in _texts(document, "particles", "name")]
@@ -48,6 +48,11 @@ def check_names(document: Document) -> list[Problem]:
                     hint = nearest(name, particles)
                     found = f"{name}: {document.show(path)}"
                     problems.append(document.problem(path, message, found, hint, at_key=True))
+        for path, name in _texts(document, "single_solves", "particle"):
+            if name not in particles:
+                message = f"particle '{name}' is not defined under particles"
+                hint = nearest(name, particles)
+                problems.append(document.problem(path, message, document.show(path), hint))
         for position, entry in enumerate(_entries(document, "orientations")):
             given = entry.get("particles")
             for place, name in enumerate(given if isinstance(given, list) else ()):
@@ -57,6 +62,21 @@ def check_names(document: Document) -> list[Problem]:
                     hint = nearest(name, particles)
                     problems.append(document.problem(path, message, document.show(path), hint))
     return problems
+
+
+def check_single_wavelengths(document: Document, model: CampaignModel) -> list[Problem]:
+    """Check that single solves are at wavelengths of the campaign, where indices are known."""
+    known = ", ".join(f"{w:g}" for w in model.wavelengths_um[:8])
+    return [
+        document.problem(
+            ("single_solves", position, "wavelength_um"),
+            f"single solve '{entry.name}' is at a wavelength that the campaign does not have",
+            f"{entry.wavelength_um:g} um",
+            f"give one of wavelengths_um: {known}",
+        )
+        for position, entry in enumerate(model.single_solves)
+        if entry.wavelength_um not in model.wavelengths_um
+    ]
 
 
 def unused_materials(document: Document) -> list[Problem]:

@@ -86,9 +86,10 @@ def expand(campaign: Campaign) -> Grid:
         materials = particle.materials
         for w in range(n_wavelength):
             indices = tuple(
-                _relative(campaign.indices[name][w], campaign.medium_index[w]) for name in materials
+                relative_index(campaign.indices[name][w], campaign.medium_index[w])
+                for name in materials
             )
-            shape, indices = _body(particle, indices)
+            shape, indices = body_of(particle, indices)
             outer[p, w] = indices[0]
             if len(indices) > 1:
                 core[p, w] = indices[1]
@@ -115,7 +116,7 @@ def expand(campaign: Campaign) -> Grid:
     )
 
 
-def _body(
+def body_of(
     particle: Particle, indices: tuple[complex, ...]
 ) -> tuple[dict[str, Any], tuple[complex, ...]]:
     """Return shape and indices; a coating of the same index as the core is no coating."""
@@ -153,7 +154,7 @@ def _rounded(rows: list[list[Decimal]]) -> NDArray[np.float64]:
     return np.array([[float(f"{value:.11e}") for value in row] for row in rows])
 
 
-def _relative(index: complex, medium_index: float) -> complex:
+def relative_index(index: complex, medium_index: float) -> complex:
     """Return index / medium_index, both parts to twelve significant digits."""
     medium = decimal(medium_index)
     parts = [float(f"{decimal(part) / medium:.11e}") for part in (index.real, index.imag)]

@@ -124,6 +124,7 @@ def load(path: str | Path) -> Campaign:
         )
     if model is not None and not problems:
         problems += crosscheck.check_densities(document, model)
+        problems += crosscheck.check_single_wavelengths(document, model)
     if problems or model is None:
         raise BadInput(_in_order(problems, document))
     model = with_points(model, size_tables)

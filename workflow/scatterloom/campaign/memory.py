@@ -62,3 +62,41 @@ def case_bytes(
     # The kernel on an octant of the doubled grid, and the padded grids of a batch of waves.
     grids = _GRIDS * (6.0 + 8 * 3 * 2.0) * box
     return round(PROGRAM_BYTES + (blocks * block + grids) * _COMPLEX64_BYTES)
+
+
+_FLOAT, _COMPLEX64 = 8, 8
+_LANES = 8
+"""Numbers that lie side by side at every point of the box, for up to two waves."""
+
+
+def single_bytes(half_extents: Sequence[float], mirror_planes: int, cells_across: int) -> int:
+    """Return the predicted peak memory of a single solve on one lattice [bytes].
+
+    Counted from the arrays that are held at once; nothing is fitted.
+
+    Parameters
+    ----------
+    half_extents : sequence of 3 float
+        In units of the equal-volume-sphere radius.
+    mirror_planes : int
+        Planes of symmetry; each halves the cells whose fields are stored.
+    cells_across : int
+        Along the longest extent.
+    """
+    spacing = 2.0 * max(half_extents) / cells_across
+    box = [math.ceil(2.0 * half / spacing - 1e-9) for half in half_extents]
+    points = math.prod(box)
+    cells = 4.0 * math.pi / 3.0 / spacing**3
+    own = cells / 2**mirror_planes
+    # Indices, fill, normal, area of every cell; tensors, loss, targets and places of own ones.
+    held = cells * (12 + 5 * _FLOAT) + own * (
+        2 * 6 * _COMPLEX64 + 6 * _FLOAT + 2**mirror_planes * 8 + 3 * _FLOAT + 8
+    )
+    kernel = 6 * _COMPLEX64 * math.prod(n + 1 for n in box)
+    grid = 2 * _LANES * _COMPLEX64 * points
+    vector = 3 * _COMPLEX64 * own
+    # Two vectors span all classes (incident field, work), two more are in a product; a quarter
+    # of the classes is lit by a wave along an axis, and all by one aslant.
+    classes = 2**mirror_planes
+    vectors = (4 * classes + 7 * max(1, classes // 4)) * vector
+    return round(PROGRAM_BYTES + held + kernel + grid + vectors)

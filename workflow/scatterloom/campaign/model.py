@@ -16,6 +16,7 @@ from scatterloom.campaign.orientations import Orientation
 from scatterloom.campaign.populations import Population
 from scatterloom.campaign.sections import NAME_FORM, Name, Section, check_names, setting, wrong
 from scatterloom.campaign.shapes import Shape
+from scatterloom.campaign.singles import SingleSolve
 
 Wavelength = Annotated[float, setting("One wavelength.", unit="um", ge=1e-3, le=1e6)]
 THINNEST = 0.02
@@ -309,6 +310,9 @@ class CampaignModel(Section):
         max_length=100,
     )
     populations: list[Population] = setting("Mixtures for the bulk table.", [], max_length=1000)
+    single_solves: list[SingleSolve] = setting(
+        "Large particles lit from few directions, each solved by itself.", [], max_length=1000
+    )
     solver: Solver = setting("Expert overrides.", Solver())
     exchange: Exchange = setting("Files for radiative transfer.", Exchange())
     provenance: Provenance = setting("Origin and licence of the table.", Provenance())

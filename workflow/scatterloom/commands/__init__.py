@@ -11,6 +11,7 @@ COMMANDS = {
     "status": "show what is done, running, failed and left",
     "gather": "write the table from the solved cases (run does this by itself)",
     "solve-job": "solve the cases of one job file (run does this by itself)",
+    "solve-single": "solve one large particle lit from few directions (run does this by itself)",
     "verify": "check the integrity of a table, or solve a sample of it again",
     "pack": "put a campaign into one file for somebody else",
     "unpack": "unpack a campaign from somebody else, and run it if wanted",

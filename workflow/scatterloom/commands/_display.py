@@ -18,6 +18,7 @@ PLAIN_EVERY_S = 5.0
 PHASES = {
     "solve_anchors": "solving anchors",
     "solve_span": "filling in between anchors",
+    "solve_single": "solving single particles",
     "gather_table": "gathering the table",
     "make_bulk": "averaging over populations",
     "orient_particles": "averaging over orientations",

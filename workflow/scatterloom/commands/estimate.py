@@ -38,7 +38,9 @@ def execute(args: argparse.Namespace) -> int:
     """Predict and print; nothing of the campaign is solved or written."""
     from scatterloom.campaign.outlook import outlook
     from scatterloom.campaign.shares import shares
+    from scatterloom.campaign.singles import singles_of
     from scatterloom.graph import Graph
+    from scatterloom.singles import needed_bytes
 
     graph = Graph.open(args.config, args.results)
     for warning in graph.campaign.warnings:
@@ -51,6 +53,7 @@ def execute(args: argparse.Namespace) -> int:
     cores = max(1, args.cores or os.cpu_count() or 1)
     hours = max(core_hours / cores, longest)
     where = shares(graph.grid, jobs)
+    singles = singles_of(graph.campaign)
     if args.json:
         result = {
             "campaign": graph.campaign.name,
@@ -61,12 +64,19 @@ def execute(args: argparse.Namespace) -> int:
             "cores": cores,
             "hours": hours,
             "shares": asdict(where),
+            "single_solves": {
+                single.name: {"cells_across": max(single.cells), "bytes": needed_bytes(single)}
+                for single in singles
+            },
         }
         print(json.dumps(result, indent=2))
         return 0
     print(f"campaign {graph.campaign.name}")
     for label, value in _rows(forecast, pace, core_hours, cores, hours, where).items():
         print(f"  {label:<26} {value}")
+    for single in singles:
+        size = f"{max(single.cells)} cells across, {needed_bytes(single) / 2**30:.3g} GiB"
+        print(f"  {'single solve ' + single.name:<26} {size}")
     return 0
 
 

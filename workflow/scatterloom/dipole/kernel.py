@@ -6,6 +6,8 @@ Lengths are in units of 1/k (so the wavenumber is one) and the lattice spacing i
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+
 import ducc0
 import numpy as np
 from numpy.typing import DTypeLike, NDArray
@@ -51,31 +53,27 @@ def radial_parts(distance: NDArray[np.float64], kd: float) -> tuple[NDArray, NDA
     return g + g1 / r, g2 - g1 / r
 
 
-def lag_tensor(lags: tuple[int, int, int], kd: float) -> NDArray[np.complex128]:
-    """Green tensor at every lag of one octant.
+def lag_components(lags: tuple[int, int, int], kd: float) -> Iterator[NDArray[np.complex128]]:
+    """Components xx, yy, zz, xy, xz, yz of the Green tensor at every lag of one octant.
 
-    Returns complex128 (6, lags[0], lags[1], lags[2]); components xx, yy, zz, xy,
-    xz, yz. The tensor at lag zero is zero: the self term lives in the polarizability.
+    Each is complex128 (lags[0], lags[1], lags[2]). The tensor at lag zero is zero: the self
+    term lives in the polarizability.
     """
     i, j, k = (np.arange(n, dtype=np.int64) for n in lags)
     square = i[:, None, None] ** 2 + j[None, :, None] ** 2 + k[None, None, :] ** 2
     # Far fewer distances than lags: the sine and cosine integrals are the dear part.
-    unique, inverse = np.unique(square, return_inverse=True)
-    inverse = inverse.reshape(square.shape)
-    iso = np.zeros(unique.size, dtype=np.complex128)
-    rad = np.zeros(unique.size, dtype=np.complex128)
-    iso[1:], rad[1:] = radial_parts(kd * np.sqrt(unique[1:].astype(np.float64)), kd)
-    rad[1:] /= unique[1:]
-    iso_at, rad_at = iso[inverse], rad[inverse]
+    unique = np.flatnonzero(np.bincount(square.ravel()))
+    iso = np.zeros(int(unique[-1]) + 1, dtype=np.complex128)
+    rad = np.zeros_like(iso)
+    far = unique[1:]
+    iso[far], rad[far] = radial_parts(kd * np.sqrt(far.astype(np.float64)), kd)
+    rad[far] /= far
     x, y, z = np.meshgrid(i, j, k, indexing="ij", sparse=True)
-    tensor = np.empty((6, *square.shape), dtype=np.complex128)
-    tensor[0] = iso_at + rad_at * (x * x)
-    tensor[1] = iso_at + rad_at * (y * y)
-    tensor[2] = iso_at + rad_at * (z * z)
-    tensor[3] = rad_at * (x * y)
-    tensor[4] = rad_at * (x * z)
-    tensor[5] = rad_at * (y * z)
-    return tensor
+    for one, other in ((x, x), (y, y), (z, z), (x, y), (x, z), (y, z)):
+        component = rad[square] * (one * other)
+        if one is other:
+            component += iso[square]
+        yield component
 
 
 # Axes along which each component (xx, yy, zz, xy, xz, yz) is odd in the lag.
@@ -106,15 +104,15 @@ def octant_spectrum(
     """
     if not 0.0 < kd < np.pi:
         raise ValueError(f"lattice spacing times wavenumber is {kd:.3g}, must be below pi")
-    tensor = lag_tensor(box, kd)
-    padded = np.zeros((6, *(h + 1 for h in half)), dtype=np.complex128)
-    padded[:, : box[0], : box[1], : box[2]] = tensor
     out: NDArray = np.empty((half[0] + 1, 6, half[1] + 1, half[2] + 1), dtype=dtype)
     scale = 1.0 / (8.0 * half[0] * half[1] * half[2])
-    for c, odd in enumerate(_ODD_AXES):
+    # One component at a time: all six in double precision are twice the result.
+    for c, (component, odd) in enumerate(zip(lag_components(box, kd), _ODD_AXES, strict=True)):
         # A real symmetric sequence transforms to a cosine sum, an antisymmetric one
         # to -i times a sine sum; two odd axes make (-i)^2 = -1.
-        parts = np.stack([padded[c].real, padded[c].imag])
+        parts = np.zeros((2, *(h + 1 for h in half)))
+        parts[0, : box[0], : box[1], : box[2]] = component.real
+        parts[1, : box[0], : box[1], : box[2]] = component.imag
         for axis in range(3):
             if axis in odd:
                 inner = [slice(None)] * 4
@@ -126,5 +124,6 @@ def octant_spectrum(
             else:
                 parts = ducc0.fft.dct(parts, 1, [axis + 1])
         sign = -scale if odd else scale
-        out[:, c] = sign * (parts[0] + 1j * parts[1])
+        out.real[:, c] = sign * parts[0]
+        out.imag[:, c] = sign * parts[1]
     return out

@@ -132,6 +132,20 @@ def _packed(tensor: NDArray, real: np.dtype) -> NDArray:
     return out
 
 
+def _packed_planes(spectrum: NDArray, real: np.dtype) -> NDArray:
+    """The same of complex (n, 6, ...), plane by plane."""
+    planes, _, *rest = spectrum.shape
+    out = _aligned(12 * planes * int(np.prod(rest)) + 2, real)
+    parts = out[:-2].reshape(planes, *rest, 2, 6)
+    for plane, part in zip(spectrum, parts, strict=True):
+        part[..., 0, :], part[..., 1, :] = (
+            plane.real.transpose(1, 2, 0),
+            plane.imag.transpose(1, 2, 0),
+        )
+    out[-2:] = 0.0
+    return out
+
+
 class LatticeMatrix:
     """The matrix A of one lattice particle at one size, acting on blocks of waves.
 
@@ -143,7 +157,7 @@ class LatticeMatrix:
     ----------
     lattice : Lattice
     tensors : CellTensors
-        Of all cells of the lattice, in its order.
+        Of all cells of the lattice, in its order, or of the fundamental ones alone.
     kd : float
         Lattice spacing times wavenumber.
     dtype : complex64 (default) or complex128
@@ -192,11 +206,12 @@ class LatticeMatrix:
             self._target[s] = image @ self._strides
         self._signs = signs
         real = self.dtype.type(0).real.dtype
-        self.root: NDArray = np.ascontiguousarray(tensors.root[self.fundamental].T.astype(dtype))
-        self.loss = np.ascontiguousarray(tensors.loss[self.fundamental].T)
+        own = slice(None) if len(tensors.root) == self.n_cell else self.fundamental
+        self.root: NDArray = np.ascontiguousarray(tensors.root[own].T.astype(dtype))
+        self.loss = np.ascontiguousarray(tensors.loss[own].T)
         self._root = _packed(self.root.T, real)
         spectrum = octant_spectrum(lattice.box, self.half, kd, dtype)
-        self._kernel = _packed(spectrum.transpose(0, 2, 3, 1).reshape(-1, 6), real)
+        self._kernel = _packed_planes(spectrum, real)
         # Signs of the six components in every octant of the spectrum.
         odd = np.array([[i >> b & 1 for b in (2, 1, 0)] for i in range(8)])
         flips = np.ones((9, 8), dtype=real)

@@ -139,6 +139,10 @@ class Layout:
         """Tables of oriented particles, one for each distribution, and their index."""
         return self.folder / "oriented"
 
+    def single(self, name: str) -> Path:
+        """Result of a single solve."""
+        return self.folder / "single" / f"{name}.nc"
+
     @property
     def exchange(self) -> Path:
         """Files for radiative transfer and their index."""
