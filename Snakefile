@@ -19,6 +19,17 @@ include: "workflow/rules/bulk.smk"
 include: "workflow/rules/figures.smk"
 
 
+# On a cluster these run where the command was given.
+localrules:
+    gather_table,
+    make_bulk,
+    make_exchange,
+    orient_particles,
+    audit,
+    make_figures,
+    make_report,
+
+
 rule all:
     default_target: True
     input:

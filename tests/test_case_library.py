@@ -12,7 +12,8 @@ from scatterloom.campaign import effort
 from scatterloom.campaign.case import Accuracy
 from scatterloom.errors import BadInput
 from scatterloom.scattering import record
-from scatterloom.store.library import CaseLibrary, physics_digest, reuse_wanted
+from scatterloom.store.library import CaseLibrary, physics_digest
+from scatterloom.store.reuse import reuse_wanted
 
 INDEX = 1.5 + 0.01j
 SIZES = (0.6, 0.7)

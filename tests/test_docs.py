@@ -136,7 +136,7 @@ def test_commands_named_exist(page):
         re.findall(r"(?<![\w/-])(?:\.venv/bin/)?scatterloom +([a-z][a-z-]*)", " ".join(code))
     )
     assert named <= set(COMMANDS), named - set(COMMANDS)
-    scripts = set(re.findall(r"scripts/[a-z_]+(?:\.py)?", " ".join(code)))
+    scripts = set(re.findall(r"scripts/[a-z_-]+(?:\.py)?", " ".join(code)))
     assert all((ROOT / script).exists() for script in scripts), scripts
 
 

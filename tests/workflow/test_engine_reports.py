@@ -38,6 +38,9 @@ Command 'set -euo pipefail;  exec solve-job' died with <Signals.SIGKILL: 9>.
 Error in rule solve_span:
     jobid: 6
     log: state/logs/jobs/span-b.log (check log file(s) for error details)
+Error in rule solve_span:
+    message: SLURM-job '3' failed, SLURM status is: 'FAILED'.
+    log: state/logs/jobs/span-c.log, BATCH LOG (check log file(s) for error details)
 localrule gather_table:
 WorkflowError:
 At least one job did not complete successfully.
@@ -48,15 +51,23 @@ At least one job did not complete successfully.
 def engine(tmp_path):
     engine = Engine.__new__(Engine)
     engine.log = tmp_path / "engine.log"
-    engine.log.write_text(LOG)
+    batch = tmp_path / "slurm logs" / "3.log"
+    batch.parent.mkdir()
+    batch.write_text("rule solve_span:\nslurmstepd: error: Exceeded job memory limit\n")
+    engine.log.write_text(LOG.replace("BATCH LOG", str(batch)))
     return engine
 
 
-def test_failures_are_read_with_their_codes_and_signals(engine):
-    assert engine.failures() == [
+def test_failures_are_read_with_their_codes_and_signals(engine, tmp_path):
+    batch = tmp_path / "slurm logs" / "3.log"
+    failed = engine.failures()
+    assert failed == [
         FailedRule("solve_anchors", "state/logs/jobs/anchors-a.log", 3, None),
         FailedRule("solve_span", "state/logs/jobs/span-b.log", None, "SIGKILL"),
+        FailedRule("solve_span", "state/logs/jobs/span-c.log", None, None, str(batch)),
     ]
+    assert [failure.over_limit for failure in failed] == [None, None, "no_memory"]
+    assert failed[-1].words_of_slurm() == ["slurmstepd: error: Exceeded job memory limit"]
 
 
 def test_the_last_rule_and_the_last_words(engine):

@@ -8,9 +8,11 @@ from pathlib import Path
 import pytest
 from campaign_runs import call, config
 
-from scatterloom.commands._engine import check_profile
+from scatterloom.commands._profile import find_profile
 from scatterloom.errors import EnvironmentProblem
 from scatterloom.graph import Graph
+
+ROOT = Path(__file__).parents[2]
 
 
 def test_a_bad_campaign_starts_nothing(tmp_path):
@@ -91,10 +93,21 @@ def damage_is_found_and_mended(path: Path, tmp_path: Path) -> None:
     assert " missing" in partial.stdout
 
 
-def test_the_cluster_profile_says_what_it_needs(monkeypatch):
+def test_the_cluster_profile_says_what_it_needs(tmp_path, monkeypatch):
+    monkeypatch.setenv("PATH", str(tmp_path))  # no sbatch there
+    with pytest.raises(EnvironmentProblem, match="no program sbatch"):
+        find_profile("slurm", ROOT / "workflow" / "profiles")
     monkeypatch.setattr("importlib.util.find_spec", lambda name: None)
     with pytest.raises(EnvironmentProblem, match="snakemake-executor-plugin-slurm"):
-        check_profile("slurm")
+        find_profile("slurm", ROOT / "workflow" / "profiles")
+
+
+def test_an_unknown_profile_starts_nothing(tmp_path):
+    results = tmp_path / "results"
+    done = call("run", config(tmp_path), "--results", results, "--profile", "slrum")
+    assert done.returncode == 2
+    assert "no profile 'slrum'" in done.stderr
+    assert not results.exists()
 
 
 @pytest.mark.parametrize("cores", ["0", "-1", "many"])

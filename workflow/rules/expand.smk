@@ -8,9 +8,7 @@ from pathlib import Path
 from snakemake.exceptions import WorkflowError
 
 from scatterloom.errors import ScatterloomError
-from scatterloom.graph import Graph
 from scatterloom.outline import Outline
-from scatterloom.singles import needed_bytes
 
 
 def find_config():
@@ -29,6 +27,8 @@ def open_graph():
     try:
         # `scatterloom run` has prepared the campaign; the engine alone does it here.
         if workflow.is_main_process and not config.get("prepared"):
+            from scatterloom.graph import Graph
+
             Graph.open(find_config(), config.get("results")).prepare()
         return Outline.open(find_config(), config.get("results"))
     except ScatterloomError as error:
@@ -51,3 +51,7 @@ SCATTERLOOM = f"{shlex.quote(sys.executable)} -m scatterloom"
 CAMPAIGN_FILE = shlex.quote(str(find_config()))
 RESULTS = f"--results {shlex.quote(str(GRAPH.layout.folder.parent))}"
 CAMPAIGN = f"{CAMPAIGN_FILE} {RESULTS}"
+
+# What `scatterloom run` decides; none of it alters a result.
+THREADS = int(config.get("threads", 1))
+CLUSTER = bool(config.get("cluster"))

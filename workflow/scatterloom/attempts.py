@@ -122,8 +122,7 @@ class _Solves:
         earlier = saved.products if saved is not None else 0.0
 
         def watch(error: float, residual: float) -> None:
-            if self.seconds > task.limits.seconds:
-                raise OutOfTime
+            task.limits.check(self.seconds)
             self._progress(self._x, residual)
 
         def keep(fields: Callable[[], StoredFields], new: float) -> None:
@@ -182,7 +181,7 @@ def solve_case(
     """
     forget_peak()
     if _needed(task, x, task.cells, len(anchors)) > task.limits.memory_bytes:
-        return _failed(task, digest, x, "no_memory"), []
+        return failed_case(task, digest, x, "no_memory"), []
     case = _Case(task, digest, x, anchors, progress)
     try:
         solved, own = case.solve()
@@ -190,7 +189,7 @@ def solve_case(
         if case.best is None:
             if case.solves.checkpoint:
                 case.solves.checkpoint.remove()
-            return _failed(task, digest, x, _REASON.get(type(error), "breakdown")), []
+            return failed_case(task, digest, x, _REASON.get(type(error), "breakdown")), []
         # A finer attempt was cut short; the one before it stands, flagged for its accuracy.
         solved, own = case.best, []
     if not solved.operator_error < _GIVE_UP:
@@ -282,7 +281,8 @@ def _needed(task: Task, x: float, cells: Sequence[int], neighbours: int) -> int:
     return case_bytes(half, task.radii, planes, x, cells, task.asked.f11_relative, neighbours)
 
 
-def _failed(task: Task, digest: str, x: float, reason: str) -> CaseRecord:
+def failed_case(task: Task, digest: str, x: float, reason: str) -> CaseRecord:
+    """Record of a case given up for a reason, the name of its flag."""
     return failed_record(digest, task.shape_json, task.indices, x, task.cells, _BIT[reason])
 
 

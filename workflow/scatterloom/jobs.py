@@ -11,7 +11,7 @@ from __future__ import annotations
 import json
 import sys
 import time
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import replace
 from functools import cached_property
 from pathlib import Path
@@ -20,9 +20,9 @@ from typing import Any
 import numpy as np
 from threadpoolctl import threadpool_limits
 
-from scatterloom.attempts import Task, forget_checkpoint, solve_case
+from scatterloom.attempts import Task, failed_case, forget_checkpoint, solve_case
 from scatterloom.errors import IntegrityError
-from scatterloom.limits import Limits, peak_bytes
+from scatterloom.limits import Limits, TimeGrantedIsUp, peak_bytes
 from scatterloom.particle.shapes import from_spec
 from scatterloom.scattering.case import Asked
 from scatterloom.scattering.record import FAILED, CaseRecord
@@ -38,8 +38,9 @@ from scatterloom.store.transitions import (
     read_transitions,
     write_transitions,
 )
+from scatterloom.transition.level import LevelResult
 
-_HEARTBEAT_S = 0.5
+HEARTBEAT_S = 0.5
 
 _SAVED_BY_START = 0.6
 """Share of a cold solve that a start from neighbours saves (`campaign.effort.cost`)."""
@@ -49,10 +50,14 @@ KEPT, REUSED, SOLVED_NOW = "kept", "reused", "solved"
 
 
 class _Reporter:
-    """Writes the heartbeat of a job, at most twice a second."""
+    """Writes the heartbeat of a job, now and then, while it is the job's turn."""
 
-    def __init__(self, folder: Path, task: Task, total: int) -> None:
+    def __init__(
+        self, folder: Path, task: Task, total: int, every_s: float, check: Callable[[], None]
+    ) -> None:
         self._folder = folder
+        self._every_s = every_s
+        self.check = check
         self._beat = Heartbeat(task.name, task.kind, RUNNING, 0, total)
         self._last = 0.0
         self._write(force=True)
@@ -60,9 +65,13 @@ class _Reporter:
     def _write(self, force: bool = False, **changes: Any) -> None:
         self._beat = replace(self._beat, **changes)
         now = time.monotonic()
-        if force or now - self._last > _HEARTBEAT_S:
+        if force or now - self._last > self._every_s:
+            self.check()
             write_heartbeat(self._folder, self._beat)
             self._last = now
+
+    def begins(self, digest: str, size_parameter: float) -> None:
+        self._write(force=self._every_s > HEARTBEAT_S, case=digest, size_parameter=size_parameter)
 
     def solving(self, size_parameter: float, residual: float) -> None:
         self._write(size_parameter=size_parameter, residual=residual)
@@ -93,6 +102,10 @@ def solve(
     threads: int = 1,
     limits: Limits | None = None,
     library: CaseLibrary | None = None,
+    *,
+    every_s: float = HEARTBEAT_S,
+    check: Callable[[], None] = lambda: None,
+    last_attempt: bool = False,
 ) -> None:
     """Solve all cases of a job and publish its case file (and, for anchors, its fields).
 
@@ -108,9 +121,21 @@ def solve(
         What a case may take; no bounds if missing.
     library : CaseLibrary, optional
         Solved cases of other campaigns; none are reused if missing.
+    every_s : float
+        Least time between two heartbeats [s].
+    check : callable
+        Called before anything is written; raises CampaignHeld if it is no longer this job's
+        turn.
+    last_attempt : bool
+        Whether a cluster will not try this job again: a case that took all of the time
+        granted then fails.
 
     Raises
     ------
+    CampaignHeld
+        From `check`.
+    TimeGrantedIsUp
+        If the cluster is about to end the job.
     IntegrityError
         If a fields file of another job that this one starts from is not as it was written.
     OSError
@@ -118,7 +143,10 @@ def solve(
     """
     look_in(Layout(folder).solids)
     with threadpool_limits(threads):
-        _Job(spec, folder, threads, limits or Limits(), library).run()
+        state = Layout(folder).checkpoints
+        task = task_of(spec, threads, limits or Limits(), state)
+        report = _Reporter(folder, task, len(spec["cases"]), every_s, check)
+        _Job(spec, folder, task, report, library).run(last_attempt)
 
 
 def task_of(
@@ -155,19 +183,20 @@ class _Job:
         self,
         spec: Mapping[str, Any],
         folder: Path,
-        threads: int,
-        limits: Limits,
+        task: Task,
+        report: _Reporter,
         library: CaseLibrary | None,
     ) -> None:
         self.spec = spec
         self.library = library
         self.layout = Layout(folder)
-        self.task = task_of(spec, threads, limits, self.layout.checkpoints)
+        self.task = task
+        self.report = report
         self.cases: list[tuple[str, float]] = [(d, float(x)) for d, x in spec["cases"]]
+        self._solved_some = False
         self.keep_transitions = bool(spec.get("keep_transitions"))
-        self.report = _Reporter(folder, self.task, len(self.cases))
 
-    def run(self) -> None:
+    def run(self, last_attempt: bool) -> None:
         keep_fields = self.task.kind == "anchors"
         records = []
         fields: list[FieldFile] = []
@@ -177,8 +206,7 @@ class _Job:
                 how = REUSED
             own = self._kept_fields(digest) if keep_fields else None
             if kept is None or (keep_fields and own is None and self._fields_pay):
-                anchors = [] if keep_fields else self._anchors
-                solved, levels = solve_case(self.task, digest, x, anchors, self.report.solving)
+                solved, levels = self._solve(digest, x, last_attempt)
                 if keep_fields:
                     own = FieldFile(digest, x, solved.products, [lv.fields for lv in levels])
                     write_fields(self.layout.solved_fields(digest), [own])
@@ -192,6 +220,7 @@ class _Job:
                 # An entry without levels says that nobody needs the fields of this anchor.
                 fields.append(own or FieldFile(digest, x, kept.products, []))
             self.report.finished_case(kept, how)
+        self.report.check()
         if keep_fields:
             write_fields(self.layout.field_file(self.task.name), fields)
         write_records(self.layout.case_file(self.task.name), records)
@@ -199,8 +228,25 @@ class _Job:
             self.layout.solved_fields(digest).unlink(missing_ok=True)
         self.report.done()
 
+    def _solve(
+        self, digest: str, x: float, last_attempt: bool
+    ) -> tuple[CaseRecord, list[LevelResult]]:
+        anchors = [] if self.task.kind == "anchors" else self._anchors
+        self.report.begins(digest, x)
+        try:
+            found = solve_case(self.task, digest, x, anchors, self.report.solving)
+        except TimeGrantedIsUp:
+            if last_attempt and not self._solved_some:
+                # All of the longest time that is granted was not enough for this one.
+                self._keep(failed_case(self.task, digest, x, "no_time"))
+                forget_checkpoint(self.task, digest)
+            raise
+        self._solved_some = True
+        return found
+
     def _keep(self, case: CaseRecord) -> None:
         """Keep a case just solved, for this campaign and for others."""
+        self.report.check()
         path = self.layout.solved_case(case.digest)
         if self.keep_transitions and case.transitions is not None and case.status != FAILED:
             # First, so that a case that is there has its matrices.

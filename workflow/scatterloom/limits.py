@@ -5,8 +5,11 @@ from __future__ import annotations
 import os
 import resource
 import sys
+import time
 from dataclasses import dataclass
 from pathlib import Path
+
+from scatterloom.errors import EnvironmentProblem
 
 SHARE_OF_MEMORY = 0.9
 _NO_LIMIT = 1 << 60
@@ -24,15 +27,45 @@ class Limits:
         A case that takes longer is given up.
     checkpoint_seconds : float
         Time between savings of the best iterate.
+    granted_bytes : float
+        Memory that a cluster granted to the job; a case found to use more is given up before
+        the job is killed for it.
+    granted_until : float
+        Time on the clock of `time.monotonic` at which a cluster will end the job.
     """
 
     memory_bytes: float = float("inf")
     seconds: float = float("inf")
     checkpoint_seconds: float = 300.0
+    granted_bytes: float = float("inf")
+    granted_until: float = float("inf")
+
+    def check(self, seconds: float) -> None:
+        """Look whether a case that has taken so many seconds may go on.
+
+        Raises
+        ------
+        OutOfTime, MemoryError
+            If the case has exceeded its own limit.
+        TimeGrantedIsUp
+            If the job is about to.
+        """
+        if seconds > self.seconds:
+            raise OutOfTime
+        if self.granted_bytes < float("inf") and peak_bytes() > self.granted_bytes:
+            raise MemoryError
+        if time.monotonic() > self.granted_until:
+            raise TimeGrantedIsUp(
+                "stopped before the cluster's time limit; the next attempt goes on from here"
+            )
 
 
 class OutOfTime(Exception):
     """The case takes longer than allowed."""
+
+
+class TimeGrantedIsUp(EnvironmentProblem):
+    """The cluster is about to end the job; what is finished is kept, the rest is to be resumed."""
 
 
 def machine_bytes() -> int:
@@ -46,6 +79,13 @@ def machine_bytes() -> int:
         if text.isdigit() and int(text) < _NO_LIMIT:
             whole = min(whole, int(text))
     return whole
+
+
+def all_cores() -> int:
+    """Cores that this process may use."""
+    if hasattr(os, "sched_getaffinity"):
+        return len(os.sched_getaffinity(0))
+    return os.cpu_count() or 1
 
 
 def forget_peak() -> None:

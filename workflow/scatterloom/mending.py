@@ -5,11 +5,14 @@ from __future__ import annotations
 import os
 from pathlib import Path
 
+from scatterloom.attempts import failed_case
 from scatterloom.errors import IntegrityError
 from scatterloom.graph import Graph
-from scatterloom.store.casefile import check_file
+from scatterloom.jobs import task_of
+from scatterloom.store.casefile import check_file, write_records
 from scatterloom.store.commit import COMMIT, verify_folder
-from scatterloom.store.failures import read_failures
+from scatterloom.store.failures import read_failures, write_failure
+from scatterloom.store.progress import read_heartbeat
 
 
 def put_damaged_aside(graph: Graph, *, digests: bool) -> list[str]:
@@ -91,6 +94,33 @@ def take_up_failed(graph: Graph) -> int:
             for path in _files_of(graph, digest):
                 path.unlink(missing_ok=True)
     return taken
+
+
+def fail_case_at_work(graph: Graph, job: str, reason: str) -> bool:
+    """Fail the case that a job was solving when a cluster killed it for exceeding a limit.
+
+    Parameters
+    ----------
+    graph : Graph
+    job : str
+    reason : str
+        "no_memory" or "no_time".
+
+    Returns
+    -------
+    bool
+        Whether the case is known, and was unfinished.
+    """
+    layout = graph.layout
+    beat = read_heartbeat(layout.progress / f"{job}.json")
+    sizes = dict(graph.jobs[job].cases) if job in graph.jobs else {}
+    if beat is None or beat.case not in sizes or layout.solved_case(beat.case).exists():
+        return False
+    record = failed_case(task_of(graph.specs[job]), beat.case, sizes[beat.case], reason)
+    write_records(layout.solved_case(beat.case), [record])
+    write_failure(layout.failed / f"{beat.case}.json", record, job)
+    (layout.checkpoints / f"{beat.case}.npz").unlink(missing_ok=True)
+    return True
 
 
 def _gather_again(graph: Graph) -> None:

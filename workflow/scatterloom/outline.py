@@ -10,6 +10,7 @@ from __future__ import annotations
 
 import hashlib
 import json
+import math
 from collections.abc import Mapping
 from dataclasses import asdict, dataclass
 from functools import cache
@@ -18,14 +19,22 @@ from typing import TYPE_CHECKING
 
 import scatterloom
 from scatterloom import campaign as campaigns
-from scatterloom.bulk.coefficients import FEWEST_ANGLES
 from scatterloom.campaign.case import canonical_json
 from scatterloom.campaign.effort import NUMERICS_REVISION
 from scatterloom.campaign.outlook import job_bytes
+from scatterloom.campaign.populations import FEWEST_ANGLES
 from scatterloom.campaign.singles import Single, singles_of
 from scatterloom.store.atomic import write_if_changed
 from scatterloom.store.layout import Layout, results_root
-from scatterloom.store.library import reuse_wanted
+from scatterloom.store.reuse import reuse_wanted
+
+_BESIDE_MB = 512
+"""What the workflow engine and the batch system need beside the solver [MiB]."""
+_MEMORY_MARGIN = 1.25
+"""Predicted memory was met within 15 %."""
+_TIME_MARGIN = 4.0
+"""A node may be half as fast as the developers' machine, and a case may need finer lattices."""
+_LEAST_MINUTES = 15
 
 if TYPE_CHECKING:
     from scatterloom.campaign.case import Case
@@ -61,6 +70,14 @@ class Planned:
     digest: str
     particles: tuple[str, ...]
     memory_mb: int
+
+    def request_mb(self, attempt: int) -> int:
+        """Memory to ask a cluster for [MiB]: with a margin, and more at every attempt."""
+        return _BESIDE_MB + math.ceil(_MEMORY_MARGIN * attempt * self.memory_mb)
+
+    def request_minutes(self, attempt: int) -> int:
+        """Time to ask a cluster for [min]: with a margin, and more at every attempt."""
+        return _LEAST_MINUTES + math.ceil(_TIME_MARGIN * attempt * self.seconds / 60.0)
 
 
 @dataclass(frozen=True)

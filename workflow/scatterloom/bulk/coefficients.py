@@ -15,6 +15,7 @@ from functools import lru_cache
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from scatterloom.campaign.populations import FEWEST_ANGLES
 from scatterloom.scattering.expansion import synthesize, wigner_d
 from scatterloom.scattering.quadrature import angle_weights
 
@@ -23,8 +24,6 @@ FloatArray = NDArray[np.float64]
 NAMES = ("a1", "a2", "a3", "a4", "b1", "b2")
 _PLACES = ((0, 0), (1, 1), (2, 2), (3, 3), (0, 1), (2, 3))
 _PARTNERS = {"b1": ((1, 0), 1.0), "b2": ((3, 2), -1.0)}
-
-FEWEST_ANGLES = 8
 
 TOLERANCE = 1e-5
 """Change of any element, relative to F11, that ends a series: far below any error bar."""

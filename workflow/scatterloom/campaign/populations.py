@@ -12,6 +12,9 @@ from scatterloom.campaign.size_sections import Size
 if TYPE_CHECKING:
     from scatterloom.campaign.distribution import Distribution
 
+FEWEST_ANGLES = 8
+"""Scattering angles without which the matrix of a population is not expanded."""
+
 SharesBy = Literal["number", "area", "volume", "mass"]
 
 

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import contextlib
-import importlib.util
 import json
 import os
 import re
@@ -14,16 +13,16 @@ from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
 
+from scatterloom.commands import _slurm
 from scatterloom.commands._parent import ask_kernel
-from scatterloom.errors import EnvironmentProblem
+from scatterloom.commands._profile import Profile
 from scatterloom.graph import Graph
-from scatterloom.limits import SHARE_OF_MEMORY, machine_bytes
-from scatterloom.store.layout import checkout
+from scatterloom.limits import SHARE_OF_MEMORY, all_cores, machine_bytes
+from scatterloom.store.turn import Turn, job_name
 
 GRACE_S = 10.0
 """Time that the engine gets to end by itself before it is killed [s]."""
 LOGS_KEPT = 20
-PROFILES = ("laptop", "slurm")
 _LOG_TAIL_BYTES = 1 << 22
 _RECENT_BYTES = 1 << 16
 
@@ -40,12 +39,28 @@ class FailedRule:
         None if it is not known, as of a killed job.
     killed_by : str or None
         Name of the signal that killed it.
+    batch_log : str or None
+        The log that a cluster's batch system keeps of it.
     """
 
     rule: str
     log: str
     exit_code: int | None
     killed_by: str | None
+    batch_log: str | None = None
+
+    @property
+    def over_limit(self) -> str | None:
+        """Return "no_memory" or "no_time" if Slurm ended it for that."""
+        return _slurm.limit_exceeded(self.words_of_slurm())
+
+    def words_of_slurm(self) -> list[str]:
+        """Return what Slurm itself wrote to its log of the job."""
+        try:
+            log = Path(self.batch_log or os.devnull).read_text(errors="replace")
+        except OSError:
+            return []
+        return _slurm.own_words(log)
 
 
 class Engine:
@@ -56,21 +71,33 @@ class Engine:
     graph : Graph
     config : Path
         The campaign file.
-    cores : int
-    profile : str
-        One of `PROFILES`.
+    top : Path
+        The checkout.
+    cores : int or None
+        Cores to use at a time; None for all of this machine, or as many of other
+        machines as there are jobs.
+    threads : int
+        Of every solver job.
+    profile : Profile
+    turn : Turn
+        Of this run.
     lock : int
         Descriptor of the campaign's lock. The engine inherits it, so that the campaign
         stays held if this process dies before the engine does.
     """
 
-    def __init__(self, graph: Graph, config: Path, cores: int, profile: str, lock: int) -> None:
-        top = checkout()
-        if top is None:
-            raise EnvironmentProblem(
-                "a campaign runs from a checkout of scatterloom (its Snakefile is not found)"
-            )
-        memory = max(1, int(SHARE_OF_MEMORY * machine_bytes() / 2**20))
+    def __init__(
+        self,
+        graph: Graph,
+        config: Path,
+        top: Path,
+        cores: int | None,
+        threads: int,
+        profile: Profile,
+        turn: Turn,
+        lock: int,
+    ) -> None:
+        self._profile = profile
         self.log = _new_log(graph.layout.logs)
         command = [
             *(sys.executable, "-m", "snakemake"),
@@ -78,13 +105,13 @@ class Engine:
             *("--directory", str(graph.layout.folder)),
             # "none" keeps a profile of the user's own environment out.
             *("--profile", "none"),
-            *("--workflow-profile", str(top / "workflow" / "profiles" / profile)),
-            *("--cores", str(cores)),
+            *("--workflow-profile", str(profile.folder)),
             *("--nolock", "--rerun-incomplete", "--nocolor"),
+            *_placement(profile, cores, turn),
             *("--config", f"campaign={_yaml(config)}", f"results={_yaml(_results(graph))}"),
-            *("prepared=true", f"memory_mb={memory if profile == 'laptop' else 1 << 40}"),
-            # On a cluster the nodes have the memory, and the requests of the jobs count.
-            *(("--resources", f"mem_mb={memory}") if profile == "laptop" else ()),
+            *("prepared=true", f"turn=t{turn.token}", f"threads={threads}"),
+            f"cluster={json.dumps(profile.remote)}",
+            *(() if profile.remote else (f"memory_mb={_memory_mb()}",)),
         ]
         with open(self.log, "wb") as stream:
             self._process = subprocess.Popen(
@@ -96,7 +123,7 @@ class Engine:
                 pass_fds=(lock,),
                 preexec_fn=ask_kernel,
                 # A terminal's interrupt reaches this process alone, which then ends the session.
-                env=os.environ | {"PYTHONUNBUFFERED": "1"},
+                env=_environment(profile, top),
             )
 
     def poll(self) -> int | None:
@@ -117,7 +144,8 @@ class Engine:
         if self.poll() is not None:
             return
         try:
-            self._signal(signal.SIGTERM)
+            # At the one the engine waits for jobs elsewhere, at the other it cancels them.
+            self._signal(signal.SIGINT if self._profile.remote else signal.SIGTERM)
             self.wait(GRACE_S)
         finally:
             # Also when a second interrupt comes while waiting.
@@ -148,8 +176,9 @@ class Engine:
                 code, killer = None, match[1]
             elif match := re.match(r"Error in rule (\w+):", words):
                 rule = match[1]
-            elif match := re.match(r" +log: (\S+) \(check log", words):
-                failed[match[1]] = FailedRule(rule, match[1], code, killer)
+            elif match := re.match(r" +log: (.+) \(check log", words):
+                log, _, batch = match[1].partition(", ")
+                failed[log] = FailedRule(rule, log, code, killer, batch or None)
                 code = killer = None
         return list(failed.values())
 
@@ -164,13 +193,33 @@ class Engine:
             return stream.read().decode(errors="replace")
 
 
-def check_profile(name: str) -> None:
-    """Raise EnvironmentProblem if a profile needs what is not installed."""
-    if name == "slurm" and importlib.util.find_spec("snakemake_executor_plugin_slurm") is None:
-        raise EnvironmentProblem(
-            "the slurm profile needs the package snakemake-executor-plugin-slurm, which is not "
-            "installed; add it to .venv with pip"
-        )
+def _placement(profile: Profile, cores: int | None, turn: Turn) -> list[str]:
+    """Arguments that say how many jobs go where."""
+    if not profile.remote:
+        some = ["--cores", str(cores or all_cores())]
+        return [*some, "--resources", f"mem_mb={_memory_mb()}"]
+    # On a cluster the nodes have the memory, and the requests of the jobs count.
+    some = ["--cores", str(cores)] if cores else []
+    if profile.slurm:
+        some += ["--slurm-jobname-prefix", job_name(turn.token)]
+        some += ["--slurm-status-command", _slurm.status_command()]
+        if wanted := _slurm.site_resources():
+            some += ["--default-resources", *wanted]
+    return some
+
+
+def _environment(profile: Profile, top: Path) -> dict[str, str]:
+    environment = os.environ | {"PYTHONUNBUFFERED": "1"}
+    if profile.slurm and "SLURM_CONF" in environment:
+        programs = top / "workflow" / "profiles" / "slurm" / "programs"
+        # Beyond the engine's reach, which drops Slurm's variables from the steps of a job.
+        environment["SCATTERLOOM_SLURM_CONF"] = environment["SLURM_CONF"]
+        environment["PATH"] = f"{programs}{os.pathsep}{environment.get('PATH', os.defpath)}"
+    return environment
+
+
+def _memory_mb() -> int:
+    return max(1, int(SHARE_OF_MEMORY * machine_bytes() / 2**20))
 
 
 def _results(graph: Graph) -> Path:

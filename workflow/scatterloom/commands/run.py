@@ -5,7 +5,6 @@ from __future__ import annotations
 import argparse
 import contextlib
 import json
-import os
 import signal
 import sys
 import time
@@ -15,16 +14,20 @@ from types import FrameType
 from typing import TYPE_CHECKING
 
 from scatterloom.commands import COMMANDS
+from scatterloom.commands._arguments import positive
 
 if TYPE_CHECKING:
     from scatterloom.commands._engine import Engine, FailedRule
+    from scatterloom.commands._profile import Profile
     from scatterloom.graph import Graph
     from scatterloom.store.progress import Meter, Progress
+    from scatterloom.store.turn import Turn
 
 NAME = "run"
 HELP = COMMANDS[NAME]
 
 LOOK_EVERY_S = 0.5
+SUBMISSION_S = 1.0
 LOG_LINES_SHOWN = 5
 
 
@@ -40,7 +43,7 @@ def configure(parser: argparse.ArgumentParser) -> None:
         "--results", metavar="DIR", help="folder of all results (default: results/ here)"
     )
     parser.add_argument(
-        "--cores", type=_positive, metavar="N", help="processor cores to use (default: all)"
+        "--cores", type=positive, metavar="N", help="processor cores to use (default: all)"
     )
     parser.add_argument(
         "--retry-failed", action="store_true", help="take up the cases that failed before"
@@ -49,53 +52,114 @@ def configure(parser: argparse.ArgumentParser) -> None:
         "--verify", action="store_true", help="read every finished file first, mend what is damaged"
     )
     parser.add_argument(
-        "--profile", choices=("laptop", "slurm"), default="laptop", help="where the jobs run"
+        "--threads", type=positive, default=1, metavar="N", help="threads of a job (default: 1)"
     )
-
-
-def _positive(text: str) -> int:
-    value = int(text)
-    if value < 1:
-        raise argparse.ArgumentTypeError(f"{value} is below 1")
-    return value
+    parser.add_argument(
+        "--profile",
+        default="laptop",
+        metavar="NAME",
+        help="where the jobs run: laptop (this machine, the default), slurm, or a folder with "
+        "a profile of the workflow engine",
+    )
 
 
 def execute(args: argparse.Namespace) -> int:
     """Run; 0 done, 1 some cases failed or flagged, and the codes of the errors."""
-    from scatterloom.commands._engine import Engine, check_profile
+    from scatterloom.commands._profile import find_profile
     from scatterloom.graph import Graph
     from scatterloom.mending import take_up_failed
     from scatterloom.store.held import hold
     from scatterloom.store.progress import Meter
 
-    config = Path(args.config) if args.config else _demo()
+    top = _checkout()
+    config = Path(args.config) if args.config else top / "config" / "demo.yaml"
     graph = Graph.open(config, args.results)
     for warning in graph.campaign.warnings:
         print(f"warning: {warning}", file=sys.stderr)
-    check_profile(args.profile)
-    with hold(graph.layout.lock) as lock, _terminable():
+    profile = find_profile(args.profile, top / "workflow" / "profiles")
+    with hold(graph.layout.lock) as lock, _terminable(), _turn(graph, profile) as turn:
         graph.sweep()
         _mend(graph, digests=args.verify)
         if args.retry_failed:
             print(f"{take_up_failed(graph)} failed cases are taken up again", file=sys.stderr)
         graph.prepare()
         meter = Meter(graph.layout, graph.cases_of)
-        for attempt in range(2):
+
+        def attempt() -> tuple[Engine, int]:
+            from scatterloom.commands._engine import Engine
+
             meter.forget_failures()
-            engine = Engine(graph, config, args.cores or _cores(), args.profile, lock)
+            engine = Engine(graph, config, top, args.cores, args.threads, profile, turn, lock)
             try:
-                code = _attend(engine, graph, meter)
+                return engine, _attend(engine, graph, meter)
             finally:
                 # Silent if it has ended; otherwise an interrupt, or a fault of this program.
                 engine.stop()
-            # A reader that meets a damaged file stops the run; what is lost is solved again.
-            if code == 0 or attempt or not _mend(graph, digests=True):
-                break
+
+        engine, code = attempt()
+        # A reader that meets a damaged file stops the run; what is lost is solved again. A
+        # case that went over what a cluster grants fails, and the others go on.
+        if code and _mend(graph, digests=True):
+            engine, code = attempt()
+        while code and _give_up(graph, engine):
+            engine, code = attempt()
         if code == 0:
             graph.drop_fields()
     if code != 0:
         return _explain(engine, graph, meter.measure())
     return _conclude(graph)
+
+
+def _checkout() -> Path:
+    from scatterloom.errors import EnvironmentProblem
+    from scatterloom.store.layout import checkout
+
+    top = checkout()
+    if top is None:
+        raise EnvironmentProblem(
+            "a campaign runs from a checkout of scatterloom (its Snakefile is not found)"
+        )
+    return top
+
+
+@contextlib.contextmanager
+def _turn(graph: Graph, profile: Profile) -> Iterator[Turn]:
+    """Begin the turn of this run: jobs that others have left in Slurm are cancelled first.
+
+    When the block ends, however it does, those of this run are cancelled as well.
+    """
+    from scatterloom.commands._slurm import cancel
+    from scatterloom.store.turn import settle, take_turn
+
+    path = graph.layout.turn
+    turn = take_turn(path, submits=profile.slurm)
+    own = (turn.token,) if profile.slurm else ()
+    earlier = tuple(name for name in turn.job_names if turn.token not in name)
+    count = cancel(earlier)
+    if earlier:
+        # A submission may have been under way when its engine was killed.
+        time.sleep(SUBMISSION_S)
+        count += cancel(earlier)
+    if count:
+        jobs = "1 Slurm job" if count == 1 else f"{count} Slurm jobs"
+        print(f"{jobs} of an earlier run cancelled; what they finished is kept", file=sys.stderr)
+    turn = settle(path, turn, own)
+    try:
+        yield turn
+    finally:
+        cancel(turn.job_names)
+        settle(path, turn, ())
+
+
+def _give_up(graph: Graph, engine: Engine) -> bool:
+    """Fail the cases that a cluster killed for taking too much; return whether there were any."""
+    from scatterloom.mending import fail_case_at_work
+
+    given_up = False
+    for failure in engine.failures():
+        if failure.over_limit is not None:
+            given_up |= fail_case_at_work(graph, Path(failure.log).stem, failure.over_limit)
+    return given_up
 
 
 def _mend(graph: Graph, *, digests: bool) -> bool:
@@ -106,22 +170,6 @@ def _mend(graph: Graph, *, digests: bool) -> bool:
     for text in damaged:
         print(f"warning: {text}; made again, solving only what is lost", file=sys.stderr)
     return bool(damaged)
-
-
-def _demo() -> Path:
-    from scatterloom.errors import BadInput
-    from scatterloom.store.layout import checkout
-
-    top = checkout()
-    if top is None:
-        raise BadInput("no campaign is named\n  hint: scatterloom run CONFIG")
-    return top / "config" / "demo.yaml"
-
-
-def _cores() -> int:
-    if hasattr(os, "sched_getaffinity"):
-        return len(os.sched_getaffinity(0))
-    return os.cpu_count() or 1
 
 
 @contextlib.contextmanager
@@ -178,6 +226,9 @@ def _explain(engine: Engine, graph: Graph, progress: Progress) -> int:
             code, reason = 3, [f"killed by {failure.killed_by}; was memory short?"]
         elif failure.log in reported:
             code, reason = reported[failure.log].exit_code, [reported[failure.log].message]
+        elif failure.batch_log is not None:
+            said = failure.words_of_slurm()[-LOG_LINES_SHOWN:]
+            code, reason = 3, said or ["ended by the cluster, which does not say why"]
         codes.append(code)
         _tell(graph, failure, reason)
     if not failures:
@@ -202,6 +253,8 @@ def _tell(graph: Graph, failure: FailedRule, reason: list[str]) -> None:
     for words in reason:
         print(f"  {words}", file=sys.stderr)
     print(f"  log: {log}", file=sys.stderr)
+    if failure.batch_log is not None:
+        print(f"  log of the cluster: {failure.batch_log}", file=sys.stderr)
 
 
 def _last_lines(path: Path) -> list[str]:

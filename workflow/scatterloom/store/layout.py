@@ -85,6 +85,11 @@ class Layout:
         return self.state / "plan.json"
 
     @property
+    def turn(self) -> Path:
+        """Which run the campaign belongs to."""
+        return self.state / "turn.json"
+
+    @property
     def failed(self) -> Path:
         """One note for every case that gave no result, by digest."""
         return self.state / "failed"

@@ -21,32 +21,14 @@ from typing import Any
 
 from scatterloom.campaign import effort
 from scatterloom.campaign.case import canonical_json
-from scatterloom.errors import BadInput, IntegrityError
+from scatterloom.errors import IntegrityError
 from scatterloom.scattering import record
 from scatterloom.scattering.case import Asked, meets
 from scatterloom.scattering.record import CaseRecord
 from scatterloom.store.atomic import atomic_write
 from scatterloom.store.casefile import read_records
 
-SWITCH = "SCATTERLOOM_CASE_REUSE"
-
 _BIT = {name: bit for name, (bit, _) in record.FLAGS.items()}
-
-
-def reuse_wanted(configured: bool) -> bool:
-    """Whether the library is used: the environment goes before the configuration.
-
-    Raises
-    ------
-    BadInput
-        If the environment variable is neither "on" nor "off".
-    """
-    given = os.environ.get(SWITCH)
-    if not given:
-        return configured
-    if given not in ("on", "off"):
-        raise BadInput(f"environment variable {SWITCH}: found {given!r}\n  hint: set on or off")
-    return given == "on"
 
 
 def physics_digest(spec: Mapping[str, Any], size_parameter: float) -> str:

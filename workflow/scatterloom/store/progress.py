@@ -48,6 +48,8 @@ class Heartbeat:
         Cases without a result.
     peak_bytes : int
         Largest memory in use while a case was solved [bytes].
+    case : str
+        Digest of the case being solved, where the reports are rare.
     """
 
     job: str
@@ -68,6 +70,7 @@ class Heartbeat:
     reused: int = 0
     cases_failed: int = 0
     peak_bytes: int = 0
+    case: str = ""
 
     @property
     def alive(self) -> bool:

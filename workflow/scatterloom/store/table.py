@@ -6,7 +6,7 @@ import contextlib
 from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Literal
 
 import numpy as np
 
@@ -97,7 +97,9 @@ def verify(path: Path | str) -> None:
     verify_folder(path)
 
 
-def open_table(path: Path | str, *, digests: bool = True) -> xarray.Dataset:
+def open_table(
+    path: Path | str, *, digests: bool = True, chunks: Literal["auto"] | None = "auto"
+) -> xarray.Dataset:
     """Open a table that is complete and as it was committed; refuse any other.
 
     Parameters
@@ -107,6 +109,9 @@ def open_table(path: Path | str, *, digests: bool = True) -> xarray.Dataset:
     digests : bool
         Whether to read and digest every file first. Without it, names, lengths and
         metadata are compared and each chunk's checksum is tested when it is read.
+    chunks : "auto" or None
+        Whether arrays are those of dask, which compute chunk by chunk, or read what is
+        asked of them when it is asked.
 
     Returns
     -------
@@ -125,4 +130,4 @@ def open_table(path: Path | str, *, digests: bool = True) -> xarray.Dataset:
         verify(path)
     else:
         verify_folder(path, digests=False)
-    return xarray.open_zarr(path)
+    return xarray.open_zarr(path, chunks=chunks)
