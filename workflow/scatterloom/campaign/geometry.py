@@ -11,7 +11,6 @@ from typing import Any
 
 import numpy as np
 
-from scatterloom.solids import placing
 from scatterloom.solids.registry import GENERATORS
 
 
@@ -100,6 +99,8 @@ def extents(spec: Mapping[str, Any]) -> Extents:
 @lru_cache(maxsize=256)
 def _of_solid(text: str) -> Extents:
     spec = json.loads(text)
+    from scatterloom.solids import placing  # loads the geometry libraries
+
     solid = placing.placed(spec)
     a, b, c = (float(length) for length in placing.half_extents(solid))
     return Extents(

@@ -16,7 +16,7 @@ from ruamel.yaml import YAML
 from scatterloom.campaign import crosscheck, database, optics
 from scatterloom.campaign.complaints import complaints
 from scatterloom.campaign.document import Document, read
-from scatterloom.campaign.file_shapes import read_shape_files
+from scatterloom.campaign.file_shapes import named_files
 from scatterloom.campaign.grids import grid_values
 from scatterloom.campaign.model import CampaignModel, with_contents
 from scatterloom.campaign.size_tables import read_size_tables, with_points
@@ -132,7 +132,7 @@ def load(path: str | Path) -> Campaign:
     problems += faults
     size_tables, faults = read_size_tables(document, Path(path).parent)
     problems += faults
-    contents, faults, doubts = read_shape_files(document, Path(path).parent)
+    contents, faults, doubts = _shape_files(document, Path(path).parent)
     problems += faults
     constants = _constants(document, sections, spectra)
     problems += constants.problems
@@ -165,6 +165,17 @@ def load(path: str | Path) -> Campaign:
     spectra = {**spectra, **constants.looked_up}
     told = tuple(_in_order(warnings, document))
     return Campaign(Path(path), model, constants.indices, constants.medium, told, spectra)
+
+
+def _shape_files(
+    document: Document, folder: Path
+) -> tuple[dict[int, str], list[Problem], list[Problem]]:
+    if not any(named_files(document)):
+        return {}, [], []
+    # Here, since it loads the geometry libraries.
+    from scatterloom.campaign.shape_files import read_shape_files
+
+    return read_shape_files(document, folder)
 
 
 def _sections(

@@ -5,13 +5,22 @@ from __future__ import annotations
 import json
 from collections.abc import Callable, Mapping
 from functools import lru_cache
+from importlib import import_module
 from typing import Any
 
-from scatterloom.solids import kinds
-from scatterloom.solids.imported import mesh_solid, voxel_solid
 from scatterloom.solids.mesh import Solid
 
 Generator = Callable[[Mapping[str, Any]], Solid]
+
+
+def _later(module: str, name: str) -> Generator:
+    """A generator whose module, and the libraries that it needs, are loaded when it is used."""
+
+    def make(spec: Mapping[str, Any]) -> Solid:
+        found: Generator = getattr(import_module(f"scatterloom.solids.{module}"), name)
+        return found(spec)
+
+    return make
 
 
 def _filled(spec: Mapping[str, Any]) -> Solid:
@@ -39,25 +48,25 @@ def _host(spec: Mapping[str, Any]) -> Solid:
 
 
 GENERATORS: dict[str, Generator] = {
-    "rounded_cuboid": kinds.cuboid,
-    "polyhedron": kinds.polyhedron,
-    "shaped_prism": kinds.prism,
-    "cylinder": kinds.cylinder,
-    "capsule": kinds.capsule,
-    "frustum": kinds.frustum,
-    "superellipsoid": kinds.superellipsoid,
-    "gaussian_sphere": kinds.gaussian_sphere,
-    "point_hull": kinds.point_hull,
-    "voronoi_fragment": kinds.voronoi_fragment,
-    "rough_sphere": kinds.rough_sphere,
-    "fractal_cluster": kinds.fractal_cluster,
-    "ballistic_cluster": kinds.ballistic_cluster,
-    "packed_cluster": kinds.packed_cluster,
-    "sphere_chain": kinds.sphere_chain,
+    "rounded_cuboid": _later("kinds", "cuboid"),
+    "polyhedron": _later("kinds", "polyhedron"),
+    "shaped_prism": _later("kinds", "prism"),
+    "cylinder": _later("kinds", "cylinder"),
+    "capsule": _later("kinds", "capsule"),
+    "frustum": _later("kinds", "frustum"),
+    "superellipsoid": _later("kinds", "superellipsoid"),
+    "gaussian_sphere": _later("kinds", "gaussian_sphere"),
+    "point_hull": _later("kinds", "point_hull"),
+    "voronoi_fragment": _later("kinds", "voronoi_fragment"),
+    "rough_sphere": _later("kinds", "rough_sphere"),
+    "fractal_cluster": _later("kinds", "fractal_cluster"),
+    "ballistic_cluster": _later("kinds", "ballistic_cluster"),
+    "packed_cluster": _later("kinds", "packed_cluster"),
+    "sphere_chain": _later("kinds", "sphere_chain"),
     "filled": _filled,
     "layered": _layered,
-    "mesh": mesh_solid,
-    "voxels": voxel_solid,
+    "mesh": _later("imported", "mesh_solid"),
+    "voxels": _later("imported", "voxel_solid"),
 }
 """For every kind of shape that is made of triangles, what makes them.
 
@@ -67,11 +76,11 @@ always give the same triangles. Shapes that cannot be made raise ValueError with
 """
 
 HOSTS: dict[str, Generator] = {
-    "sphere": kinds.sphere,
-    "spheroid": kinds.spheroid,
-    "ellipsoid": kinds.ellipsoid,
-    "cuboid": kinds.cuboid,
-    "prism": kinds.prism,
+    "sphere": _later("kinds", "sphere"),
+    "spheroid": _later("kinds", "spheroid"),
+    "ellipsoid": _later("kinds", "ellipsoid"),
+    "cuboid": _later("kinds", "cuboid"),
+    "prism": _later("kinds", "prism"),
 }
 """Kinds with cells of their own, made of triangles only to be filled, layered or drawn."""
 
