@@ -202,3 +202,23 @@ def test_memory_of_a_case_is_measured(tmp_path):
     assert 50e6 < case.memory_bytes < 5e9
     assert beat["peak_bytes"] >= case.memory_bytes
     assert beat["solved"] == 1 and beat["seconds"] > 0.0
+
+
+def test_a_case_too_large_for_memory_is_solved_on_disk(tmp_path, monkeypatch):
+    one = job("anchors-disk", SPHERE, INDEX, SIZES[1:], LEVELS)
+    task = jobs.task_of(spec_of(one))
+    whole, spilled = (attempts._needed(task, SIZES[1], LEVELS, 0, on) for on in (False, True))
+    asked = []
+    original = attempts.solve_level
+
+    def watched(*args, **kwargs):
+        asked.append(kwargs["spill"])
+        return original(*args, **kwargs)
+
+    monkeypatch.setattr(attempts, "solve_level", watched)
+    jobs.solve(spec_of(one), tmp_path / "disk", limits=Limits(memory_bytes=(whole + spilled) / 2))
+    assert asked == [Layout(tmp_path / "disk").checkpoints] * 3
+    jobs.solve(spec_of(one), tmp_path / "memory")
+    assert asked[3:] == [None] * 3
+    (beyond,), (within,) = (records_of(tmp_path / name, one) for name in ("disk", "memory"))
+    np.testing.assert_array_equal(beyond.expansion, within.expansion)

@@ -98,6 +98,8 @@ class _Solves:
             else None
         )
         self._saved = self.checkpoint.read() if self.checkpoint else {}
+        self.spill: Path | None = None
+        """Where search directions go; None while memory holds them."""
 
     @property
     def seconds(self) -> float:
@@ -142,6 +144,7 @@ class _Solves:
             threads=task.threads,
             progress=watch,
             checkpoint=keep,
+            spill=self.spill,
         )
 
     def _finished(self, n_max: int) -> dict[tuple[int, int], Saved]:
@@ -180,7 +183,7 @@ def solve_case(
         On the lattices of the task, for starts of other sizes; empty for a failed case.
     """
     forget_peak()
-    if _needed(task, x, task.cells, len(anchors)) > task.limits.memory_bytes:
+    if not _fits(task, x, task.cells, len(anchors)):
         return failed_case(task, digest, x, "no_memory"), []
     case = _Case(task, digest, x, anchors, progress)
     try:
@@ -241,14 +244,16 @@ class _Case:
 
     def _affordable(self, cells: Sequence[int], before: Sequence[int]) -> bool:
         limits = self._task.limits
-        needed = _needed(self._task, self._x, cells, len(self._anchors))
+        fits = _fits(self._task, self._x, cells, len(self._anchors))
         # Each of the finer lattices is solved from nothing: time goes with the cells.
         growth = sum(n**3 for n in cells) / sum(n**3 for n in before)
         spent = self.solves.seconds
-        return needed <= limits.memory_bytes and spent * (1.0 + growth) <= limits.seconds
+        return fits and spent * (1.0 + growth) <= limits.seconds
 
     def _attempt(self, cells: tuple[int, ...], n_max: int) -> tuple[CaseRecord, list[LevelResult]]:
         task, x, anchors, solves = self._task, self._x, self._anchors, self.solves
+        if _needed(task, x, cells, len(anchors)) > task.limits.memory_bytes:
+            solves.spill = task.state
         levels = [solves.get(n, n_max) for n in cells]
         # Solved again if the basis became longer on finer lattices.
         own = [solves.get(n, n_max) for n in task.cells]
@@ -275,10 +280,19 @@ class _Case:
         return solved, own
 
 
-def _needed(task: Task, x: float, cells: Sequence[int], neighbours: int) -> int:
+def _fits(task: Task, x: float, cells: Sequence[int], neighbours: int) -> bool:
+    """Whether a case can be solved within the memory allowed, on disk in part if need be."""
+    spilled = task.state is not None
+    return _needed(task, x, cells, neighbours, spilled) <= task.limits.memory_bytes
+
+
+def _needed(
+    task: Task, x: float, cells: Sequence[int], neighbours: int, spilled: bool = False
+) -> int:
     half = [float(extent) for extent in task.shape.half_extents]
     planes = sum(task.shape.is_mirrored(axis) for axis in np.eye(3))
-    return case_bytes(half, task.radii, planes, x, cells, task.asked.f11_relative, neighbours)
+    goal = task.asked.f11_relative
+    return case_bytes(half, task.radii, planes, x, cells, goal, neighbours, spilled)
 
 
 def failed_case(task: Task, digest: str, x: float, reason: str) -> CaseRecord:

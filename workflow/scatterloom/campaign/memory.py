@@ -13,6 +13,7 @@ PROGRAM_BYTES = 251 * 2**20
 _COMPLEX64_BYTES = 8
 
 _COLD_BLOCKS = 9.0
+_SPILLED_BLOCKS = 6.0
 _NEIGHBOUR_BLOCKS = 0.05
 _GRIDS = 0.2
 """Fitted to the peak of every job of the demo (243 to 445 MiB), which they meet within 15 %;
@@ -20,7 +21,8 @@ a job that compiles kernels first needs some 50 MiB more that once.
 
 Blocks hold all waves on the finest lattice: incident block, fields, residuals, search
 directions and images, waves evaluated in double precision, coarser lattices. A start from
-neighbours holds their fields, but fewer search directions than a cold solve. Grids are the
+neighbours holds their fields, but fewer search directions than a cold solve. Where search
+directions and images are kept on disk, 5.3 blocks were measured (9.5 without). Grids are the
 kernel and a padded batch of eight waves.
 """
 
@@ -33,6 +35,7 @@ def case_bytes(
     levels: Sequence[int],
     f11_relative: float,
     neighbours: int = 0,
+    spilled: bool = False,
 ) -> int:
     """Return the predicted peak memory of a job while it solves one case [bytes].
 
@@ -51,6 +54,8 @@ def case_bytes(
         Accuracy asked.
     neighbours : int
         Anchors whose fields are held to start from.
+    spilled : bool
+        Whether search directions and their images are kept on disk.
     """
     order = effort.n_max(radii, size_parameter, f11_relative)
     waves = 2 * order * (order + 2)
@@ -58,7 +63,8 @@ def case_bytes(
     spacing = 2.0 * max(half_extents) / finest
     block = 3.0 * (4.0 * math.pi / 3.0 / spacing**3) / 2**mirror_planes * waves
     box = math.prod(2.0 * axis / spacing + 1.0 for axis in half_extents)
-    blocks = _COLD_BLOCKS + _NEIGHBOUR_BLOCKS * neighbours * sum((n / finest) ** 3 for n in levels)
+    held = _SPILLED_BLOCKS if spilled else _COLD_BLOCKS
+    blocks = held + _NEIGHBOUR_BLOCKS * neighbours * sum((n / finest) ** 3 for n in levels)
     # The kernel on an octant of the doubled grid, and the padded grids of a batch of waves.
     grids = _GRIDS * (6.0 + 8 * 3 * 2.0) * box
     return round(PROGRAM_BYTES + (blocks * block + grids) * _COMPLEX64_BYTES)

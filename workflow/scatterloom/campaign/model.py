@@ -206,8 +206,9 @@ class Solver(Section):
         False,
     )
     memory_gib: float | None = setting(
-        "Memory allowed to one job. A case that needs more is recorded as failed before it "
-        "starts; nine tenths of the machine's memory if missing.",
+        "Memory allowed to one job. Of a case that needs more, search directions go to the disk; "
+        "one that needs more even so is recorded as failed before it starts. Nine tenths of the "
+        "machine's memory if missing.",
         None,
         unit="GiB",
         ge=0.1,

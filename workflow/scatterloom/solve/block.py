@@ -128,6 +128,7 @@ def solve_block(
     progress: Callable[[float, float], None] | None = None,
     checkpoint: Callable[[Callable[[], list[NDArray]], float], None] | None = None,
     sectors: Sectors | None = None,
+    keep: Callable[[NDArray], NDArray] | None = None,
 ) -> BlockSolution:
     """Solve ``A X = B`` for every sector until the amplitudes are good enough.
 
@@ -153,6 +154,9 @@ def solve_block(
         Called likewise; `fields()` makes the best fields so far, as a later start.
     sectors : Sectors, optional
         Those of `incident`; the parity classes if not given.
+    keep : callable(block) -> block, optional
+        Where search directions and their images are kept; in memory if missing (see
+        `scatterloom.solve.spill.Spill`).
 
     Returns
     -------
@@ -168,7 +172,7 @@ def solve_block(
         raise ValueError(f"tolerance is {tolerance}, must be positive")
     sectors = Sectors(matrix) if sectors is None else sectors
     copies = [sector.copies for sector in sectors.all]
-    iterates = [ClassIterate(block) for block in incident]
+    iterates = [ClassIterate(block, keep) for block in incident]
     n_wave = sum(c * len(block) for c, block in zip(copies, incident, strict=True))
     # Before the first product the Born amplitudes stand in for the scale of S.
     scale = _combined([it.remainder_norm() for it in iterates], copies)

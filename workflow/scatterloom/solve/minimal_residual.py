@@ -16,9 +16,13 @@ own rows, turned likewise.
 
 from __future__ import annotations
 
+from collections.abc import Callable
+
 import numpy as np
 from numpy.typing import NDArray
 from scipy.linalg.blas import get_blas_funcs
+
+from scatterloom.solve.spill import add_rows, overlap
 
 _INDEPENDENT = 1e-3
 """Least share of a row, squared, not in the span of the others, for a Cholesky factor to do."""
@@ -84,10 +88,13 @@ class ClassIterate:
     ----------
     incident : complex (n_wave, n_row)
         Right-hand sides B; left untouched.
+    keep : callable(block) -> block, optional
+        Where directions and images are kept; in memory if missing (see `Spill`).
     """
 
-    def __init__(self, incident: NDArray) -> None:
+    def __init__(self, incident: NDArray, keep: Callable[[NDArray], NDArray] | None = None) -> None:
         self.incident = incident
+        self._keep = keep or (lambda block: block)
         hermitian, symmetric = both_products(incident)
         value, vector = np.linalg.eigh(hermitian)
         # Strongest first.
@@ -114,7 +121,7 @@ class ClassIterate:
         for j, direction in enumerate(self._directions):
             coefficient = self._coefficients[j]
             if coefficient is not None:
-                self._fields += coefficient.astype(direction.dtype) @ direction
+                add_rows(self._fields, coefficient.astype(direction.dtype), direction)
                 self._coefficients[j] = None
         return self._fields
 
@@ -146,8 +153,8 @@ class ClassIterate:
         solved = self._solved()
         shares = [np.zeros((last, len(v)), dtype=np.complex128) for v in self._directions]
         for y, combined in zip(self._images, self._combinations, strict=True):
-            share = rest @ y.conj().T
-            rest -= share @ y
+            share = overlap(rest, y)
+            add_rows(rest, -share, y)
             for kept, part in zip(shares, combined, strict=False):
                 kept[first:] += share @ part
         self._coefficients = list(shares)
@@ -223,21 +230,21 @@ class ClassIterate:
         """
         if not len(directions):
             return
-        y = images
+        y = images.copy() if self._images else images
         # Combinations of the directions of every step that have y as their images.
         combined = [np.zeros((len(y), len(v)), dtype=np.complex128) for v in self._directions]
         for old_y, old in zip(self._images, self._combinations, strict=True):
-            overlap = y @ old_y.conj().T
-            y = y - overlap @ old_y
+            shared = overlap(y, old_y)
+            add_rows(y, -shared, old_y)
             for j, part in enumerate(old):
-                combined[j] -= overlap @ part
+                combined[j] -= shared @ part
         combine = _orthonormal(gram(y))
         y = combine.astype(y.dtype) @ y
         combined = [combine @ part for part in combined] + [combine]
         coefficients = self._rest @ y.conj().T
         self._rest -= coefficients @ y
-        self._directions.append(directions)
-        self._images.append(y)
+        self._directions.append(self._keep(directions))
+        self._images.append(self._keep(y))
         self._combinations.append(combined)
         self._coefficients.append(None)
         for j, part in enumerate(combined):

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from pathlib import Path
 
 import numpy as np
 from numba import njit
@@ -14,6 +15,7 @@ from scatterloom.dipole.product import LatticeMatrix
 from scatterloom.dipole.sectors import Sectors, exchange_of_cells
 from scatterloom.particle.lattice import Lattice
 from scatterloom.solve.block import BlockSolution, solve_block
+from scatterloom.solve.spill import Spill
 from scatterloom.solve.start import StoredFields
 from scatterloom.transition.matrix import TransitionMatrix, from_amplitudes, project
 from scatterloom.transition.rotate import turned
@@ -70,6 +72,7 @@ def solve_level(
     threads: int = 1,
     progress: Callable[[float, float], None] | None = None,
     checkpoint: Callable[[Callable[[], StoredFields], float], None] | None = None,
+    spill: Path | None = None,
 ) -> LevelResult:
     """Solve all incident waves of one case on one lattice.
 
@@ -92,6 +95,8 @@ def solve_level(
     checkpoint : callable(fields, products), optional
         Called after every block of products but the last; `fields()` makes a start from
         which the solve can go on, `products` is how many a wave have been used.
+    spill : Path, optional
+        Folder on whose disk search directions and their images are kept instead of in memory.
     """
     kd = size_parameter * lattice.spacing
     materials = indices if isinstance(indices, Sequence) else [indices]
@@ -120,6 +125,7 @@ def solve_level(
         progress=progress,
         checkpoint=keep,
         sectors=sectors,
+        keep=None if spill is None else Spill(spill),
     )
     raw = _of_particle(lattice, n_max, incident, solution.amplitudes)
     transition = project(raw, lattice.symmetry)
