@@ -19,11 +19,15 @@ BENCHMARKS = {
     "solve": "one oblate spheroid: block solve and in-fill against one plane wave at a time",
     "starts": "products and error of in-filled sizes against the spacing of their anchors",
     "single": "products of one plane wave at a time by the field the iteration starts from",
+    "scaling": "time against cells, waves and sizes of a ladder; one core and two",
     "large": "a large soft sphere, one plane wave: memory, products by start, errors",
     "convergence": "error against the number of cells, by the kind of cells at surfaces",
     "calibration": "whether the 95 % half widths tell the truth, random cases of five kinds",
     "accuracy_asked": "whether the accuracy asked is met, or its lack flagged; held-out cases",
 }
+SHORT = ("product", "scaling")
+"""Benchmarks that have a short way."""
+
 GROUPS = {"validation": validation_page.MEASURED}
 """Names that stand for several benchmarks."""
 DEFAULT_OUTPUT = Path(__file__).parents[2] / "workflow" / "docs" / "benchmarks"
@@ -45,7 +49,16 @@ def main() -> int:
     parser.add_argument(
         "--output", type=Path, default=DEFAULT_OUTPUT, metavar="DIR", help="folder of the results"
     )
+    parser.add_argument(
+        "--short",
+        action="store_true",
+        help=f"only the beginning of {' and '.join(SHORT)}, to see that they run",
+    )
     args = parser.parse_args()
+    if args.short:
+        args.names = args.names or list(SHORT)
+        if args.output == DEFAULT_OUTPUT or set(args.names) - set(SHORT):
+            parser.error(f"--short is for {', '.join(SHORT)} and an --output of its own")
     known = {*BENCHMARKS, *GROUPS, "page"}
     unknown = [name for name in args.names if name not in known]
     if unknown:
@@ -61,7 +74,7 @@ def main() -> int:
         print(f"== {name}: {BENCHMARKS[name]}", file=sys.stderr)
         with threadpool_limits(args.threads):
             machine = describe(args.threads)
-            result = module.run(args.threads)
+            result = module.run(args.threads, True) if args.short else module.run(args.threads)
         write_result(args.output, name, BENCHMARKS[name], machine, result)
     if {"page", *validation_page.QUOTED} & set(asked):
         return _page(args.output)
