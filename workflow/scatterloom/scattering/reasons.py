@@ -43,6 +43,7 @@ WARNING_ADVICE = {
     "energy_balance": "ask for more accuracy under 'accuracy'; do not use the absorption of "
     "these cells",
     "cells_too_coarse": "give finer lattices with 'solver.levels'",
+    "thin_part": "give finer lattices with 'solver.levels', or make the layer thicker",
     "arithmetic_cells": "give finer lattices with 'solver.levels' and compare; cells cut by the "
     "surface converge slowly for metals",
     "no_memory": "raise 'solver.memory_gib', or run on a machine with more memory",
