@@ -86,6 +86,9 @@ def save(picture: Picture, folder: Path) -> dict[str, str]:
     OSError
         From the file system; no file is left half written.
     """
+    # Laid out once; with a layout engine each format would draw twice.
+    picture.figure.draw_without_rendering()
+    picture.figure.set_layout_engine("none")
     png, svg, pdf = io.BytesIO(), io.BytesIO(), io.BytesIO()
     picture.figure.savefig(png, format="png", metadata={"Software": None})
     nothing = dict.fromkeys(("Creator", "Date", "Format", "Type"))
