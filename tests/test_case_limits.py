@@ -15,6 +15,7 @@ from scatterloom.limits import Limits
 from scatterloom.scattering import record
 from scatterloom.scattering.reasons import REASONS, reason_of
 from scatterloom.store.failures import read_failures
+from scatterloom.store.fields import read_fields
 from scatterloom.store.layout import Layout
 from scatterloom.store.progress import read_heartbeat
 
@@ -222,3 +223,30 @@ def test_a_case_too_large_for_memory_is_solved_on_disk(tmp_path, monkeypatch):
     assert asked[3:] == [None] * 3
     (beyond,), (within,) = (records_of(tmp_path / name, one) for name in ("disk", "memory"))
     np.testing.assert_array_equal(beyond.expansion, within.expansion)
+
+
+@pytest.mark.parametrize("share", [0.0, 0.5, 2.0])
+def test_fields_stay_within_their_disk_space(tmp_path, capsys, share):
+    anchors = job("anchors-ball", SPHERE, INDEX, SIZES, LEVELS)
+    span = job("span-ball", SPHERE, INDEX, (1.2,), LEVELS, anchors)
+    free = tmp_path / "free"
+    jobs.solve(spec_of(anchors), free)
+    whole = sum(
+        rows.nbytes // 2
+        for entry in read_fields(Layout(free).field_file(anchors.name))
+        for level in entry.levels
+        for rows in level.rows
+    )
+    folder = tmp_path / "bound"
+    limits = Limits(fields_bytes=share * whole)
+    jobs.solve(spec_of(anchors), folder, limits=limits)
+    path = Layout(folder).field_file(anchors.name)
+    kept = [entry for entry in read_fields(path) if entry.levels]
+    assert len(kept) == {0.0: 0, 0.5: 1, 2.0: 2}[share]
+    # Names and the header of the archive take a few kilobytes.
+    assert path.stat().st_size <= share * whole + 8192
+    assert ("solver.fields_gib is used up" in capsys.readouterr().err) == (share < 1.0)
+    jobs.solve(spec_of(span), folder, limits=limits)
+    (case,) = records_of(folder, span)
+    assert case.status != record.FAILED
+    assert case.start == ("cold" if share == 0.0 else "infill")

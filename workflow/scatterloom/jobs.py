@@ -222,7 +222,7 @@ class _Job:
             self.report.finished_case(kept, how)
         self.report.check()
         if keep_fields:
-            write_fields(self.layout.field_file(self.task.name), fields)
+            write_fields(self.layout.field_file(self.task.name), self._within_budget(fields))
         write_records(self.layout.case_file(self.task.name), records)
         for digest, _ in self.cases if keep_fields else ():
             self.layout.solved_fields(digest).unlink(missing_ok=True)
@@ -243,6 +243,32 @@ class _Job:
             raise
         self._solved_some = True
         return found
+
+    def _within_budget(self, fields: list[FieldFile]) -> list[FieldFile]:
+        """The fields to pass on; entries without levels where the disk allowed is used up.
+
+        Rows are kept in two bytes a number; other jobs' files are those that wait for spans.
+        """
+        held = sum(
+            path.stat().st_size
+            for path in self.layout.fields.glob("*.npz")
+            if path != self.layout.field_file(self.task.name)
+        )
+        out, dropped = [], 0
+        for entry in fields:
+            size = sum(rows.nbytes // 2 for level in entry.levels for rows in level.rows)
+            if held + size > self.task.limits.fields_bytes:
+                entry, dropped = replace(entry, levels=[]), dropped + bool(entry.levels)
+            else:
+                held += size
+            out.append(entry)
+        if dropped:
+            print(
+                f"{self.task.name}: fields of {dropped} anchors are not passed on: "
+                "solver.fields_gib is used up",
+                file=sys.stderr,
+            )
+        return out
 
     def _keep(self, case: CaseRecord) -> None:
         """Keep a case just solved, for this campaign and for others."""

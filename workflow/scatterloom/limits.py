@@ -27,6 +27,9 @@ class Limits:
         A case that takes longer is given up.
     checkpoint_seconds : float
         Time between savings of the best iterate.
+    fields_bytes : float
+        Disk space for the fields that jobs pass to each other. Fields beyond it are not
+        passed on, and the sizes that would have started from them start from nothing.
     granted_bytes : float
         Memory that a cluster granted to the job; a case found to use more is given up before
         the job is killed for it.
@@ -58,6 +61,8 @@ class Limits:
             raise TimeGrantedIsUp(
                 "stopped before the cluster's time limit; the next attempt goes on from here"
             )
+
+    fields_bytes: float = float("inf")
 
 
 class OutOfTime(Exception):

@@ -150,6 +150,8 @@ class Outline:
         options = ["--checkpoint-minutes", repr(solver.checkpoint_minutes)]
         if solver.memory_gib is not None:
             options += ["--memory-gib", repr(solver.memory_gib)]
+        if solver.fields_gib is not None:
+            options += ["--fields-gib", repr(solver.fields_gib)]
         if solver.case_minutes is not None:
             options += ["--case-minutes", repr(solver.case_minutes)]
         if reuse_wanted(solver.case_reuse):

@@ -214,6 +214,14 @@ class Solver(Section):
         ge=0.1,
         le=1e5,
     )
+    fields_gib: float | None = setting(
+        "Disk space for the solved fields that jobs pass to each other; beyond it sizes start "
+        "from nothing. No limit if missing. Alters no result beyond the solver's tolerance.",
+        None,
+        unit="GiB",
+        ge=0.0,
+        le=1e6,
+    )
     case_minutes: float | None = setting(
         "Time allowed to one case. A case that takes longer is recorded as failed; no limit "
         "if missing.",

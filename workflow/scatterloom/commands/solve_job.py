@@ -34,6 +34,7 @@ def configure(parser: argparse.ArgumentParser) -> None:
     parser.add_argument("--threads", type=int, default=1, metavar="N", help="threads to use")
     parser.add_argument("--library", metavar="DIR", help="case library to reuse cases from")
     parser.add_argument("--memory-gib", type=float, metavar="X", help="memory allowed")
+    parser.add_argument("--fields-gib", type=float, metavar="X", help="disk for fields")
     parser.add_argument("--case-minutes", type=float, metavar="X", help="time allowed to a case")
     parser.add_argument(
         "--checkpoint-minutes", type=float, default=5.0, metavar="X", help="time between savings"
@@ -117,6 +118,7 @@ def _limits(args: argparse.Namespace, began: float) -> Limits:
         args.checkpoint_minutes * 60.0,
         granted,
         until,
+        fields_bytes=float("inf") if args.fields_gib is None else args.fields_gib * 2**30,
     )
 
 
