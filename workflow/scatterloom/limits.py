@@ -27,14 +27,14 @@ class Limits:
         A case that takes longer is given up.
     checkpoint_seconds : float
         Time between savings of the best iterate.
-    fields_bytes : float
-        Disk space for the fields that jobs pass to each other. Fields beyond it are not
-        passed on, and the sizes that would have started from them start from nothing.
     granted_bytes : float
         Memory that a cluster granted to the job; a case found to use more is given up before
         the job is killed for it.
     granted_until : float
         Time on the clock of `time.monotonic` at which a cluster will end the job.
+    fields_bytes : float
+        Disk space for the fields that jobs pass to each other. Fields beyond it are not
+        passed on, and the sizes that would have started from them start from nothing.
     """
 
     memory_bytes: float = float("inf")
@@ -42,6 +42,7 @@ class Limits:
     checkpoint_seconds: float = 300.0
     granted_bytes: float = float("inf")
     granted_until: float = float("inf")
+    fields_bytes: float = float("inf")
 
     def check(self, seconds: float) -> None:
         """Look whether a case that has taken so many seconds may go on.
@@ -61,8 +62,6 @@ class Limits:
             raise TimeGrantedIsUp(
                 "stopped before the cluster's time limit; the next attempt goes on from here"
             )
-
-    fields_bytes: float = float("inf")
 
 
 class OutOfTime(Exception):
