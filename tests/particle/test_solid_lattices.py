@@ -42,6 +42,19 @@ def test_a_polyhedron_of_triangles_is_the_polyhedron(spec, turn, core):
     np.testing.assert_allclose(again.root, tensors.root, rtol=0, atol=1e-8 * scale)
 
 
+def test_crumbs_of_faces_change_no_tensor():
+    # At 12 cells corners of the column lie on the lattice, and clipping by planes leaves facets
+    # of 1e-11 that the triangles do not have.
+    one = from_spec(COLUMN)
+    here, there = lattice(one, 12), lattice(shape_of(Solid((Interface(mesh_of(one.body)),))), 12)
+    assert here.composition is not None
+    sizes = [np.linalg.norm(r.vector, axis=1) for r in here.composition.regions]
+    assert any(np.any((size > 0.0) & (size < 1e-9)) for size in sizes)
+    tensors, again = (particle_tensors(grid, [1.5 + 0.01j], 0.2) for grid in (here, there))
+    scale = np.abs(tensors.root).max()
+    np.testing.assert_allclose(again.root, tensors.root, rtol=0, atol=1e-8 * scale)
+
+
 def test_a_hollow_is_medium_and_its_surface_one_of_the_material():
     outer = block((-3, -3, -3), (3, 3, 3))
     shape = shape_of(Solid((Interface(outer), Interface(block((-1, -1, -2), (1, 1, 2)), -1, 0))))

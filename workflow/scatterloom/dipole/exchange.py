@@ -52,6 +52,10 @@ class Exchange:
     dyad: NDArray[np.float64]
 
 
+_SMALLEST_FACET = 1e-9
+"""Facets smaller than this, in cells' faces, are rounding and make no cell oblique."""
+
+
 def exchanges(lattice: Lattice) -> Iterator[Exchange]:
     """Exchanges of every region and axis; none where first moments are not known."""
     composition = lattice.composition
@@ -64,7 +68,8 @@ def exchanges(lattice: Lattice) -> Iterator[Exchange]:
         vector = surface.vector
         size = np.linalg.norm(vector, axis=1)
         oblique = np.zeros(cells, dtype=bool)
-        oblique[surface.cell[np.abs(vector).max(axis=1) < (1.0 - 1e-9) * size]] = True
+        slanted = (np.abs(vector).max(axis=1) < (1.0 - 1e-9) * size) & (size > _SMALLEST_FACET)
+        oblique[surface.cell[slanted]] = True
         area = np.where(oblique[:, None], 0.0, surface.added(cells))
         unit = vector / np.where(size > 0.0, size, 1.0)[:, None]
         dyad = np.zeros((cells, 3, 3))
